@@ -1,0 +1,96 @@
+//! One likelihood evaluation and one whole fit (estimate, smooth, 12 forecasts) of four structures.
+//!
+//! `cargo bench -p stillwell-statespace`. The series are drawn from each structure's own equations.
+
+use std::hint::black_box;
+
+use criterion::{Criterion, criterion_group, criterion_main};
+use stillwell_statespace::structure::{Season, Structure, Trend};
+use stillwell_statespace::{Likelihood, Request, SeasonRequest, Series, TransformRequest, Workspace, fit};
+
+#[path = "../tests/support/simulate.rs"]
+mod simulate;
+
+struct Setting {
+    name: &'static str,
+    n: usize,
+    structure: Structure,
+    values: Vec<f64>,
+}
+
+fn settings() -> Vec<Setting> {
+    let season = |period, harmonics| vec![Season { period, harmonics, fixed: false }];
+    let structure = |trend, seasons| Structure { trend, seasons, ..Structure::default() };
+    vec![
+        Setting {
+            name: "local level, n 100",
+            n: 100,
+            structure: structure(Trend::LocalLevel, Vec::new()),
+            values: vec![1.0, 0.2],
+        },
+        Setting {
+            name: "local linear, n 156",
+            n: 156,
+            structure: structure(Trend::LocalLinear, Vec::new()),
+            values: vec![1.0, 0.2, 0.01],
+        },
+        Setting {
+            name: "local linear + dummy season 12, n 144",
+            n: 144,
+            structure: structure(Trend::LocalLinear, season(12.0, None)),
+            values: vec![1.0, 0.2, 0.005, 0.05],
+        },
+        Setting {
+            name: "local linear + 3 harmonics of 52, n 156",
+            n: 156,
+            structure: structure(Trend::LocalLinear, season(52.0, Some(3))),
+            values: vec![1.0, 0.2, 0.005, 0.005],
+        },
+    ]
+}
+
+fn request(structure: &Structure) -> Request {
+    Request {
+        trend: Some(structure.trend),
+        season: SeasonRequest::Given(structure.seasons.iter().map(|s| s.period).collect()),
+        harmonics: structure.seasons.first().and_then(|s| s.harmonics).map(|h| vec![h]),
+        transform: TransformRequest::None,
+        ..Request::default()
+    }
+}
+
+fn benches(c: &mut Criterion) {
+    let mut workspace = Workspace::new();
+    for setting in settings() {
+        let request = request(&setting.structure);
+        let many: Vec<Series> = (0..40)
+            .map(|seed| {
+                simulate::simulate(&setting.structure, &setting.values, setting.n, 3.0, Vec::new(), seed)
+            })
+            .collect();
+        let mut evaluations: Vec<usize> =
+            many.iter().map(|s| fit(s, &request, &mut workspace).expect("a fit").evaluations()).collect();
+        evaluations.sort_unstable();
+        println!(
+            "{}: likelihood evaluations per fit, median {}, most {}",
+            setting.name, evaluations[20], evaluations[39]
+        );
+        let mut next = many.iter().cycle();
+        c.bench_function(&format!("fit, {}", setting.name), |b| {
+            b.iter(|| {
+                let fit = fit(next.next().expect("a series"), &request, &mut workspace).expect("a fit");
+                (black_box(fit.components(0.9)), black_box(fit.forecast(12, 0.9)))
+            });
+        });
+        let mut likelihood = Likelihood::new(setting.structure.model(), many[0].clone());
+        c.bench_function(&format!("likelihood, {}", setting.name), |b| {
+            b.iter(|| black_box(likelihood.at(black_box(&setting.values))));
+        });
+        c.bench_function(&format!("likelihood and score, {}", setting.name), |b| {
+            b.iter(|| black_box(likelihood.with_score(black_box(&setting.values)).map(|v| v.0)));
+        });
+    }
+}
+
+criterion_group!(all, benches);
+criterion_main!(all);

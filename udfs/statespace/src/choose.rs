@@ -1,0 +1,316 @@
+//! Settling what a request left open: transform, season, harmonics, trend.
+//!
+//! The rules are simple, cheap and stated, so that a reader can reproduce each choice by naming it:
+//!
+//! * **transform**: `log` when every value is above zero and the spread grows with the level: over blocks of a period
+//!   (or eight points) the log of the standard deviation rises with the log of the mean by more than 1/2 (the
+//!   spread-versus-level plot, Tukey 1977, *Exploratory Data Analysis*, ch. 5; slope b suggests the power 1 - b).
+//! * **season**: a candidate period stays when at least two full periods are observed and the autocorrelation of
+//!   the differenced series at that lag is above its one-sided 95 % bound under no season (Bartlett 1946, *JRSS Suppl.* 8).
+//! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, half of them
+//!   when the period is up to 24, otherwise 3 (common practice: the first few carry a yearly pattern).
+//! * **trend**: `damped` from 16 observed points on (the safe default of the trade, common practice), else `local level`.
+
+use crate::error::{BadRequest, Trouble};
+use crate::quantile::normal_quantile;
+use crate::request::{Request, SeasonRequest, TransformRequest};
+use crate::structure::{Cycle, Season, Structure, Trend, period_label};
+
+/// Longest whole period that is modelled by dummies when nothing is said.
+const LONGEST_DUMMY: f64 = 13.0;
+/// Most harmonics per season.
+const MOST_HARMONICS: usize = 60;
+/// Observed points from which on the trend has a slope when nothing is said.
+const SLOPE_FROM: usize = 16;
+
+/// Contradictions that no series could satisfy.
+///
+/// # Errors
+/// Names the argument, what is wrong and what would be right.
+pub fn check(request: &Request) -> Result<(), BadRequest> {
+    let periods = match &request.season {
+        SeasonRequest::Auto(periods) | SeasonRequest::Given(periods) => periods,
+    };
+    let argument = if matches!(request.season, SeasonRequest::Auto(_)) { "period" } else { "season" };
+    for &period in periods {
+        if !(period.is_finite() && period >= 2.0) {
+            return Err(BadRequest::new(
+                argument,
+                format!("a period is at least 2 steps, got {}; 0 means no season", period_label(period)),
+            ));
+        }
+        if period > 100_000.0 {
+            return Err(BadRequest::new(argument, format!("a period is at most 100000 steps, got {period}")));
+        }
+    }
+    for (i, a) in periods.iter().enumerate() {
+        if periods[..i].contains(a) {
+            return Err(BadRequest::new(
+                argument,
+                format!("the period {} is listed twice", period_label(*a)),
+            ));
+        }
+    }
+    if let Some(harmonics) = &request.harmonics {
+        if explicit(request) && harmonics.len() > 1 && harmonics.len() != periods.len() {
+            return Err(BadRequest::new(
+                "harmonics",
+                format!(
+                    "{} counts for {} periods; give one count, or one per period",
+                    harmonics.len(),
+                    periods.len()
+                ),
+            ));
+        }
+        for (i, &count) in harmonics.iter().enumerate() {
+            if count == 0 || count > MOST_HARMONICS {
+                return Err(BadRequest::new(
+                    "harmonics",
+                    format!(
+                        "a count lies between 1 and {MOST_HARMONICS}, got {count}; leave it out for the dummy form"
+                    ),
+                ));
+            }
+            let against =
+                if harmonics.len() == 1 { periods.as_slice() } else { periods.get(i..=i).unwrap_or(&[]) };
+            for &period in against {
+                if 2.0 * count as f64 > period {
+                    return Err(BadRequest::new(
+                        "harmonics",
+                        format!(
+                            "a period of {} steps has at most {} harmonics, got {count}",
+                            period_label(period),
+                            (period / 2.0).floor()
+                        ),
+                    ));
+                }
+            }
+        }
+    }
+    if let Some((shortest, longest)) = request.cycle
+        && !(shortest >= 2.0 && longest > shortest && longest.is_finite())
+    {
+        return Err(BadRequest::new(
+            "cycle",
+            format!("the shortest period is at least 2 and below the longest, got ({shortest}, {longest})"),
+        ));
+    }
+    if request.autoregression > crate::structure::MAX_ORDER {
+        return Err(BadRequest::new(
+            "autoregression",
+            format!("the order is at most {}, got {}", crate::structure::MAX_ORDER, request.autoregression),
+        ));
+    }
+    check_names(request)?;
+    if request.trend == Some(Trend::None)
+        && matches!(&request.season, SeasonRequest::Given(p) if p.is_empty())
+        && request.cycle.is_none()
+        && request.autoregression == 0
+        && request.drivers.is_empty()
+        && request.drifting_drivers.is_empty()
+    {
+        return Err(BadRequest::new(
+            "trend",
+            "'none' without season, cycle, autoregression or drivers leaves nothing to model; choose a trend",
+        ));
+    }
+    check_known(request)
+}
+
+fn explicit(request: &Request) -> bool {
+    matches!(request.season, SeasonRequest::Given(_))
+}
+
+fn check_names(request: &Request) -> Result<(), BadRequest> {
+    let all: Vec<&String> = request.drivers.iter().chain(&request.drifting_drivers).collect();
+    for (i, name) in all.iter().enumerate() {
+        if all[..i].contains(name) {
+            return Err(BadRequest::new("drivers", format!("'{name}' is listed twice")));
+        }
+    }
+    Ok(())
+}
+
+/// The names that `known` may hold: exact when the structure is given in full, otherwise those of any outcome.
+fn known_names(request: &Request) -> Vec<String> {
+    let trends = request.trend.map_or_else(|| vec![Trend::Damped], |t| vec![t]);
+    let periods = match &request.season {
+        SeasonRequest::Auto(periods) if periods.is_empty() => vec![12.0],
+        SeasonRequest::Auto(periods) | SeasonRequest::Given(periods) => periods.clone(),
+    };
+    let mut names: Vec<String> = Vec::new();
+    for trend in trends {
+        let structure = structure_of(request, trend, &periods);
+        for parameter in structure.model().parameters() {
+            names.push(parameter.name.clone());
+        }
+    }
+    names
+}
+
+fn check_known(request: &Request) -> Result<(), BadRequest> {
+    let names = known_names(request);
+    for (i, (name, value)) in request.known.iter().enumerate() {
+        if request.known[..i].iter().any(|(n, _)| n == name) {
+            return Err(BadRequest::new("known", format!("'{name}' is given twice")));
+        }
+        if !names.contains(name) {
+            return Err(BadRequest::new(
+                "known",
+                format!("'{name}' is no parameter of this structure; it has {}", names.join(", ")),
+            ));
+        }
+        let (valid, rule) = match name.as_str() {
+            "slope_damping" | "cycle_damping" => {
+                (*value > 0.0 && *value < 1.0, "lies between 0 and 1, both excluded")
+            }
+            "cycle_period" => (*value >= 2.0, "is at least 2 steps"),
+            ar if ar.starts_with("ar_") => (value.is_finite(), "is a finite number"),
+            _ => (*value >= 0.0 && value.is_finite(), "is a variance: a finite number, not negative"),
+        };
+        if !valid {
+            return Err(BadRequest::new("known", format!("'{name}' {rule}; got {value}")));
+        }
+    }
+    Ok(())
+}
+
+/// A structure with its scale.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Choice {
+    pub(crate) structure: Structure,
+    pub(crate) log: bool,
+}
+
+/// Settles the request for one series.
+///
+/// # Errors
+/// When the series cannot carry what was asked for.
+pub(crate) fn choose(request: &Request, observed: &[f64]) -> Result<Choice, Trouble> {
+    let log = match request.transform {
+        TransformRequest::None => false,
+        TransformRequest::Log => {
+            if let Some(index) = observed.iter().position(|v| *v <= 0.0) {
+                return Err(Trouble::NotPositive { index, value: observed[index] });
+            }
+            true
+        }
+        TransformRequest::Auto => {
+            let period = match &request.season {
+                SeasonRequest::Auto(p) | SeasonRequest::Given(p) => p.first().copied(),
+            };
+            spread_follows_level(observed, period)
+        }
+    };
+    let scaled: Vec<f64> = if log { observed.iter().map(|v| v.ln()).collect() } else { observed.to_vec() };
+    let periods = match &request.season {
+        SeasonRequest::Given(periods) => periods.clone(),
+        SeasonRequest::Auto(candidates) => {
+            candidates.iter().copied().find(|&p| season_speaks(&scaled, p)).into_iter().collect()
+        }
+    };
+    let count = observed.iter().filter(|v| !v.is_nan()).count();
+    let trend = request.trend.unwrap_or(if count >= SLOPE_FROM { Trend::Damped } else { Trend::LocalLevel });
+    Ok(Choice { structure: structure_of(request, trend, &periods), log })
+}
+
+fn structure_of(request: &Request, trend: Trend, periods: &[f64]) -> Structure {
+    let seasons = periods
+        .iter()
+        .enumerate()
+        .map(|(i, &period)| Season {
+            period,
+            harmonics: match &request.harmonics {
+                Some(counts) => {
+                    let asked = counts.get(i).or_else(|| counts.first()).copied().unwrap_or(1);
+                    Some(asked.min((period / 2.0).floor() as usize).max(1))
+                }
+                None => default_harmonics(period),
+            },
+            fixed: request.fixed_season,
+        })
+        .collect();
+    Structure {
+        trend,
+        seasons,
+        cycle: request.cycle.map(|(shortest, longest)| Cycle { shortest, longest }),
+        autoregression: request.autoregression,
+        drivers: request.drivers.len(),
+        drifting_drivers: request.drifting_drivers.clone(),
+    }
+}
+
+/// Harmonics of a season of which nothing was said; `None` = dummy form.
+fn default_harmonics(period: f64) -> Option<usize> {
+    if period.fract() == 0.0 && period <= LONGEST_DUMMY {
+        None
+    } else if period <= 24.0 {
+        Some(((period / 4.0).ceil() as usize).max(1).min((period / 2.0).floor() as usize))
+    } else {
+        Some(3)
+    }
+}
+
+/// Spread-versus-level slope above 1/2 over blocks.
+fn spread_follows_level(observed: &[f64], period: Option<f64>) -> bool {
+    if observed.iter().any(|v| *v <= 0.0) {
+        return false;
+    }
+    let block = period.map_or(8, |p| p.round().clamp(4.0, 60.0) as usize);
+    let mut points: Vec<(f64, f64)> = Vec::new();
+    for chunk in observed.chunks(block) {
+        let seen: Vec<f64> = chunk.iter().copied().filter(|v| !v.is_nan()).collect();
+        if seen.len() * 2 < block || seen.len() < 3 {
+            continue;
+        }
+        let mean = seen.iter().sum::<f64>() / seen.len() as f64;
+        let variance = seen.iter().map(|v| (v - mean).powi(2)).sum::<f64>() / (seen.len() - 1) as f64;
+        if variance > 0.0 {
+            points.push((mean.ln(), 0.5 * variance.ln()));
+        }
+    }
+    if points.len() < 3 {
+        return false;
+    }
+    let n = points.len() as f64;
+    let (mx, my) = points.iter().fold((0.0, 0.0), |(a, b), (x, y)| (a + x / n, b + y / n));
+    let (sxx, sxy) =
+        points.iter().fold((0.0, 0.0), |(a, b), (x, y)| (a + (x - mx).powi(2), b + (x - mx) * (y - my)));
+    sxx > 0.0 && sxy / sxx > 0.5
+}
+
+/// The differenced series is autocorrelated at the period.
+fn season_speaks(values: &[f64], period: f64) -> bool {
+    let lag = period.round() as usize;
+    let seen = values.iter().filter(|v| !v.is_nan()).count() as f64;
+    if lag < 2 || seen < 2.0 * period || values.len() <= 2 * lag {
+        return false;
+    }
+    let differences: Vec<f64> = values.windows(2).map(|w| w[1] - w[0]).collect();
+    let valid: Vec<f64> = differences.iter().copied().filter(|v| !v.is_nan()).collect();
+    if valid.len() < lag + 3 {
+        return false;
+    }
+    let mean = valid.iter().sum::<f64>() / valid.len() as f64;
+    let variance = valid.iter().map(|v| (v - mean).powi(2)).sum::<f64>() / valid.len() as f64;
+    if !(variance > 0.0) {
+        return false;
+    }
+    // Mean product over the pairs that exist, so that gaps neither add nor take away.
+    let correlation = |k: usize| {
+        let (mut sum, mut count) = (0.0, 0.0);
+        for (a, b) in differences.iter().zip(&differences[k..]) {
+            let product = (a - mean) * (b - mean);
+            if !product.is_nan() {
+                sum += product;
+                count += 1.0;
+            }
+        }
+        if count > 0.0 { (sum / count / variance, count) } else { (0.0, 0.0) }
+    };
+    let (at_period, pairs) = correlation(lag);
+    let before: f64 = (1..lag).map(|k| correlation(k).0.powi(2)).sum();
+    // Bartlett's variance uses few short lags when the period is long, else its own noise drowns the test.
+    let bound = normal_quantile(0.95) * ((1.0 + 2.0 * before.min(1.0)) / pairs.max(1.0)).sqrt();
+    pairs >= 3.0 && at_period > bound
+}

@@ -1,0 +1,215 @@
+//! What can be wrong: with a request (every series would suffer) or with one series (only its own row does).
+
+use std::fmt;
+
+/// Why one series could not be fitted. [`Trouble::status`] is the closed list that results carry;
+/// the `Display` text is the sentence with the value, the place and the remedy.
+#[derive(Debug, Clone, PartialEq)]
+#[non_exhaustive]
+pub enum Trouble {
+    /// No observation at all.
+    AllMissing,
+    /// Fewer observations than the structure needs.
+    TooShort {
+        /// Observed points that the structure needs.
+        needed: usize,
+        /// Observed points that there are.
+        got: usize,
+    },
+    /// Every observation has the same value: no variance can be estimated.
+    Constant {
+        /// The value.
+        value: f64,
+    },
+    /// An infinite observation.
+    NotFinite {
+        /// Grid point, from 0.
+        index: usize,
+    },
+    /// A magnitude whose square leaves the range of double precision.
+    TooLarge {
+        /// Grid point, from 0.
+        index: usize,
+        /// The value there.
+        value: f64,
+    },
+    /// A logarithm was asked of a value that is not above zero.
+    NotPositive {
+        /// Grid point, from 0.
+        index: usize,
+        /// The value there.
+        value: f64,
+    },
+    /// A driver has no (finite) value at a point of the history.
+    DriverGap {
+        /// Name of the driver.
+        driver: String,
+        /// Grid point, from 0.
+        index: usize,
+    },
+    /// A driver has no (finite) value at a step of the horizon.
+    NoDriverPlan {
+        /// Name of the driver.
+        driver: String,
+        /// Step of the horizon, from 1.
+        step: usize,
+    },
+    /// Drivers (with the level, slope and season) that repeat one another: no data can tell them apart.
+    CollinearDrivers {
+        /// Name of the first driver that adds nothing.
+        driver: String,
+    },
+    /// The structure reproduces the data to rounding: no variance is left to estimate.
+    ExactFit,
+    /// The likelihood could not be evaluated where the structure needs it.
+    Numerical {
+        /// The sentence about it.
+        what: &'static str,
+    },
+    /// Two rows of the series have the same time.
+    DuplicateTime {
+        /// The time, ISO 8601 or a number.
+        at: String,
+    },
+    /// A row has no time.
+    MissingTime {
+        /// How many rows.
+        rows: usize,
+    },
+    /// A time that is not on the grid of the series.
+    OffGrid {
+        /// The time, ISO 8601 or a number.
+        at: String,
+        /// The grid in words.
+        grid: String,
+    },
+    /// No even grid fits the times.
+    NoGrid {
+        /// What speaks against one.
+        why: String,
+    },
+}
+
+impl Trouble {
+    /// The short words of the `status` column. The list is closed; see `udfs/docs/functions.md`.
+    pub fn status(&self) -> &'static str {
+        match self {
+            Self::AllMissing => "all missing",
+            Self::TooShort { .. } => "too short",
+            Self::Constant { .. } => "constant",
+            Self::NotFinite { .. } => "not finite",
+            Self::TooLarge { .. } => "too large",
+            Self::NotPositive { .. } => "not positive",
+            Self::DriverGap { .. } => "driver gap",
+            Self::NoDriverPlan { .. } => "no driver plan",
+            Self::CollinearDrivers { .. } => "collinear drivers",
+            Self::ExactFit => "exact fit",
+            Self::Numerical { .. } => "numerical trouble",
+            Self::DuplicateTime { .. } => "duplicate time",
+            Self::MissingTime { .. } => "missing time",
+            Self::OffGrid { .. } => "off the grid",
+            Self::NoGrid { .. } => "no grid",
+        }
+    }
+
+    /// Every status there is, 'ok' first.
+    pub const STATUSES: [&'static str; 16] = [
+        "ok",
+        "all missing",
+        "too short",
+        "constant",
+        "not finite",
+        "too large",
+        "not positive",
+        "driver gap",
+        "no driver plan",
+        "collinear drivers",
+        "exact fit",
+        "numerical trouble",
+        "duplicate time",
+        "missing time",
+        "off the grid",
+        "no grid",
+    ];
+}
+
+impl fmt::Display for Trouble {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::AllMissing => write!(f, "no point is observed; nothing can be fitted"),
+            Self::TooShort { needed, got } => write!(
+                f,
+                "{got} observed points, but this structure needs at least {needed}; ask for a simpler trend, no season or fewer drivers"
+            ),
+            Self::Constant { value } => write!(
+                f,
+                "every observed value is {value}; a series that never moves has no variance to estimate"
+            ),
+            Self::NotFinite { index } => write!(
+                f,
+                "the observed value at grid point {index} (from 0) is infinite; make it NULL or mend it"
+            ),
+            Self::TooLarge { index, value } => write!(
+                f,
+                "the observed value {value:e} at grid point {index} (from 0) is beyond 1e150 in size; rescale the column"
+            ),
+            Self::NotPositive { index, value } => write!(
+                f,
+                "the logarithm needs values above zero, but grid point {index} (from 0) holds {value}; use transform => 'none'"
+            ),
+            Self::DriverGap { driver, index } => write!(
+                f,
+                "driver '{driver}' has no finite value at grid point {index} (from 0) of the history; fill it in, drivers must be known wherever the series is"
+            ),
+            Self::NoDriverPlan { driver, step } => write!(
+                f,
+                "driver '{driver}' has no plan for step {step} of the horizon; append rows with NULL observed that carry it, or shorten the horizon"
+            ),
+            Self::CollinearDrivers { driver } => write!(
+                f,
+                "driver '{driver}' says nothing that level, slope, season and the other drivers do not already say; leave it out"
+            ),
+            Self::ExactFit => write!(
+                f,
+                "the structure reproduces every value to rounding, so there is no variance to estimate and no honest interval; use a simpler structure or look at the source of the data"
+            ),
+            Self::Numerical { what } => write!(f, "{what}"),
+            Self::DuplicateTime { at } => {
+                write!(f, "two rows have the time {at}; aggregate them first")
+            }
+            Self::MissingTime { rows } => write!(f, "{rows} row(s) have a NULL time; filter them out"),
+            Self::OffGrid { at, grid } => write!(
+                f,
+                "the time {at} is not on the grid ({grid}); mend it, or state the step with every => …"
+            ),
+            Self::NoGrid { why } => {
+                write!(f, "no even grid fits the times: {why}; state the step with every => …")
+            }
+        }
+    }
+}
+
+impl std::error::Error for Trouble {}
+
+/// A request that no series could satisfy: rule, value and remedy, for the person who wrote the query.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct BadRequest {
+    /// The argument that is wrong, as written in the query.
+    pub argument: &'static str,
+    /// What is wrong with it and what would be right.
+    pub why: String,
+}
+
+impl BadRequest {
+    pub(crate) fn new(argument: &'static str, why: impl Into<String>) -> Self {
+        Self { argument, why: why.into() }
+    }
+}
+
+impl fmt::Display for BadRequest {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        write!(f, "argument '{}': {}", self.argument, self.why)
+    }
+}
+
+impl std::error::Error for BadRequest {}

@@ -1,0 +1,204 @@
+//! A model at given parameter values, run over one series: likelihood, smoothed functions of the states, one-step
+//! errors and forecasts, all on the scale of the series as handed in.
+
+use crate::filter::{self, Data, FilterError, Keep, Pass};
+use crate::forecast;
+use crate::information::Information;
+use crate::one_step::{self, OneStep};
+use crate::request::Series;
+use crate::results::State;
+use crate::score::Score;
+use crate::smoother::{self, Functional, Smoothed};
+use crate::structure::{Model, Role};
+use crate::system::System;
+
+/// Why a model cannot be evaluated at these values on this series.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[non_exhaustive]
+pub enum EvaluationError {
+    /// The data do not determine this diffuse element (states in order, then drivers).
+    Undetermined(usize),
+    /// An innovation variance is not positive (all variances zero, or values out of range).
+    NotPositive,
+    /// The structure reproduces the data to rounding.
+    ExactFit,
+    /// The parameters leave the stationary region.
+    NotStationary,
+}
+
+impl std::fmt::Display for EvaluationError {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            Self::Undetermined(element) => write!(f, "the data do not determine diffuse element {element}"),
+            Self::NotPositive => write!(f, "an innovation variance is not positive"),
+            Self::ExactFit => write!(f, "the structure reproduces the data to rounding"),
+            Self::NotStationary => write!(f, "the parameters leave the stationary region"),
+        }
+    }
+}
+
+impl std::error::Error for EvaluationError {}
+
+impl From<FilterError> for EvaluationError {
+    fn from(error: FilterError) -> Self {
+        match error {
+            FilterError::Undetermined(element) => Self::Undetermined(element),
+            FilterError::NotPositive(_) => Self::NotPositive,
+        }
+    }
+}
+
+/// One filtered series.
+#[derive(Debug, Clone)]
+pub struct Evaluation {
+    model: Model,
+    system: System,
+    pass: Pass,
+    series: Series,
+    one_step: OneStep,
+}
+
+impl Evaluation {
+    /// Runs `model` at `values` (natural units, order of [`Model::parameters`]) over `series`.
+    ///
+    /// # Errors
+    /// When the data leave a diffuse element open or the likelihood does not exist at these values.
+    pub fn new(mut model: Model, values: &[f64], series: Series) -> Result<Self, EvaluationError> {
+        let mut system = model.system();
+        model.fill(values, &mut system).map_err(|_| EvaluationError::NotStationary)?;
+        Self::with_system(model, system, series)
+    }
+
+    /// The same with a system of the caller's making that has the states of `model`.
+    ///
+    /// # Errors
+    /// As [`Self::new`].
+    pub fn with_system(model: Model, system: System, series: Series) -> Result<Self, EvaluationError> {
+        let mut pass = Pass::default();
+        filter::run(&system, data_of(&series), Keep::Everything, &mut pass)?;
+        let one_step = one_step::errors(&pass);
+        pass.whiten_rows();
+        Ok(Self { model, system, pass, series, one_step })
+    }
+
+    /// Diffuse log-likelihood with `-(n - d)/2 log 2 pi`: n observed points, d diffuse elements, identity on them in
+    /// the state basis.
+    pub fn log_likelihood(&self) -> f64 {
+        self.pass.log_likelihood
+    }
+
+    /// Diffuse elements d.
+    pub fn diffuse_elements(&self) -> usize {
+        self.pass.elements
+    }
+
+    /// Observed points.
+    pub fn observed(&self) -> usize {
+        self.pass.observed
+    }
+
+    /// Standardised one-step errors.
+    pub fn one_step(&self) -> &OneStep {
+        &self.one_step
+    }
+
+    /// Score and average information at these values, natural units: gradient (p) and matrix (p x p row-major).
+    pub fn score_and_information(&self) -> (Vec<f64>, Vec<f64>) {
+        let data = data_of(&self.series);
+        let (mut score, mut information) = (Score::default(), Information::default());
+        score.compute(&self.model, &self.system, data, &self.pass);
+        information.compute(&self.model, &self.system, data, &self.pass, &score.paths);
+        (score.gradient, information.matrix)
+    }
+
+    /// Smoothed sum of the loads of one component (mean and standard error along the grid).
+    pub fn component(&self, role: Role) -> Option<State> {
+        let functional = self.functional(role)?;
+        let smoothing = self.smooth(&[functional]);
+        smoothing.functionals.into_iter().next().map(State::from)
+    }
+
+    /// Smoothed signal: the observation without its irregular.
+    pub fn signal(&self) -> State {
+        self.smooth(&[Functional::Signal]).functionals.into_iter().next().map(State::from).unwrap_or_default()
+    }
+
+    /// Auxiliary residuals as t-values: of the irregular, and of the level's disturbance before each point.
+    pub fn auxiliary_residuals(&self) -> (Vec<f64>, Vec<f64>) {
+        let smoothing = self.smooth(&[]);
+        (smoothing.outlier_t, smoothing.shift_t)
+    }
+
+    /// Coefficient of a constant driver and its standard error.
+    pub fn coefficient(&self, driver: usize) -> (f64, f64) {
+        let mut columns = vec![0.0; self.pass.elements + 1];
+        columns[1 + self.system.diffuse.len() + driver] = 1.0;
+        self.pass.whiten(&mut columns);
+        (columns[0], columns[1..].iter().map(|v| v * v).sum::<f64>().sqrt())
+    }
+
+    /// Forecast of `h` steps: mean of the observation, variance of the observation, variance of the signal. The series must
+    /// hold drivers for them.
+    pub fn forecast(&self, h: usize) -> (Vec<f64>, Vec<f64>, Vec<f64>) {
+        let path = self.ahead(h, &[], false);
+        let variance = path.signal.variance.iter().map(|v| v + self.system.h).collect();
+        (path.signal.mean, variance, path.signal.variance)
+    }
+
+    pub(crate) fn smooth(&self, functionals: &[Functional]) -> smoother::Smoothing {
+        let level = self.model.state_specs().iter().position(|s| s.role == Role::Level);
+        smoother::run(&self.system, data_of(&self.series), &self.pass, functionals, level)
+    }
+
+    pub(crate) fn ahead(&self, h: usize, functionals: &[Functional], joint: bool) -> forecast::Path {
+        forecast::run(&self.system, data_of(&self.series), &self.pass, h, functionals, joint)
+    }
+
+    pub(crate) fn system(&self) -> &System {
+        &self.system
+    }
+
+    pub(crate) fn series(&self) -> &Series {
+        &self.series
+    }
+
+    /// What a component adds to the signal, or for the slope and a coefficient its state.
+    pub(crate) fn functional(&self, role: Role) -> Option<Functional> {
+        let states = self.model.state_specs();
+        let of_role = || states.iter().enumerate().filter(move |(_, s)| s.role == role);
+        match role {
+            Role::Irregular => None,
+            Role::Slope => of_role().next().map(|(i, _)| Functional::States(vec![(i, 1.0)])),
+            Role::Driver(_) => of_role().next().map(|(i, _)| Functional::States(vec![(i, 1.0)])),
+            _ => {
+                let loads: Vec<(usize, f64)> = self
+                    .system
+                    .fixed_loads
+                    .iter()
+                    .copied()
+                    .filter(|&(state, _)| states[state].role == role)
+                    .collect();
+                (!loads.is_empty()).then_some(Functional::States(loads))
+            }
+        }
+    }
+
+    /// The effect of a drifting driver.
+    pub(crate) fn effect(&self, driver: usize) -> Option<Functional> {
+        self.system
+            .driver_loads
+            .iter()
+            .find(|&&(_, d)| d == driver)
+            .map(|&(state, driver)| Functional::DriverEffect { state, driver })
+    }
+}
+
+pub(crate) fn data_of(series: &Series) -> Data<'_> {
+    Data { observed: &series.observed, drivers: &series.drivers, drifting: &series.drifting_drivers }
+}
+
+impl From<Smoothed> for State {
+    fn from(smoothed: Smoothed) -> Self {
+        Self { value: smoothed.mean, std_error: smoothed.variance.into_iter().map(f64::sqrt).collect() }
+    }
+}

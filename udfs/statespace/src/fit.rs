@@ -1,0 +1,260 @@
+//! A fitted series: from the request to the estimate, and the diagnostics of it.
+
+use crate::choose::{self, Choice};
+use crate::error::Trouble;
+use crate::estimate::{self, Estimate};
+use crate::evaluation::{Evaluation, EvaluationError, data_of};
+use crate::objective::{Objective, Workspace};
+use crate::request::{Request, Series};
+use crate::residual_checks as checks;
+use crate::results::{Diagnostics, Parameter};
+use crate::scaling::Scaling;
+use crate::structure::{Model, Structure};
+
+/// Largest magnitude of an observation: its square must stay in range.
+const LARGEST: f64 = 1e150;
+
+/// One fitted series. It keeps the series on its working scale and answers from there.
+#[derive(Debug, Clone)]
+pub struct Fit {
+    pub(crate) structure: Structure,
+    pub(crate) log: bool,
+    pub(crate) scaling: Scaling,
+    pub(crate) evaluation: Evaluation,
+    /// Observations on the model scale (after the transform), NaN = missing.
+    pub(crate) modelled: Vec<f64>,
+    /// Names of constant and drifting drivers.
+    pub(crate) drivers: (Vec<String>, Vec<String>),
+    /// Grid points at which some driver has no value: effects and the signal are unknown there.
+    pub(crate) unknown: Vec<bool>,
+    /// The plan as handed in, to tell which step of a horizon lacks it.
+    pub(crate) plan: Vec<Vec<f64>>,
+    parameters: Vec<Parameter>,
+    estimate: Estimate,
+}
+
+/// Fits one series.
+///
+/// # Errors
+/// [`Trouble`] says what is wrong with the series, or why its structure cannot be fitted to it.
+pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Result<Fit, Trouble> {
+    examine(&series.observed)?;
+    let Choice { structure, log } = choose::choose(request, &series.observed)?;
+    let modelled: Vec<f64> =
+        if log { series.observed.iter().map(|v| v.ln()).collect() } else { series.observed.clone() };
+    let (filled, unknown) = fill_drivers(series, request, &modelled)?;
+    let model = structure.model();
+    let known = known_values(&model, request);
+    let seen = modelled.iter().filter(|v| !v.is_nan()).count();
+    let open = known.iter().filter(|k| k.is_none()).count();
+    let needed = model.diffuse_elements() + open.max(1) + 1;
+    if seen < needed {
+        return Err(Trouble::TooShort { needed, got: seen });
+    }
+    let scaling = Scaling::of(&filled, structure.trend.has_level());
+    let working = scaling.apply(&filled);
+    let factors = scaling.factors(&model);
+    let known: Vec<Option<f64>> = known.iter().zip(&factors).map(|(k, f)| k.map(|v| v / f)).collect();
+    let mut objective = Objective::new(model.clone(), data_of(&working), workspace);
+    let trouble = |error| trouble_of(error, &model, request);
+    let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
+    let evaluation = Evaluation::new(model.clone(), &estimate.values, working).map_err(trouble)?;
+    let parameters = (0..factors.len())
+        .map(|i| Parameter {
+            name: model.parameters()[i].name.clone(),
+            value: estimate.values[i] * factors[i],
+            std_error: estimate.std_errors[i] * factors[i],
+            known: known[i].is_some(),
+        })
+        .collect();
+    Ok(Fit {
+        structure,
+        log,
+        scaling,
+        evaluation,
+        modelled,
+        drivers: (request.drivers.clone(), request.drifting_drivers.clone()),
+        unknown,
+        plan: series.drivers.iter().chain(&series.drifting_drivers).cloned().collect(),
+        parameters,
+        estimate,
+    })
+}
+
+/// What is wrong with the observations as such.
+fn examine(observed: &[f64]) -> Result<(), Trouble> {
+    let mut first = None;
+    let mut moves = false;
+    for (index, &value) in observed.iter().enumerate() {
+        if value.is_nan() {
+            continue;
+        }
+        if value.is_infinite() {
+            return Err(Trouble::NotFinite { index });
+        }
+        if value.abs() > LARGEST {
+            return Err(Trouble::TooLarge { index, value });
+        }
+        match first {
+            None => first = Some(value),
+            Some(f) => moves |= value != f,
+        }
+    }
+    match first {
+        None => Err(Trouble::AllMissing),
+        Some(value) if !moves && observed.iter().filter(|v| !v.is_nan()).count() > 1 => {
+            Err(Trouble::Constant { value })
+        }
+        Some(_) => Ok(()),
+    }
+}
+
+/// Drivers with zeros where neither they nor the series have a value (no equation uses them there), and
+/// those points.
+fn fill_drivers(
+    series: &Series,
+    request: &Request,
+    modelled: &[f64],
+) -> Result<(Series, Vec<bool>), Trouble> {
+    let n = modelled.len();
+    let mut unknown = vec![false; n];
+    let mut fill = |columns: &[Vec<f64>], names: &[String]| -> Result<Vec<Vec<f64>>, Trouble> {
+        let mut out = Vec::with_capacity(columns.len());
+        for (column, name) in columns.iter().zip(names) {
+            let mut filled = column.clone();
+            filled.resize(column.len().max(n), f64::NAN);
+            for index in 0..n {
+                if !filled[index].is_finite() {
+                    if !modelled[index].is_nan() {
+                        return Err(Trouble::DriverGap { driver: name.clone(), index });
+                    }
+                    unknown[index] = true;
+                    filled[index] = 0.0;
+                }
+                if filled[index].abs() > LARGEST {
+                    return Err(Trouble::DriverGap { driver: name.clone(), index });
+                }
+            }
+            out.push(filled);
+        }
+        Ok(out)
+    };
+    let drivers = fill(&series.drivers, &request.drivers)?;
+    let drifting_drivers = fill(&series.drifting_drivers, &request.drifting_drivers)?;
+    Ok((Series { observed: modelled.to_vec(), drivers, drifting_drivers }, unknown))
+}
+
+fn known_values(model: &Model, request: &Request) -> Vec<Option<f64>> {
+    let value_of = |name: &str| request.known.iter().find(|(n, _)| n == name).map(|(_, v)| *v);
+    model.parameters().iter().map(|p| value_of(&p.name)).collect()
+}
+
+fn trouble_of(error: EvaluationError, model: &Model, request: &Request) -> Trouble {
+    match error {
+        EvaluationError::Undetermined(element) => {
+            let states = model.diffuse_elements() - request.drivers.len();
+            match element.checked_sub(states).and_then(|i| request.drivers.get(i)) {
+                Some(driver) => Trouble::CollinearDrivers { driver: driver.clone() },
+                None => Trouble::Numerical {
+                    what: "the observed points do not determine every part of the structure (a season with steps that are never observed?); use fewer harmonics, a simpler trend or no season",
+                },
+            }
+        }
+        EvaluationError::ExactFit => Trouble::ExactFit,
+        EvaluationError::NotPositive => Trouble::Numerical {
+            what: "the likelihood cannot be evaluated: no variance is above zero, or the values leave the range of double precision",
+        },
+        EvaluationError::NotStationary => Trouble::Numerical {
+            what: "the known parameters of the autoregression or cycle are not stationary; choose smaller ones",
+        },
+    }
+}
+
+impl Fit {
+    /// The structure that was fitted.
+    pub fn structure(&self) -> &Structure {
+        &self.structure
+    }
+
+    /// True when the model is on the logarithm of the data.
+    pub fn log_transform(&self) -> bool {
+        self.log
+    }
+
+    /// All parameters, known ones included, on the model scale.
+    pub fn parameters(&self) -> &[Parameter] {
+        &self.parameters
+    }
+
+    /// Likelihood evaluations that the estimation took.
+    pub fn evaluations(&self) -> usize {
+        self.estimate.evaluations
+    }
+
+    /// True when the estimation met its stopping rule.
+    pub fn converged(&self) -> bool {
+        self.estimate.converged
+    }
+
+    /// Coefficient of each constant driver and its standard error, model scale.
+    pub fn coefficients(&self) -> Vec<(f64, f64)> {
+        (0..self.drivers.0.len())
+            .map(|i| {
+                let (value, std_error) = self.evaluation.coefficient(i);
+                (value * self.scaling.unit, std_error * self.scaling.unit)
+            })
+            .collect()
+    }
+
+    /// Checks and criteria of the fit.
+    pub fn diagnostics(&self) -> Diagnostics {
+        let evaluation = &self.evaluation;
+        let (n, d) = (evaluation.observed(), evaluation.diffuse_elements());
+        let w = self.parameters.iter().filter(|p| !p.known).count();
+        let log_likelihood = evaluation.log_likelihood() + self.scaling.log_likelihood(n as f64 - d as f64);
+        let one_step = evaluation.one_step();
+        let standardised: Vec<f64> = one_step.standardised.iter().copied().filter(|e| !e.is_nan()).collect();
+        let unit = self.scaling.unit;
+        let errors: Vec<f64> =
+            one_step.standardised.iter().zip(&one_step.variance).map(|(e, v)| e * v.sqrt() * unit).collect();
+        let variances: Vec<f64> = one_step.variance.iter().map(|v| v * unit * unit).collect();
+        let sse = checks::sum_of_squared_errors(&errors, &variances);
+        let period = self.structure.seasons.first().map(|s| s.period);
+        let lags = checks::default_lags(standardised.len(), period.unwrap_or(1.0));
+        let q = checks::ljung_box(&standardised, lags, w);
+        let h = checks::heteroskedasticity(&standardised);
+        let (skewness, kurtosis) = (checks::skewness(&standardised), checks::kurtosis(&standardised));
+        let normality = checks::bowman_shenton(&standardised);
+        let first = self.modelled.iter().position(|v| !v.is_nan()).unwrap_or(0);
+        Diagnostics {
+            log_likelihood,
+            aic: checks::aic(log_likelihood, w, d),
+            bic: checks::bic(log_likelihood, w, d, n),
+            n,
+            missing: self.modelled.len() - first - n,
+            diffuse: d,
+            estimated: w,
+            converged: self.estimate.converged,
+            evaluations: self.estimate.evaluations,
+            q: q.value,
+            q_lags: lags,
+            q_p: q.p_value,
+            h: h.value,
+            h_p: h.p_value,
+            skewness: skewness.value,
+            skewness_p: skewness.p_value,
+            kurtosis: kurtosis.value,
+            kurtosis_p: kurtosis.p_value,
+            normality: normality.value,
+            normality_p: normality.p_value,
+            r_squared: checks::r_squared_drift(&self.modelled, sse),
+            r_squared_season: period
+                .map_or(f64::NAN, |p| checks::r_squared_season(&self.modelled, sse, p.round() as usize)),
+        }
+    }
+
+    /// Standardised one-step errors along the grid; NaN where missing or where a point only determines a start.
+    pub fn standardised_errors(&self) -> &[f64] {
+        &self.evaluation.one_step().standardised
+    }
+}

@@ -1,0 +1,145 @@
+//! The likelihood of one model on one series as a function of its parameters, with its score and average
+//! information; counts its evaluations and allocates nothing in them once its buffers have grown.
+
+use crate::evaluation::{EvaluationError, data_of};
+use crate::filter::{self, Data, Keep, Pass};
+use crate::information::Information;
+use crate::request::Series;
+use crate::score::Score;
+use crate::structure::Model;
+use crate::system::System;
+
+/// The likelihood of a model on a series, to be evaluated many times: no allocation from the second call on.
+#[derive(Debug)]
+pub struct Likelihood {
+    model: Model,
+    system: System,
+    series: Series,
+    workspace: Workspace,
+}
+
+impl Likelihood {
+    /// A model and a series with its drivers.
+    pub fn new(model: Model, series: Series) -> Self {
+        let system = model.system();
+        Self { model, system, series, workspace: Workspace::new() }
+    }
+
+    /// Diffuse log-likelihood at parameter values (natural units, order of [`Model::parameters`]).
+    ///
+    /// # Errors
+    /// As [`crate::Evaluation::new`].
+    pub fn at(&mut self, values: &[f64]) -> Result<f64, EvaluationError> {
+        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
+        let pass = &mut self.workspace.pass;
+        filter::run(&self.system, data_of(&self.series), Keep::Likelihood, pass)?;
+        Ok(pass.log_likelihood)
+    }
+
+    /// Diffuse log-likelihood, score (length p) and average information (p x p, row-major), natural units.
+    ///
+    /// # Errors
+    /// As [`crate::Evaluation::new`].
+    pub fn with_score(&mut self, values: &[f64]) -> Result<(f64, &[f64], &[f64]), EvaluationError> {
+        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
+        let data = data_of(&self.series);
+        let value = evaluate(&self.model, &self.system, data, &mut self.workspace)?;
+        Ok((value, &self.workspace.score.gradient, &self.workspace.information.matrix))
+    }
+}
+
+/// Likelihood, score and information into the workspace; returns the log-likelihood.
+fn evaluate(
+    model: &Model,
+    system: &System,
+    data: Data<'_>,
+    workspace: &mut Workspace,
+) -> Result<f64, EvaluationError> {
+    let keep = if model.has_shapes() { Keep::Everything } else { Keep::Gains };
+    let Workspace { pass, score, information } = workspace;
+    filter::run(system, data, keep, pass)?;
+    pass.whiten_rows();
+    score.compute(model, system, data, pass);
+    information.compute(model, system, data, pass, &score.paths);
+    Ok(pass.log_likelihood)
+}
+
+/// Buffers that pass from series to series.
+#[derive(Debug, Clone, Default)]
+pub struct Workspace {
+    pass: Pass,
+    score: Score,
+    information: Information,
+}
+
+impl Workspace {
+    /// Empty buffers; they grow with the first series.
+    pub fn new() -> Self {
+        Self::default()
+    }
+}
+
+/// The function that estimation climbs.
+pub(crate) struct Objective<'a> {
+    pub(crate) model: Model,
+    system: System,
+    data: Data<'a>,
+    workspace: &'a mut Workspace,
+    /// Likelihood evaluations so far, with or without derivatives.
+    pub(crate) evaluations: usize,
+}
+
+/// The likelihood at one point and what its shape needs.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Value {
+    pub(crate) log_likelihood: f64,
+    /// Residual sum of squares of the reduced rows: `n - d` at the best common scale of all variances.
+    pub(crate) rss: f64,
+    /// n - d.
+    pub(crate) degrees: f64,
+}
+
+impl<'a> Objective<'a> {
+    pub(crate) fn new(model: Model, data: Data<'a>, workspace: &'a mut Workspace) -> Self {
+        let system = model.system();
+        Self { model, system, data, workspace, evaluations: 0 }
+    }
+
+    /// The likelihood alone.
+    pub(crate) fn value(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
+        self.fill(values)?;
+        filter::run(&self.system, self.data, Keep::Likelihood, &mut self.workspace.pass)?;
+        Ok(self.reached())
+    }
+
+    /// The likelihood with score and information, which then stand in [`Self::gradient`] and [`Self::information`].
+    pub(crate) fn full(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
+        self.fill(values)?;
+        evaluate(&self.model, &self.system, self.data, self.workspace)?;
+        Ok(self.reached())
+    }
+
+    fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
+        self.evaluations += 1;
+        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)
+    }
+
+    fn reached(&self) -> Value {
+        let pass = &self.workspace.pass;
+        Value {
+            log_likelihood: pass.log_likelihood,
+            rss: pass.reduction.rss(),
+            degrees: pass.observed as f64 - pass.elements as f64,
+        }
+    }
+
+    /// Score at the last [`Self::full`] point, natural units.
+    pub(crate) fn gradient(&self) -> &[f64] {
+        &self.workspace.score.gradient
+    }
+
+    /// Average information at the last [`Self::full`] point, row-major, natural units.
+    pub(crate) fn information(&self) -> &[f64] {
+        &self.workspace.information.matrix
+    }
+}

@@ -1,0 +1,160 @@
+//! Where estimation starts: a coarse grid of signal-to-noise ratios, each at its own best overall scale.
+//!
+//! Multiplying all variances by `s` changes the likelihood in closed form: it is best at `s = rss / (n - d)` (the concentrated
+//! likelihood, DK 2.10.2). So every point of the grid costs one evaluation without derivatives and stands for a
+//! whole ray. The best points become starts: one where all parameters are variances, more where a cycle or an
+//! autoregression makes several optima likely.
+
+use crate::evaluation::EvaluationError;
+use crate::objective::Objective;
+use crate::structure::{Link, Role};
+
+/// Ratios to the irregular: irregular, level, slope, season, driver.
+const RATIOS: [[f64; 5]; 6] = [
+    [1.0, 0.1, 1e-3, 1e-3, 1e-3],
+    [1.0, 1.0, 1e-2, 1e-2, 1e-2],
+    [1.0, 0.01, 1e-4, 1e-4, 1e-4],
+    [0.05, 1.0, 0.1, 0.05, 1e-2],
+    [1.0, 1e-3, 0.01, 1e-3, 1e-3],
+    [0.1, 0.3, 1e-4, 0.3, 1e-3],
+];
+
+/// One-step errors below the square root of this share of the series' own movement are rounding.
+const EXACT: f64 = 1e-22;
+
+/// Starts in order of promise, natural units.
+///
+/// # Errors
+/// When no point of the grid can be evaluated; the last reason.
+pub(crate) fn choose(
+    objective: &mut Objective<'_>,
+    known: &[Option<f64>],
+    observed: &[f64],
+) -> Result<Vec<Vec<f64>>, EvaluationError> {
+    let scale = difference_variance(observed);
+    let shapes = shape_grid(objective);
+    let rescale = !known.iter().flatten().any(|v| *v > 0.0) || only_shapes_known(objective, known);
+    let mut found: Vec<(f64, Vec<f64>, usize)> = Vec::new();
+    let mut trouble = EvaluationError::NotPositive;
+    for ratios in RATIOS {
+        for (group, shape) in shapes.iter().enumerate() {
+            let mut values = point(objective, known, ratios, scale, shape);
+            match objective.value(&values) {
+                Ok(value) => {
+                    let mut log_likelihood = value.log_likelihood;
+                    if value.rss <= value.degrees * EXACT {
+                        return Err(EvaluationError::ExactFit);
+                    }
+                    if rescale && value.rss > 0.0 && value.degrees > 0.0 {
+                        let s = value.rss / value.degrees;
+                        log_likelihood -= 0.5 * (value.degrees * s.ln() + value.rss / s - value.rss);
+                        for (i, v) in values.iter_mut().enumerate() {
+                            if known[i].is_none() && is_variance(objective, i) {
+                                *v *= s;
+                            }
+                        }
+                    }
+                    found.push((log_likelihood, values, group));
+                }
+                Err(error) => trouble = error,
+            }
+        }
+    }
+    found.sort_by(|a, b| b.0.total_cmp(&a.0));
+    let most = if shapes.len() > 1 { 4 } else { 1 };
+    let mut starts: Vec<Vec<f64>> = Vec::new();
+    let mut groups: Vec<usize> = Vec::new();
+    for (_, values, group) in &found {
+        // With shapes, starts of different shape: optima lie apart in period and damping.
+        if shapes.len() > 1 && groups.contains(group) {
+            continue;
+        }
+        groups.push(*group);
+        starts.push(values.clone());
+        if starts.len() == most {
+            break;
+        }
+    }
+    if starts.is_empty() { Err(trouble) } else { Ok(starts) }
+}
+
+fn is_variance(objective: &Objective<'_>, i: usize) -> bool {
+    objective.model.parameters()[i].link == Link::Variance
+}
+
+fn only_shapes_known(objective: &Objective<'_>, known: &[Option<f64>]) -> bool {
+    known.iter().enumerate().all(|(i, k)| !is_variance(objective, i) || k.is_none_or(|v| v == 0.0))
+}
+
+/// Parameter values of one grid point.
+fn point(
+    objective: &Objective<'_>,
+    known: &[Option<f64>],
+    ratios: [f64; 5],
+    scale: f64,
+    shape: &[f64],
+) -> Vec<f64> {
+    let mut shapes = shape.iter();
+    objective
+        .model
+        .parameters()
+        .iter()
+        .enumerate()
+        .map(|(i, spec)| {
+            let given = known[i];
+            let value = match (spec.link, spec.role) {
+                (Link::Variance, role) => {
+                    scale
+                        * match role {
+                            Role::Irregular => ratios[0],
+                            Role::Level => ratios[1],
+                            Role::Slope => ratios[2],
+                            Role::Season => ratios[3],
+                            Role::Driver(_) => ratios[4],
+                            Role::Cycle | Role::Autoregression => 0.5,
+                        }
+                }
+                _ => shapes.next().copied().unwrap_or(0.0),
+            };
+            given.unwrap_or(value)
+        })
+        .collect()
+}
+
+/// Combinations of values for the parameters that are not variances, each in the order of the parameters.
+fn shape_grid(objective: &Objective<'_>) -> Vec<Vec<f64>> {
+    let mut grid: Vec<Vec<f64>> = vec![Vec::new()];
+    for spec in objective.model.parameters() {
+        let values: Vec<f64> = match (spec.link, spec.role) {
+            (Link::Variance, _) => continue,
+            (Link::Between { .. }, Role::Slope) => vec![0.9, 0.6],
+            (Link::Between { low, high }, Role::Cycle) if high > 1.0 => {
+                let ratio = high / low;
+                (0..6).map(|i| low * ratio.powf((f64::from(i) + 0.5) / 6.0)).collect()
+            }
+            (Link::Between { .. }, _) => vec![0.9],
+            (Link::Free, _) if spec.name == "ar_1" => vec![0.6, -0.6],
+            (Link::Free, _) => vec![0.0],
+        };
+        grid = grid
+            .iter()
+            .flat_map(|so_far| {
+                values.iter().map(|v| so_far.iter().copied().chain([*v]).collect::<Vec<f64>>())
+            })
+            .collect();
+    }
+    grid
+}
+
+/// Mean square of first differences of neighbouring observed points; 1 where there are none.
+fn difference_variance(observed: &[f64]) -> f64 {
+    let (mut sum, mut count) = (0.0, 0.0);
+    for pair in observed.windows(2) {
+        let difference = pair[1] - pair[0];
+        if difference.is_finite() {
+            sum += difference * difference;
+            count += 1.0;
+        }
+    }
+    if sum > 0.0 { sum / count } else { 1.0 }
+}
