@@ -5,8 +5,9 @@
 //! * **transform**: `log` when every value is above zero and the spread grows with the level: over blocks of a period
 //!   (or eight points) the log of the standard deviation rises with the log of the mean by more than 1/2 (the
 //!   spread-versus-level plot, Tukey 1977, *Exploratory Data Analysis*, ch. 5; slope b suggests the power 1 - b).
-//! * **season**: a candidate period stays when at least two full periods are observed and the autocorrelation of
-//!   the differenced series at that lag is above its one-sided 95 % bound under no season (Bartlett 1946, *JRSS Suppl.* 8).
+//! * **season**: a candidate period stays when at least three full periods are observed and, once the moving average over a
+//!   period is taken off, the autocorrelation at that lag is above its one-sided 95 % bound under no season (Bartlett 1946,
+//!   *JRSS Suppl.* 8).
 //! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, half of them
 //!   when the period is up to 24, otherwise 3 (common practice: the first few carry a yearly pattern).
 //! * **trend**: `damped` from 16 observed points on (the safe default of the trade, common practice), else `local level`.
@@ -279,38 +280,62 @@ fn spread_follows_level(observed: &[f64], period: Option<f64>) -> bool {
     sxx > 0.0 && sxy / sxx > 0.5
 }
 
-/// The differenced series is autocorrelated at the period.
+/// What is left of the series after its moving average over a period is autocorrelated at the period.
+///
+/// Under no season the autocorrelation at lag s has about the variance `(1 + 2 sum r_k^2) / pairs` (Bartlett 1946); the sum runs
+/// over lags up to a quarter of the period, which hold what a wandering level leaves behind.
 fn season_speaks(values: &[f64], period: f64) -> bool {
     let lag = period.round() as usize;
     let seen = values.iter().filter(|v| !v.is_nan()).count() as f64;
-    if lag < 2 || seen < 2.0 * period || values.len() <= 2 * lag {
+    if lag < 2 || seen < 3.0 * period || values.len() < 3 * lag {
         return false;
     }
-    let differences: Vec<f64> = values.windows(2).map(|w| w[1] - w[0]).collect();
-    let valid: Vec<f64> = differences.iter().copied().filter(|v| !v.is_nan()).collect();
-    if valid.len() < lag + 3 {
-        return false;
-    }
-    let mean = valid.iter().sum::<f64>() / valid.len() as f64;
-    let variance = valid.iter().map(|v| (v - mean).powi(2)).sum::<f64>() / valid.len() as f64;
+    let rest = without_moving_average(values, lag);
+    let variance = mean_product(&rest, 0).0;
     if !(variance > 0.0) {
         return false;
     }
-    // Mean product over the pairs that exist, so that gaps neither add nor take away.
-    let correlation = |k: usize| {
-        let (mut sum, mut count) = (0.0, 0.0);
-        for (a, b) in differences.iter().zip(&differences[k..]) {
-            let product = (a - mean) * (b - mean);
-            if !product.is_nan() {
-                sum += product;
-                count += 1.0;
-            }
-        }
-        if count > 0.0 { (sum / count / variance, count) } else { (0.0, 0.0) }
-    };
-    let (at_period, pairs) = correlation(lag);
-    let before: f64 = (1..lag).map(|k| correlation(k).0.powi(2)).sum();
-    // Bartlett's variance uses few short lags when the period is long, else its own noise drowns the test.
-    let bound = normal_quantile(0.95) * ((1.0 + 2.0 * before.min(1.0)) / pairs.max(1.0)).sqrt();
-    pairs >= 3.0 && at_period > bound
+    let (at_period, pairs) = mean_product(&rest, lag);
+    let short: f64 = (1..=(lag / 4).max(1)).map(|k| (mean_product(&rest, k).0 / variance).powi(2)).sum();
+    let bound = normal_quantile(0.95) * ((1.0 + 2.0 * short) / pairs.max(1.0)).sqrt();
+    pairs >= 3.0 && at_period / variance > bound
 }
+
+/// The series less its centred moving average over `period` points (half weights at the ends of an even one: classical
+/// decomposition, common practice); NaN near the ends and where under half of the window is observed.
+fn without_moving_average(values: &[f64], period: usize) -> Vec<f64> {
+    let half = period / 2;
+    let edge = if period.is_multiple_of(2) { 0.5 } else { 1.0 };
+    (0..values.len())
+        .map(|t| {
+            if t < half || t + half >= values.len() {
+                return f64::NAN;
+            }
+            let (mut sum, mut weight) = (0.0, 0.0);
+            for (i, v) in values[t - half..=t + half].iter().enumerate() {
+                if !v.is_nan() {
+                    let w = if i == 0 || i == 2 * half { edge } else { 1.0 };
+                    sum += w * v;
+                    weight += w;
+                }
+            }
+            if weight * 2.0 < period as f64 { f64::NAN } else { values[t] - sum / weight }
+        })
+        .collect()
+}
+
+/// Mean product of the pairs `lag` apart that are both there, and their number.
+fn mean_product(values: &[f64], lag: usize) -> (f64, f64) {
+    let (mut sum, mut count) = (0.0, 0.0);
+    for (a, b) in values.iter().zip(&values[lag.min(values.len())..]) {
+        let product = a * b;
+        if !product.is_nan() {
+            sum += product;
+            count += 1.0;
+        }
+    }
+    if count > 0.0 { (sum / count, count) } else { (0.0, 0.0) }
+}
+
+#[cfg(test)]
+mod tests;

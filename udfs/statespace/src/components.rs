@@ -2,13 +2,14 @@
 
 use crate::error::Trouble;
 use crate::fit::Fit;
+use crate::forecast::Step;
 use crate::quantile::normal_quantile;
 use crate::results::{Components, Forecast, State};
 use crate::smoother::{Functional, Smoothed};
 use crate::structure::Role;
 use crate::transform::{self, Unit};
 
-/// Longest horizon: the joint covariance of the steps is kept whole under a log transform.
+/// Longest horizon: the totals of a log model take time that grows with its square.
 pub const LONGEST_HORIZON: usize = 10_000;
 
 /// What each functional of a pass is for.
@@ -21,6 +22,39 @@ enum Part {
     Effect(usize),
     Coefficient(usize),
     Signal,
+}
+
+/// Running sum of lognormal steps: interval of the lognormal with its mean and variance.
+struct LogTotals {
+    unit: f64,
+    shift: f64,
+    expected: Vec<f64>,
+    total: f64,
+    /// Variance of the total over its squared mean, which stays in range where the variance does not.
+    relative: f64,
+    z: f64,
+    ends: Vec<(f64, f64)>,
+}
+
+impl LogTotals {
+    /// Adds a step: `Cov(exp x, exp y) = E exp x E exp y (exp(cov) - 1)`, summed over the steps before.
+    fn add(&mut self, step: &Step<'_>) {
+        let square = self.unit * self.unit;
+        let (expected, _) = transform::lognormal(step.mean * self.unit + self.shift, step.variance * square);
+        let before = self.total;
+        self.total += expected;
+        let total = self.total;
+        let share = |part: f64| if total > 0.0 { part / total } else { 0.0 };
+        let mut relative = self.relative * share(before).powi(2);
+        for (earlier, c) in self.expected.iter().zip(step.with_earlier) {
+            relative += 2.0 * share(*earlier) * share(expected) * (c * square).min(700.0).exp_m1();
+        }
+        relative += share(expected).powi(2) * (step.variance * square).min(700.0).exp_m1();
+        self.relative = relative;
+        self.expected.push(expected);
+        let (m, v) = transform::lognormal_with_moments(total, relative);
+        self.ends.push(((m - self.z * v.sqrt()).exp(), (m + self.z * v.sqrt()).exp()));
+    }
 }
 
 impl Fit {
@@ -69,13 +103,17 @@ impl Fit {
             }
         }
         let (parts, functionals) = self.functionals(false);
-        let path = self.evaluation.ahead(horizon, &functionals, self.log);
         let (unit, shift) = (self.scaling.unit, self.scaling.shift);
         let z = normal_quantile(0.5 + 0.5 * coverage);
         let h = self.evaluation.system().h;
+        let mut totals =
+            LogTotals { unit, shift, expected: Vec::new(), total: 0.0, relative: 0.0, z, ends: Vec::new() };
+        let mut add = |step: Step<'_>| totals.add(&step);
+        let joint: Option<&mut dyn FnMut(Step<'_>)> = if self.log { Some(&mut add) } else { None };
+        let path = self.evaluation.ahead(horizon, &functionals, joint);
         let mut out =
             Forecast { parts: self.assemble(&parts, &path.functionals, horizon, n), ..Forecast::default() };
-        let (mut total, mut total_variance) = (0.0, 0.0);
+        let mut total = 0.0;
         for step in 0..horizon {
             let m = path.signal.mean[step] * unit + shift;
             let v = (path.signal.variance[step] + h) * unit * unit;
@@ -86,22 +124,15 @@ impl Fit {
             out.lower.push(self.back(m - z * s));
             out.upper.push(self.back(m + z * s));
             total += expected;
-            if let Some(covariance) = &path.covariance {
-                // Cov(exp x, exp y) = E exp x E exp y (exp(cov) - 1), summed row by row.
-                for earlier in 0..=step {
-                    let c = covariance[earlier * horizon + step] * unit * unit;
-                    let term = out.expected[earlier] * expected * c.min(700.0).exp_m1();
-                    total_variance += if earlier == step { term } else { 2.0 * term };
-                }
-                let (m, v) = transform::lognormal_with_moments(total, total_variance);
-                out.total_lower.push((m - z * v.sqrt()).exp());
-                out.total_upper.push((m + z * v.sqrt()).exp());
+            out.total_expected.push(total);
+            let (low, high) = if self.log {
+                totals.ends[step]
             } else {
                 let s = path.sum_variance[step].sqrt() * unit;
-                out.total_lower.push(total - z * s);
-                out.total_upper.push(total + z * s);
-            }
-            out.total_expected.push(total);
+                (total - z * s, total + z * s)
+            };
+            out.total_lower.push(low);
+            out.total_upper.push(high);
         }
         Ok(out)
     }

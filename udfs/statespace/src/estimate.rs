@@ -134,7 +134,9 @@ impl Climb {
                 return;
             };
             let values: Vec<f64> = (0..step.len())
-                .map(|i| if self.moves(i) { moved(self.links[i], self.values[i], step[i]) } else { self.values[i] })
+                .map(|i| {
+                    if self.moves(i) { moved(self.links[i], self.values[i], step[i]) } else { self.values[i] }
+                })
                 .collect();
             if gain < LAST_GAIN {
                 if self.reopen() {

@@ -2,7 +2,7 @@
 //! errors and forecasts, all on the scale of the series as handed in.
 
 use crate::filter::{self, Data, FilterError, Keep, Pass};
-use crate::forecast;
+use crate::forecast::{self, Step};
 use crate::information::Information;
 use crate::one_step::{self, OneStep};
 use crate::request::Series;
@@ -76,8 +76,15 @@ impl Evaluation {
     pub fn with_system(model: Model, system: System, series: Series) -> Result<Self, EvaluationError> {
         let mut pass = Pass::default();
         filter::run(&system, data_of(&series), Keep::Everything, &mut pass)?;
-        let one_step = one_step::errors(&pass);
+        let mut one_step = one_step::errors(&pass);
         pass.whiten_rows();
+        // Prove the way back now, so that everything asked later can rely on it.
+        if smoother::run(&system, data_of(&series), &pass, &[], None).is_err() {
+            pass.keep_open = true;
+            filter::run(&system, data_of(&series), Keep::Everything, &mut pass)?;
+            one_step = one_step::errors(&pass);
+            pass.whiten_rows();
+        }
         Ok(Self { model, system, pass, series, one_step })
     }
 
@@ -106,7 +113,10 @@ impl Evaluation {
     pub fn score_and_information(&self) -> (Vec<f64>, Vec<f64>) {
         let data = data_of(&self.series);
         let (mut score, mut information) = (Score::default(), Information::default());
-        score.compute(&self.model, &self.system, data, &self.pass);
+        // The pass was proved when it was made: there is a way back.
+        if score.compute(&self.model, &self.system, data, &self.pass).is_err() {
+            return (Vec::new(), Vec::new());
+        }
         information.compute(&self.model, &self.system, data, &self.pass, &score.paths);
         (score.gradient, information.matrix)
     }
@@ -131,26 +141,32 @@ impl Evaluation {
 
     /// Coefficient of a constant driver and its standard error.
     pub fn coefficient(&self, driver: usize) -> (f64, f64) {
-        let mut columns = vec![0.0; self.pass.elements + 1];
-        columns[1 + self.system.diffuse.len() + driver] = 1.0;
-        self.pass.whiten(&mut columns);
+        let n = self.pass.n;
+        let mut columns = vec![0.0; self.pass.width(n)];
+        columns[self.pass.driver_column(driver, self.series.drivers.len())] = 1.0;
+        self.pass.whiten(n, &mut columns);
         (columns[0], columns[1..].iter().map(|v| v * v).sum::<f64>().sqrt())
     }
 
     /// Forecast of `h` steps: mean of the observation, variance of the observation, variance of the signal. The series must
     /// hold drivers for them.
     pub fn forecast(&self, h: usize) -> (Vec<f64>, Vec<f64>, Vec<f64>) {
-        let path = self.ahead(h, &[], false);
+        let path = self.ahead(h, &[], None);
         let variance = path.signal.variance.iter().map(|v| v + self.system.h).collect();
         (path.signal.mean, variance, path.signal.variance)
     }
 
     pub(crate) fn smooth(&self, functionals: &[Functional]) -> smoother::Smoothing {
         let level = self.model.state_specs().iter().position(|s| s.role == Role::Level);
-        smoother::run(&self.system, data_of(&self.series), &self.pass, functionals, level)
+        smoother::run(&self.system, data_of(&self.series), &self.pass, functionals, level).unwrap_or_default()
     }
 
-    pub(crate) fn ahead(&self, h: usize, functionals: &[Functional], joint: bool) -> forecast::Path {
+    pub(crate) fn ahead(
+        &self,
+        h: usize,
+        functionals: &[Functional],
+        joint: Option<&mut dyn FnMut(Step<'_>)>,
+    ) -> forecast::Path {
         forecast::run(&self.system, data_of(&self.series), &self.pass, h, functionals, joint)
     }
 

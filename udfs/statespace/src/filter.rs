@@ -7,7 +7,9 @@
 //! a multiple of I on the diffuse states ([`System::start_scale`]), which changes nothing in the results but
 //! keeps `F` positive when the irregular variance is zero and lets `P` settle within a few steps.
 //!
-//! A column stays open to the end, so that a driver that starts late needs no special case.
+//! **Collapse.** Once the rows tell the diffuse states well apart, their columns move into the state: `a` takes their estimate and
+//! `P` their posterior covariance, and the ordinary filter goes on (de Jong 1991, section 5; DK 5.7.3). The
+//! columns of constant drivers stay open to the end, so that a driver that starts late needs no special case.
 
 use crate::reduction::Reduction;
 use crate::system::System;
@@ -52,19 +54,25 @@ pub(crate) struct Pass {
     pub(crate) m: usize,
     /// Diffuse elements d.
     pub(crate) elements: usize,
+    /// First point whose columns no longer hold the diffuse states; n + 1 when they were never taken in.
+    pub(crate) collapsed_at: usize,
+    /// `m x (diffuse states)`: what each unit of their posterior moves in the predicted state at that point.
+    pub(crate) bridge: Vec<f64>,
+    /// Set when a series turned out too nearly singular for it: columns then stay open.
+    pub(crate) keep_open: bool,
     /// Observed points.
     pub(crate) observed: usize,
     pub(crate) log_likelihood: f64,
     /// Innovation variance per point; NaN where missing.
     pub(crate) f: Vec<f64>,
-    /// `n x (d + 1)`: the innovation's data path and its response to each element. Where the point is missing,
+    /// `n x (d + 1)`: the innovation's data path and its response to each element still open. Where the point is missing,
     /// the same with zero in place of the observation.
     pub(crate) rows: Vec<f64>,
     /// `n x m`: `P_t Z' / F_t`.
     pub(crate) gains: Vec<f64>,
     /// `n x m x m` predicted covariances (from [`Keep::Covariances`]).
     pub(crate) covariances: Vec<f64>,
-    /// `n x m x (d + 1)` predicted columns ([`Keep::Everything`]).
+    /// `n x m x (d + 1)` predicted columns ([`Keep::Everything`]); at each point, `m` rows of [`Pass::width`].
     pub(crate) columns: Vec<f64>,
     /// Columns after the last point: prediction of n + 1.
     pub(crate) a: Vec<f64>,
@@ -98,7 +106,8 @@ fn run_from(
 ) -> Result<(), FilterError> {
     let (n, m) = (data.observed.len(), system.states);
     let d = system.diffuse.len() + data.drivers.len();
-    let width = d + 1;
+    let stride = d + 1;
+    let mut width = stride;
     pass.prepare(n, m, d, keep);
     system.start_covariance(scale, &mut pass.p);
     for (j, &state) in system.diffuse.iter().enumerate() {
@@ -112,9 +121,10 @@ fn run_from(
     for t in 0..n {
         let y = data.observed[t];
         let Pass { a, p, pz, row, before, .. } = pass;
+        row.truncate(width);
         row.fill(0.0);
         system.for_loads(data.drifting, t, |state, load| {
-            for (r, v) in row.iter_mut().zip(&a[state * width..]) {
+            for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
                 *r -= load * v;
             }
         });
@@ -123,7 +133,7 @@ fn run_from(
             row[0] += y;
         }
         for (k, x) in data.drivers.iter().enumerate() {
-            row[1 + system.diffuse.len() + k] -= x[t];
+            row[width - data.drivers.len() + k] -= x[t];
         }
         let f = if settled && !missing {
             previous_f
@@ -142,12 +152,12 @@ fn run_from(
             pass.covariances[t * m * m..(t + 1) * m * m].copy_from_slice(p);
         }
         if keep == Keep::Everything {
-            pass.columns[t * m * width..(t + 1) * m * width].copy_from_slice(a);
+            pass.columns[t * m * stride..][..m * width].copy_from_slice(&a[..m * width]);
         }
         if missing {
             if keep >= Keep::Gains {
                 pass.f[t] = f64::NAN;
-                pass.rows[t * width..(t + 1) * width].copy_from_slice(row);
+                pass.rows[t * stride..][..width].copy_from_slice(row);
                 pass.gains[t * m..(t + 1) * m].fill(0.0);
             }
             settled = false;
@@ -173,7 +183,7 @@ fn run_from(
             pass.reduction.push(row, inverse.sqrt());
             if keep >= Keep::Gains {
                 pass.f[t] = f;
-                pass.rows[t * width..(t + 1) * width].copy_from_slice(row);
+                pass.rows[t * stride..][..width].copy_from_slice(row);
                 for (k, g) in pass.gains[t * m..(t + 1) * m].iter_mut().zip(pz.iter()) {
                     *k = g * inverse;
                 }
@@ -190,7 +200,7 @@ fn run_from(
                 }
             }
         }
-        system.forward(a, width);
+        system.forward(&mut a[..m * width], width);
         if !settled {
             system.propagate(p);
             for i in 0..m {
@@ -201,6 +211,12 @@ fn run_from(
             }
         }
         previous_f = if missing { f64::NAN } else { f };
+        let states = system.diffuse.len();
+        if !missing && width == stride && pass.may_collapse(t, states) {
+            width = stride - states;
+            pass.collapse(t + 1, states);
+            (settled, previous_f) = (false, f64::NAN);
+        }
     }
     log_f += product.ln();
     pass.reduction.finish().map_err(FilterError::Undetermined)?;
@@ -223,10 +239,70 @@ fn unchanged(before: &[f64], after: &[f64], m: usize) -> bool {
     })
 }
 
+/// Steps that must be left for a collapse to pay.
+const WORTHWHILE: usize = 16;
+
 impl Pass {
+    /// Width of the row and of the columns at `t`: the data and the elements still open.
+    #[inline]
+    pub(crate) fn width(&self, t: usize) -> usize {
+        1 + self.elements - if t >= self.collapsed_at { self.reduction.eliminated() } else { 0 }
+    }
+
+    /// The kept row at `t`.
+    #[inline]
+    pub(crate) fn row(&self, t: usize) -> &[f64] {
+        &self.rows[t * (self.elements + 1)..][..self.width(t)]
+    }
+
+    /// The predicted columns of one state at `t`.
+    #[inline]
+    pub(crate) fn state_columns(&self, t: usize, state: usize) -> &[f64] {
+        let width = self.width(t);
+        &self.columns[t * self.m * (self.elements + 1) + state * width..][..width]
+    }
+
+    /// Position of a constant driver's column after the last point.
+    pub(crate) fn driver_column(&self, driver: usize, drivers: usize) -> usize {
+        self.width(self.n) - drivers + driver
+    }
+
+    fn may_collapse(&self, t: usize, states: usize) -> bool {
+        // With more drivers than diffuse states little is saved, and one QR of everything keeps the most digits.
+        let saves = states > 0 && 2 * states >= self.elements && t + WORTHWHILE < self.n;
+        saves && !self.keep_open && self.reduction.ready(states)
+    }
+
+    /// Moves the first `states` columns into the predicted state of point `at`.
+    fn collapse(&mut self, at: usize, states: usize) {
+        let (m, width) = (self.m, self.elements + 1);
+        let narrow = width - states;
+        self.collapsed_at = at;
+        self.reduction.eliminate(states);
+        for i in 0..m {
+            let row = &mut self.a[i * width..(i + 1) * width];
+            self.reduction.condition(row);
+            self.bridge[i * states..(i + 1) * states].copy_from_slice(&row[1..=states]);
+            row.copy_within(1 + states.., 1);
+            self.a.copy_within(i * width..i * width + narrow, i * narrow);
+        }
+        self.a.truncate(m * narrow);
+        for i in 0..m {
+            for j in 0..=i {
+                let (x, y) = (&self.bridge[i * states..][..states], &self.bridge[j * states..][..states]);
+                let c = x.iter().zip(y).map(|(a, b)| a * b).sum::<f64>();
+                self.p[i * m + j] += c;
+                if i != j {
+                    self.p[j * m + i] += c;
+                }
+            }
+        }
+    }
+
     fn prepare(&mut self, n: usize, m: usize, d: usize, keep: Keep) {
         let width = d + 1;
         (self.n, self.m, self.elements, self.observed) = (n, m, d, 0);
+        self.collapsed_at = n + 1;
         let refill = |v: &mut Vec<f64>, len: usize| {
             v.clear();
             v.resize(len, 0.0);
@@ -236,6 +312,7 @@ impl Pass {
         refill(&mut self.pz, m);
         refill(&mut self.row, width);
         refill(&mut self.before, m * m);
+        refill(&mut self.bridge, m * d);
         // The kept steps are overwritten in full by the pass: only their length matters.
         if keep >= Keep::Gains {
             self.f.resize(n, 0.0);
@@ -286,7 +363,7 @@ mod tests {
             b.whiten_rows();
             let level = crate::smoother::Functional::States(vec![(0, 1.0)]);
             let [x, y] = [&a, &b].map(|pass| {
-                crate::smoother::run(&system, data, pass, std::slice::from_ref(&level), None).functionals
+                crate::smoother::run(&system, data, pass, std::slice::from_ref(&level), None).unwrap().functionals
             });
             for t in 0..40 {
                 prop_assert!((x[0].mean[t] - y[0].mean[t]).abs() < 1e-9);

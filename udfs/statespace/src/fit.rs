@@ -9,7 +9,7 @@ use crate::request::{Request, Series};
 use crate::residual_checks as checks;
 use crate::results::{Diagnostics, Parameter};
 use crate::scaling::Scaling;
-use crate::structure::{Model, Structure};
+use crate::structure::{Model, Role, Structure};
 
 /// Largest magnitude of an observation: its square must stay in range.
 const LARGEST: f64 = 1e150;
@@ -59,7 +59,7 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
     let trouble = |error| trouble_of(error, &model, request);
     let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
     let evaluation = Evaluation::new(model.clone(), &estimate.values, working).map_err(trouble)?;
-    let parameters = (0..factors.len())
+    let parameters: Vec<Parameter> = (0..factors.len())
         .map(|i| Parameter {
             name: model.parameters()[i].name.clone(),
             value: estimate.values[i] * factors[i],
@@ -67,6 +67,11 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
             known: known[i].is_some(),
         })
         .collect();
+    if parameters.iter().any(|p| !p.value.is_finite()) {
+        return Err(Trouble::Numerical {
+            what: "a variance leaves the range of double precision; bring the series and its drivers to similar sizes",
+        });
+    }
     Ok(Fit {
         structure,
         log,
@@ -153,7 +158,14 @@ fn trouble_of(error: EvaluationError, model: &Model, request: &Request) -> Troub
     match error {
         EvaluationError::Undetermined(element) => {
             let states = model.diffuse_elements() - request.drivers.len();
-            match element.checked_sub(states).and_then(|i| request.drivers.get(i)) {
+            let driver = match element.checked_sub(states) {
+                Some(constant) => request.drivers.get(constant),
+                None => match model.state_specs().iter().filter(|s| s.diffuse).nth(element).map(|s| s.role) {
+                    Some(Role::Driver(drifting)) => request.drifting_drivers.get(drifting),
+                    _ => None,
+                },
+            };
+            match driver {
                 Some(driver) => Trouble::CollinearDrivers { driver: driver.clone() },
                 None => Trouble::Numerical {
                     what: "the observed points do not determine every part of the structure (a season with steps that are never observed?); use fewer harmonics, a simpler trend or no season",

@@ -14,35 +14,45 @@ pub(crate) struct Path {
     pub(crate) signal: Smoothed,
     /// One entry per functional.
     pub(crate) functionals: Vec<Smoothed>,
-    /// `h x h` row-major covariance of the observations to come, when asked for.
-    pub(crate) covariance: Option<Vec<f64>>,
     /// Variance of the running sum of the observations to come, length h.
     pub(crate) sum_variance: Vec<f64>,
 }
 
-/// Runs on from the end of `pass` (whitened) for `h` steps. `data` must hold drivers for `n + h` points.
+/// One step, for whoever needs the joint distribution.
+pub(crate) struct Step<'a> {
+    /// Mean of the observation.
+    pub(crate) mean: f64,
+    /// Variance of the observation.
+    pub(crate) variance: f64,
+    /// Covariance with each earlier step's observation, in order.
+    pub(crate) with_earlier: &'a [f64],
+}
+
+/// Runs on from the end of `pass` (whitened) for `h` steps. `data` must hold drivers for `n + h` points. `joint` is
+/// called at each step; it costs h^2 m operations in all and h m numbers of memory.
 pub(crate) fn run(
     system: &System,
     data: Data<'_>,
     pass: &Pass,
     h: usize,
     functionals: &[Functional],
-    joint: bool,
+    mut joint: Option<&mut dyn FnMut(Step<'_>)>,
 ) -> Path {
-    let (n, m, width) = (pass.n, pass.m, pass.elements + 1);
+    let (n, m, width) = (pass.n, pass.m, pass.width(pass.n));
     let mut a = pass.a.clone();
     for row in a.chunks_exact_mut(width) {
-        pass.whiten(row);
+        pass.whiten(n, row);
     }
     let mut p = pass.p.clone();
     let mut path = Path {
         signal: Smoothed { mean: Vec::with_capacity(h), variance: Vec::with_capacity(h) },
         functionals: functionals.iter().map(|_| Smoothed::default()).collect(),
-        covariance: joint.then(|| vec![0.0; h * h]),
         sum_variance: Vec::with_capacity(h),
     };
     // White columns of each step's signal, for the part of the covariance that the diffuse elements share.
-    let mut rows: Vec<f64> = Vec::with_capacity(if joint { h * width } else { 0 });
+    let mut rows: Vec<f64> = Vec::new();
+    // Covariance of each earlier observation with the state, carried along, and with the observation at hand.
+    let (mut ahead, mut with_earlier): (Vec<f64>, Vec<f64>) = (Vec::new(), Vec::new());
     // Covariance of the running sum with the state, and the sum's own white columns.
     let (mut sum_state, mut sum_row, mut sum_variance) = (vec![0.0; m], vec![0.0; width], 0.0);
     let (mut pz, mut row) = (vec![0.0; m], vec![0.0; width]);
@@ -61,9 +71,9 @@ pub(crate) fn run(
         if !data.drivers.is_empty() {
             let mut columns = vec![0.0; width];
             for (k, x) in data.drivers.iter().enumerate() {
-                columns[1 + system.diffuse.len() + k] = x[t];
+                columns[pass.driver_column(k, data.drivers.len())] = x[t];
             }
-            pass.whiten(&mut columns);
+            pass.whiten(n, &mut columns);
             row.iter_mut().zip(&columns).for_each(|(to, from)| *to += from);
         }
         let mut conditional = 0.0;
@@ -72,28 +82,35 @@ pub(crate) fn run(
             conditional += load * pz[state];
             with_sum += load * sum_state[state];
         });
+        // A state that is known exactly leaves a covariance of rounding, of either sign.
+        let conditional = f64::max(conditional, 0.0);
         let white: f64 = row[1..].iter().map(|v| v * v).sum();
         path.signal.mean.push(row[0]);
         path.signal.variance.push(conditional + white);
         sum_variance += conditional + system.h + 2.0 * with_sum;
         sum_row.iter_mut().zip(&row).for_each(|(to, from)| *to += from);
-        path.sum_variance.push(sum_variance + sum_row[1..].iter().map(|v| v * v).sum::<f64>());
+        path.sum_variance.push(sum_variance.max(0.0) + sum_row[1..].iter().map(|v| v * v).sum::<f64>());
         for (functional, out) in functionals.iter().zip(&mut path.functionals) {
             let (mean, variance) = evaluate(functional, data, t, &a, &p, m, width);
             out.mean.push(mean);
             out.variance.push(variance);
         }
-        if let Some(covariance) = &mut path.covariance {
-            rows.extend_from_slice(&row);
-            covariance[step * h + step] = conditional + white + system.h;
-            // T^k P_t Z' against later loads.
-            let mut ahead = pz.clone();
-            for later in step + 1..h {
-                system.forward(&mut ahead, 1);
-                let mut c = 0.0;
-                system.for_loads(data.drifting, n + later, |state, load| c += load * ahead[state]);
-                covariance[step * h + later] = c;
+        if let Some(joint) = &mut joint {
+            with_earlier.clear();
+            // By number and not in chunks of m: a model of drivers alone has no state, but its steps share coefficients.
+            for (i, earlier) in rows.chunks_exact(width).enumerate() {
+                let state = &mut ahead[i * m..(i + 1) * m];
+                let mut c: f64 = earlier[1..].iter().zip(&row[1..]).map(|(a, b)| a * b).sum();
+                system.for_loads(data.drifting, t, |s, load| c += load * state[s]);
+                with_earlier.push(c);
+                system.forward(state, 1);
             }
+            let variance = conditional + white + system.h;
+            joint(Step { mean: row[0], variance, with_earlier: &with_earlier });
+            rows.extend_from_slice(&row);
+            ahead.extend_from_slice(&pz);
+            let fresh = ahead.len() - m;
+            system.forward(&mut ahead[fresh..], 1);
         }
         for (to, from) in sum_state.iter_mut().zip(&pz) {
             *to += from;
@@ -103,16 +120,6 @@ pub(crate) fn run(
         system.propagate(&mut p);
         for i in 0..m {
             p[i * m + i] += system.q[i];
-        }
-    }
-    if let Some(covariance) = &mut path.covariance {
-        for i in 0..h {
-            for j in i + 1..h {
-                let (x, y) = (&rows[i * width + 1..(i + 1) * width], &rows[j * width + 1..(j + 1) * width]);
-                let c = covariance[i * h + j] + x.iter().zip(y).map(|(a, b)| a * b).sum::<f64>();
-                covariance[i * h + j] = c;
-                covariance[j * h + i] = c;
-            }
         }
     }
     path
@@ -138,12 +145,12 @@ fn evaluate(
         Functional::Signal => &[],
     };
     let mut columns = vec![0.0; width];
-    let mut conditional = 0.0;
+    let mut conditional = 0.0_f64;
     for &(i, w) in weights {
         for (to, from) in columns.iter_mut().zip(&a[i * width..(i + 1) * width]) {
             *to += w * from;
         }
         conditional += weights.iter().map(|&(j, v)| w * v * p[i * m + j]).sum::<f64>();
     }
-    (columns[0], conditional + columns[1..].iter().map(|v| v * v).sum::<f64>())
+    (columns[0], conditional.max(0.0) + columns[1..].iter().map(|v| v * v).sum::<f64>())
 }

@@ -133,13 +133,22 @@ impl Information {
         }
     }
 
-    /// Writes `P q_j` into `projected`.
+    /// Writes `P q_j` into `projected`: filter and smoother on `q_j` with the gains at hand, the elements' share taken out. Across
+    /// the collapse the elements go into the state with their estimate from `q_j` itself.
     fn project(&mut self, index: usize, system: &System, data: Data<'_>, pass: &Pass) {
-        let (n, m, width) = (pass.n, pass.m, pass.elements + 1);
+        let (n, m) = (pass.n, pass.m);
+        let states = pass.reduction.eliminated();
         let q = &self.responses[index * n..(index + 1) * n];
         self.x.fill(0.0);
         self.white.fill(0.0);
+        // `white`: first the elements that collapse, then those that stay open (all of them without a collapse).
         for t in 0..n {
+            if t == pass.collapsed_at {
+                for (i, x) in self.x.iter_mut().enumerate() {
+                    let moved = pass.bridge[i * states..(i + 1) * states].iter().zip(&self.white);
+                    *x -= moved.map(|(b, w)| b * w).sum::<f64>();
+                }
+            }
             let f = pass.f[t];
             if !f.is_nan() {
                 let mut v = q[t];
@@ -147,7 +156,9 @@ impl Information {
                 for (x, k) in self.x.iter_mut().zip(&pass.gains[t * m..(t + 1) * m]) {
                     *x += k * v;
                 }
-                for (w, c) in self.white.iter_mut().zip(&pass.rows[t * width + 1..(t + 1) * width]) {
+                let columns = &pass.row(t)[1..];
+                let open = pass.elements - columns.len();
+                for (w, c) in self.white[open..].iter_mut().zip(columns) {
                     *w += c * v / f;
                 }
                 self.projected[t] = v;
@@ -156,14 +167,21 @@ impl Information {
         }
         self.x.fill(0.0);
         for t in (0..n).rev() {
+            if t + 1 == pass.collapsed_at {
+                // What the points to come add to the collapsed elements' estimate.
+                for (c, w) in self.white[..states].iter_mut().enumerate() {
+                    *w -= (0..m).map(|i| pass.bridge[i * states + c] * self.x[i]).sum::<f64>();
+                }
+            }
             system.backward(&mut self.x, 1);
             let f = pass.f[t];
             if f.is_nan() {
                 self.projected[t] = 0.0;
                 continue;
             }
-            let columns = &pass.rows[t * width + 1..(t + 1) * width];
-            let fitted: f64 = columns.iter().zip(&self.white).map(|(c, w)| c * w).sum();
+            let columns = &pass.row(t)[1..];
+            let open = pass.elements - columns.len();
+            let fitted: f64 = columns.iter().zip(&self.white[open..]).map(|(c, w)| c * w).sum();
             let gain = &pass.gains[t * m..(t + 1) * m];
             let along: f64 = gain.iter().zip(&self.x).map(|(k, x)| k * x).sum();
             let u = (self.projected[t] - fitted) / f - along;

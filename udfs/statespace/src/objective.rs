@@ -59,7 +59,15 @@ fn evaluate(
     let Workspace { pass, score, information } = workspace;
     filter::run(system, data, keep, pass)?;
     pass.whiten_rows();
-    score.compute(model, system, data, pass);
+    if score.compute(model, system, data, pass).is_err() {
+        pass.keep_open = true;
+        let again = filter::run(system, data, keep, pass);
+        pass.keep_open = false;
+        again?;
+        pass.whiten_rows();
+        // Without a collapse there is nothing to go back across.
+        score.compute(model, system, data, pass).map_err(|_| EvaluationError::NotPositive)?;
+    }
     information.compute(model, system, data, pass, &score.paths);
     Ok(pass.log_likelihood)
 }

@@ -22,17 +22,28 @@ pub struct OneStep {
 
 /// Rotates the kept rows (not yet whitened) into a triangle, one by one.
 pub(crate) fn errors(pass: &Pass) -> OneStep {
-    let (n, d) = (pass.n, pass.elements);
-    let width = d + 1;
+    let n = pass.n;
+    let mut d = pass.elements;
+    let mut width = d + 1;
     let mut triangle = vec![0.0; d * width];
     let mut row = vec![0.0; width];
     let mut out = OneStep { standardised: vec![f64::NAN; n], variance: vec![f64::NAN; n] };
     for t in 0..n {
+        if t == pass.collapsed_at {
+            // The collapsed elements' rows leave the triangle: what is left concerns the open ones alone.
+            let gone = width - pass.width(t);
+            let narrow = width - gone;
+            for i in 0..narrow - 1 {
+                let from = (gone + i) * width + gone;
+                triangle.copy_within(from..from + narrow, i * narrow);
+            }
+            (d, width) = (narrow - 1, narrow);
+        }
         let f = pass.f[t];
         if f.is_nan() {
             continue;
         }
-        let kept = &pass.rows[t * width..(t + 1) * width];
+        let kept = pass.row(t);
         let weight = 1.0 / f.sqrt();
         for (to, from) in row.iter_mut().zip(&kept[1..]) {
             *to = -from * weight;

@@ -9,8 +9,11 @@
 /// `|R_ii|` below this share of its column's norm counts as zero: the element cannot be told.
 const RANK_TOLERANCE: f64 = 1e-13;
 
+/// Smallest sine of the angle between an element's column and those before it at which the elements count as well told apart.
+const WELL_TOLD: f64 = 0.02;
+
 /// Rows of one block. A whole number of vector registers, and enough to make the triangle's own share small.
-const BLOCK: usize = 32;
+const BLOCK: usize = 16;
 
 /// The reduced rows. Column order: the `d` elements, then the data.
 #[derive(Debug, Clone, Default)]
@@ -24,6 +27,17 @@ pub(crate) struct Reduction {
     rss: f64,
     /// `1 / R_ii` once finished.
     inverse: Vec<f64>,
+    eliminated: Eliminated,
+}
+
+/// The rows of the triangle that belong to elements which have left it for the state.
+#[derive(Debug, Clone, Default)]
+struct Eliminated {
+    count: usize,
+    width: usize,
+    /// `count x width`: `[R_11 | R_12 | z_1]`.
+    triangle: Vec<f64>,
+    inverse: Vec<f64>,
 }
 
 impl Reduction {
@@ -35,6 +49,60 @@ impl Reduction {
         self.block.clear();
         self.block.resize(BLOCK * width, 0.0);
         (self.used, self.rss) = (0, 0.0);
+        self.eliminated.count = 0;
+        self.eliminated.triangle.clear();
+        self.eliminated.inverse.clear();
+    }
+
+    /// Elements that have been eliminated.
+    pub(crate) fn eliminated(&self) -> usize {
+        self.eliminated.count
+    }
+
+    /// True when the first `count` elements are well told apart by the rows so far. Asked at block ends only, else false.
+    pub(crate) fn ready(&self, count: usize) -> bool {
+        let width = self.elements + 1;
+        self.used == 0
+            && (0..count).all(|j| {
+                let squares: f64 = (0..=j).map(|i| self.triangle[i * width + j].powi(2)).sum();
+                squares > 0.0 && self.triangle[j * width + j] >= WELL_TOLD * squares.sqrt()
+            })
+    }
+
+    /// Takes the first `count` elements out of the triangle. Given the others, they are now
+    /// `R_11^-1 (z_1 + e - R_12 d_2)` with `e ~ N(0, I)`.
+    pub(crate) fn eliminate(&mut self, count: usize) {
+        let (d, width) = (self.elements, self.elements + 1);
+        self.eliminated.count = count;
+        self.eliminated.width = width;
+        self.eliminated.triangle.extend_from_slice(&self.triangle[..count * width]);
+        for j in 0..count {
+            self.eliminated.inverse.push(1.0 / self.triangle[j * width + j]);
+        }
+        let rest = d - count;
+        for i in 0..rest {
+            let from = (count + i) * width + count;
+            self.triangle.copy_within(from..from + rest + 1, i * (rest + 1));
+        }
+        self.elements = rest;
+        self.triangle.truncate(rest * (rest + 1));
+        self.block.truncate(BLOCK * (rest + 1));
+    }
+
+    /// Rewrites a row of responses `[data, first elements, others]` in the basis of `e`: `[mean, e, others given e]`.
+    pub(crate) fn condition(&self, row: &mut [f64]) {
+        let Eliminated { count, width, triangle, inverse } = &self.eliminated;
+        for j in 0..*count {
+            let r = &triangle[j * width..(j + 1) * width];
+            let x = row[1 + j] * inverse[j];
+            row[1 + j] = x;
+            if x != 0.0 {
+                for (to, from) in row[2 + j..].iter_mut().zip(&r[j + 1..width - 1]) {
+                    *to -= x * from;
+                }
+                row[0] += x * r[width - 1];
+            }
+        }
     }
 
     /// Adds one row. `row[0]` is the data's path, `row[1..]` the innovation's response to the elements
@@ -86,16 +154,21 @@ impl Reduction {
         self.used = 0;
     }
 
-    /// Reduces what is left; returns the first element that the data do not determine, if any.
+    /// Reduces what is left; returns the first element that the data do not determine, if any (counted with the eliminated).
     pub(crate) fn finish(&mut self) -> Result<(), usize> {
         self.reduce();
         let (d, width) = (self.elements, self.elements + 1);
         self.inverse.clear();
+        let first = self.eliminated.count;
         for j in 0..d {
-            let norm: f64 = (0..=j).map(|i| self.triangle[i * width + j].powi(2)).sum::<f64>().sqrt();
+            // The column's part along the eliminated elements counts: what repeats them leaves nothing but rounding here.
+            let along = self.eliminated.triangle.iter().skip(first + j).step_by(self.eliminated.width.max(1));
+            let squares = along.take(first).map(|r| r * r).sum::<f64>()
+                + (0..=j).map(|i| self.triangle[i * width + j].powi(2)).sum::<f64>();
+            let norm = squares.sqrt();
             let pivot = self.triangle[j * width + j];
             if pivot.is_nan() || pivot <= RANK_TOLERANCE * norm || norm == 0.0 {
-                return Err(j);
+                return Err(first + j);
             }
             self.inverse.push(1.0 / pivot);
         }
@@ -106,30 +179,33 @@ impl Reduction {
         self.rss
     }
 
-    /// Sum of log R_ii.
+    /// Sum of log R_ii, eliminated elements included.
     pub(crate) fn log_diagonal(&self) -> f64 {
-        let width = self.elements + 1;
-        (0..self.elements).map(|j| self.triangle[j * width + j].ln()).sum()
+        let first: f64 = self.eliminated.inverse.iter().map(|r| r.ln()).sum();
+        self.inverse.iter().map(|r| -r.ln()).sum::<f64>() - first
     }
 
-    /// Element `i` of `z`: the estimate of the elements in the basis in which their covariance is I.
-    #[inline]
-    pub(crate) fn white_estimate(&self, i: usize) -> f64 {
-        self.triangle[i * (self.elements + 1) + self.elements]
-    }
-
-    /// Solves `x R = row` in place: a row of responses in the white basis.
+    /// Rewrites a row of responses `[data, elements]` in the basis in which the elements' posterior covariance is I:
+    /// mean, then the response to each white element (`x R = row`).
     #[inline]
     pub(crate) fn whiten(&self, row: &mut [f64]) {
+        let (mean, columns) = row.split_at_mut(1);
+        self.whiten_split(&mut mean[0], columns);
+    }
+
+    /// [`Self::whiten`] with the mean and the columns apart.
+    #[inline]
+    pub(crate) fn whiten_split(&self, mean: &mut f64, columns: &mut [f64]) {
         let width = self.elements + 1;
         for j in 0..self.elements {
-            let r = &self.triangle[j * width..];
-            let x = row[j] * self.inverse[j];
-            row[j] = x;
+            let r = &self.triangle[j * width..(j + 1) * width];
+            let x = columns[j] * self.inverse[j];
+            columns[j] = x;
             if x != 0.0 {
-                for k in j + 1..self.elements {
-                    row[k] -= x * r[k];
+                for (to, from) in columns[j + 1..].iter_mut().zip(&r[j + 1..]) {
+                    *to -= x * from;
                 }
+                *mean += x * r[self.elements];
             }
         }
     }
@@ -172,15 +248,14 @@ mod tests {
             let z = qr.q().transpose() * &y;
             prop_assert!((reduction.log_diagonal() - log_diagonal).abs() < 1e-11);
             prop_assert!((reduction.rss() - (y.norm_squared() - z.norm_squared())).abs() < 1e-9);
-            let mut probe = vec![1.0, -2.0, 0.5];
+            let mut probe = vec![0.0, 1.0, -2.0, 0.5];
             reduction.whiten(&mut probe);
             let variance = (x.transpose() * &x).try_inverse().unwrap();
             let g = DVector::from_vec(vec![1.0, -2.0, 0.5]);
             let expected = (g.transpose() * &variance * &g)[0];
-            prop_assert!((probe.iter().map(|v| v * v).sum::<f64>() / expected - 1.0).abs() < 1e-9);
-            let estimate: f64 = (0..d).map(|i| probe[i] * reduction.white_estimate(i)).sum();
+            prop_assert!((probe[1..].iter().map(|v| v * v).sum::<f64>() / expected - 1.0).abs() < 1e-9);
             let direct = (g.transpose() * variance * x.transpose() * y)[0];
-            prop_assert!((estimate - direct).abs() < 1e-9 * (1.0 + direct.abs()));
+            prop_assert!((probe[0] - direct).abs() < 1e-9 * (1.0 + direct.abs()));
         }
     }
 

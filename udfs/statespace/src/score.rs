@@ -6,7 +6,7 @@
 //! holds at zero variances. A proper start adds `1/2 tr(dP_1 (r_0 r_0' - N_0))`. The white columns of the
 //! diffuse elements correct each second moment.
 
-use crate::backward::{self, Cumulants, Visitor};
+use crate::backward::{self, Basis, Cumulants, NearlySingular, Visitor};
 use crate::filter::{Data, Pass};
 use crate::structure::Model;
 use crate::system::System;
@@ -49,7 +49,16 @@ struct Moments {
 impl Score {
     /// Runs the smoothing pass over `pass`, which must have kept gains (and everything, if the model has parameters
     /// that are not variances) and had its rows whitened.
-    pub(crate) fn compute(&mut self, model: &Model, system: &System, data: Data<'_>, pass: &Pass) {
+    ///
+    /// # Errors
+    /// As [`backward::run`].
+    pub(crate) fn compute(
+        &mut self,
+        model: &Model,
+        system: &System,
+        data: Data<'_>,
+        pass: &Pass,
+    ) -> Result<(), NearlySingular> {
         let (n, m, width) = (pass.n, pass.m, pass.elements + 1);
         let refill = |v: &mut Vec<f64>, len: usize| {
             v.clear();
@@ -73,8 +82,9 @@ impl Score {
             paths: &mut self.paths,
             moments: &mut self.moments,
         };
-        backward::run(system, data, pass, &mut self.cumulants, &mut collect);
+        backward::run(system, data, pass, &mut self.cumulants, &mut collect)?;
         let (r, n0) = self.cumulants.first();
+        let width = pass.width(0);
         self.paths.r_first.clear();
         self.paths.r_first.extend(r.iter().step_by(width));
         self.gradient.clear();
@@ -93,6 +103,7 @@ impl Score {
             }
             self.gradient.push(g);
         }
+        Ok(())
     }
 }
 
@@ -107,7 +118,8 @@ struct Collect<'a> {
 
 impl Visitor for Collect<'_> {
     fn disturbance(&mut self, t: usize, r: &[f64], n: &[f64]) {
-        let (m, width) = (self.pass.m, self.pass.elements + 1);
+        let m = self.pass.m;
+        let width = r.len() / m.max(1);
         for (i, state) in self.model.state_specs().iter().enumerate() {
             let row = &r[i * width..(i + 1) * width];
             self.paths.r[t * m + i] = row[0];
@@ -117,7 +129,7 @@ impl Visitor for Collect<'_> {
             }
         }
         if self.shapes {
-            self.moments.r_after.copy_from_slice(r);
+            self.moments.r_after[..r.len()].copy_from_slice(r);
             self.moments.n_after.copy_from_slice(n);
         }
     }
@@ -128,14 +140,14 @@ impl Visitor for Collect<'_> {
         self.moments.irregular += 0.5 * (squares - weight);
     }
 
-    fn state(&mut self, t: usize, r: &[f64], _n: &[f64]) {
+    fn state(&mut self, t: usize, r: &[f64], _n: &[f64], basis: &Basis<'_>) {
         // The transition after the last point reaches no observation.
         if !self.shapes || t + 1 == self.pass.n {
             return;
         }
         for (index, effect) in self.model.effects.iter().enumerate() {
             for &(row, column, value) in &effect.transition {
-                let moment = self.moments.of_transition(self.system, self.pass, t, r, (row, column));
+                let moment = self.moments.of_transition(self.system, self.pass, (t, basis), r, (row, column));
                 self.moments.through_transition[index] += value * moment;
             }
         }
@@ -148,22 +160,23 @@ impl Moments {
         &mut self,
         system: &System,
         pass: &Pass,
-        t: usize,
+        (t, basis): (usize, &Basis<'_>),
         r: &[f64],
         (row, column): (usize, usize),
     ) -> f64 {
-        let (m, width) = (pass.m, pass.elements + 1);
+        let (m, width) = (pass.m, pass.width(t));
         let p = &pass.covariances[(t * m + column) * m..(t * m + column + 1) * m];
         // Smoothed state, mean and white columns: A + P r.
-        self.smoothed.copy_from_slice(&pass.columns[(t * m + column) * width..(t * m + column + 1) * width]);
-        pass.whiten(&mut self.smoothed);
+        let smoothed = &mut self.smoothed[..width];
+        smoothed.copy_from_slice(pass.state_columns(t, column));
+        basis.whiten(smoothed);
         for (weight, r) in p.iter().zip(r.chunks_exact(width)) {
-            for (to, from) in self.smoothed.iter_mut().zip(r) {
+            for (to, from) in smoothed.iter_mut().zip(r) {
                 *to += weight * from;
             }
         }
         let r_after = &self.r_after[row * width..(row + 1) * width];
-        let product: f64 = self.smoothed.iter().zip(r_after).map(|(a, b)| a * b).sum();
+        let product: f64 = smoothed.iter().zip(r_after).map(|(a, b)| a * b).sum();
         // (N_t T P_{t|t})[row, column] with P_{t|t} = P - K (F K)'.
         self.vector.copy_from_slice(&self.n_after[row * m..(row + 1) * m]);
         system.backward(&mut self.vector, 1);

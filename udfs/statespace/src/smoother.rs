@@ -5,7 +5,7 @@
 //! (Harvey & Koopman 1992, *JBES* 10, 377-389; de Jong & Penzer 1998, *JASA* 93, 796-806), defined also where the
 //! variance is zero.
 
-use crate::backward::{self, Cumulants, Visitor};
+use crate::backward::{self, Basis, Cumulants, NearlySingular, Visitor};
 use crate::filter::{Data, Pass};
 use crate::system::System;
 
@@ -45,13 +45,16 @@ pub(crate) struct Smoothing {
 
 /// Smooths `functionals`. `pass` must have kept everything and had its rows whitened. `level`: the state whose
 /// disturbance `shift_t` is about.
+///
+/// # Errors
+/// As [`backward::run`].
 pub(crate) fn run(
     system: &System,
     data: Data<'_>,
     pass: &Pass,
     functionals: &[Functional],
     level: Option<usize>,
-) -> Smoothing {
+) -> Result<Smoothing, NearlySingular> {
     let n = pass.n;
     let blank = || Smoothed { mean: vec![f64::NAN; n], variance: vec![f64::NAN; n] };
     let mut collect = Collect {
@@ -68,8 +71,8 @@ pub(crate) fn run(
         pg: vec![0.0; pass.m],
         white: vec![0.0; pass.elements + 1],
     };
-    backward::run(system, data, pass, &mut Cumulants::default(), &mut collect);
-    collect.out
+    backward::run(system, data, pass, &mut Cumulants::default(), &mut collect)?;
+    Ok(collect.out)
 }
 
 struct Collect<'a> {
@@ -90,7 +93,8 @@ impl Visitor for Collect<'_> {
     fn disturbance(&mut self, t: usize, r: &[f64], n: &[f64]) {
         let Some(level) = self.level else { return };
         if t + 1 < self.pass.n {
-            let (m, width) = (self.pass.m, self.pass.elements + 1);
+            let m = self.pass.m;
+            let width = r.len() / m.max(1);
             self.out.shift_t[t + 1] =
                 standardised(&r[level * width..(level + 1) * width], n[level * m + level]);
         }
@@ -100,19 +104,18 @@ impl Visitor for Collect<'_> {
         self.out.outlier_t[t] = standardised(u, weight);
     }
 
-    fn state(&mut self, t: usize, r: &[f64], n: &[f64]) {
-        let (m, width) = (self.pass.m, self.pass.elements + 1);
+    fn state(&mut self, t: usize, r: &[f64], n: &[f64], basis: &Basis<'_>) {
+        let (m, width) = (self.pass.m, self.pass.width(t));
         let p = &self.pass.covariances[t * m * m..(t + 1) * m * m];
-        let columns = &self.pass.columns[t * m * width..(t + 1) * m * width];
         for (index, functional) in self.functionals.iter().enumerate() {
             self.pg.fill(0.0);
             self.white.fill(0.0);
-            let (pg, white) = (&mut self.pg, &mut self.white);
+            let (pg, white) = (&mut self.pg, &mut self.white[..width]);
             let mut add = |state: usize, weight: f64| {
                 for (to, from) in pg.iter_mut().zip(&p[state * m..(state + 1) * m]) {
                     *to += weight * from;
                 }
-                for (to, from) in white.iter_mut().zip(&columns[state * width..(state + 1) * width]) {
+                for (to, from) in white.iter_mut().zip(self.pass.state_columns(t, state)) {
                     *to += weight * from;
                 }
             };
@@ -121,22 +124,21 @@ impl Visitor for Collect<'_> {
                 Functional::States(weights) => {
                     weights.iter().for_each(|&(state, weight)| add(state, weight));
                     prior += weights.iter().map(|&(state, weight)| weight * self.pg[state]).sum::<f64>();
-                    self.pass.whiten(&mut self.white);
+                    basis.whiten(&mut self.white[..width]);
                 }
                 Functional::DriverEffect { state, driver } => {
                     let x = self.data.drifting[*driver][t];
                     add(*state, x);
                     prior += x * self.pg[*state];
-                    self.pass.whiten(&mut self.white);
+                    basis.whiten(&mut self.white[..width]);
                 }
                 Functional::Signal => {
                     self.system.for_loads(self.data.drifting, t, &mut add);
                     self.system
                         .for_loads(self.data.drifting, t, |state, load| prior += load * self.pg[state]);
-                    // The kept row is (y - prediction) with its columns, white already.
-                    for (to, from) in self.white.iter_mut().zip(&self.pass.rows[t * width..(t + 1) * width]) {
-                        *to = -from;
-                    }
+                    // The kept row is (y - prediction) with its columns.
+                    basis.row(&mut self.white[..width]);
+                    self.white[..width].iter_mut().for_each(|x| *x = -*x);
                     let y = self.data.observed[t];
                     if !y.is_nan() {
                         self.white[0] += y;
@@ -146,14 +148,14 @@ impl Visitor for Collect<'_> {
             let mut reduction = 0.0;
             for (i, &g) in self.pg.iter().enumerate() {
                 if g != 0.0 {
-                    for (to, from) in self.white.iter_mut().zip(&r[i * width..(i + 1) * width]) {
+                    for (to, from) in self.white[..width].iter_mut().zip(&r[i * width..(i + 1) * width]) {
                         *to += g * from;
                     }
                     let along: f64 = self.pg.iter().zip(&n[i * m..(i + 1) * m]).map(|(a, b)| a * b).sum();
                     reduction += g * along;
                 }
             }
-            let diffuse: f64 = self.white[1..].iter().map(|v| v * v).sum();
+            let diffuse: f64 = self.white[1..width].iter().map(|v| v * v).sum();
             let out = &mut self.out.functionals[index];
             out.mean[t] = self.white[0];
             out.variance[t] = (prior - reduction).max(0.0) + diffuse;

@@ -51,8 +51,8 @@ pub(crate) fn lognormal(m: f64, v: f64) -> (f64, f64) {
     (mean, mean * v.min(LARGEST).exp_m1().sqrt())
 }
 
-/// Parameters `(m, v)` of the lognormal with this mean and variance.
-pub(crate) fn lognormal_with_moments(mean: f64, variance: f64) -> (f64, f64) {
-    let v = (variance / (mean * mean)).ln_1p();
+/// Parameters `(m, v)` of the lognormal with this mean and this variance over the squared mean.
+pub(crate) fn lognormal_with_moments(mean: f64, relative_variance: f64) -> (f64, f64) {
+    let v = relative_variance.max(0.0).ln_1p();
     (mean.ln() - 0.5 * v, v)
 }

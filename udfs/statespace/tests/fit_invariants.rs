@@ -408,6 +408,21 @@ fn known_parameters_are_respected() {
 }
 
 #[test]
+fn a_damping_that_is_not_determined_hides_no_other_error() {
+    // The slope of the Nile is zero: its damping is arbitrary, the rest is the local level with its standard errors.
+    let series = Series { observed: column("nile", "y"), ..Series::default() };
+    let [damped, level] = [Trend::Damped, Trend::LocalLevel]
+        .map(|trend| fit(&series, &plain(trend), &mut Workspace::new()).expect("a fit"));
+    let [_, _, slope, damping] = damped.parameters() else { panic!("four parameters") };
+    assert_eq!(slope.value, 0.0);
+    assert!(slope.std_error.is_nan() && damping.std_error.is_nan());
+    for (a, b) in damped.parameters().iter().zip(level.parameters()) {
+        close(&a.name, &[a.value / b.std_error], &[b.value / b.std_error], 2e-3);
+        close(&a.name, &[a.std_error / b.std_error], &[1.0], 2e-3);
+    }
+}
+
+#[test]
 fn the_same_input_gives_the_same_bits() {
     let all = |fit: &Fit| {
         let mut numbers = parameters(fit, 1.0);

@@ -1,11 +1,14 @@
 //! Invariants of likelihood, score, smoother and estimation on random structures and data.
 
+#[path = "support/driver.rs"]
+mod driver;
 #[path = "support/simulate.rs"]
 mod simulate;
 
+use driver::driver;
 use nalgebra::{DMatrix, DVector};
 use proptest::prelude::*;
-use simulate::{driver, simulate};
+use simulate::simulate;
 use stillwell_statespace::structure::{Cycle, Link, Role, Season, Structure, Trend};
 use stillwell_statespace::{Evaluation, Series};
 

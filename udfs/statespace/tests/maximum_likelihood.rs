@@ -11,7 +11,7 @@ const SHORT: f64 = 1e-6;
 /// The same where the likelihood has several optima (cycle, autoregression).
 const SHORT_SEVERAL_OPTIMA: f64 = 1e-4;
 
-pub fn request(case: &Case) -> Request {
+fn request(case: &Case) -> Request {
     let s = &case.structure;
     let irregular_missing = case.json["spec"]["irregular"].as_bool() == Some(false);
     Request {

@@ -8,13 +8,16 @@
 //! Intervals are taken where the estimation works: on the logarithm of a variance and the logit of a damping, with the
 //! standard error carried over by the derivative. On the variance itself they are skewed and fall short in small samples.
 
+#[path = "support/driver.rs"]
+mod driver;
 #[path = "support/plain.rs"]
 mod plain;
 #[path = "support/simulate.rs"]
 mod simulate;
 
+use driver::driver;
 use plain::plain;
-use simulate::{driver, simulate};
+use simulate::simulate;
 use stillwell_statespace::quantile::chi_square_upper_tail;
 use stillwell_statespace::structure::{Season, Structure, Trend};
 use stillwell_statespace::{Evaluation, Fit, Parameter, Request, SeasonRequest, Series, Workspace, fit};

@@ -3,9 +3,10 @@
 
 mod support;
 
-use stillwell_statespace::State;
+use serde_json::Value;
 use stillwell_statespace::structure::Role;
-use support::{Case, numbers, sd};
+use stillwell_statespace::{Evaluation, EvaluationError, State};
+use support::{Case, numbers};
 
 /// Log-likelihood: absolute, or relative where that is larger.
 const LOG_LIKELIHOOD: (f64, f64) = (1e-8, 1e-10);
@@ -132,4 +133,49 @@ fn every_case_at_given_parameters() {
         }
     }
     assert!(failed.is_empty(), "outside the tolerances: {failed:?}");
+}
+
+/// Standard deviation of the observed values.
+fn sd(values: &[f64]) -> f64 {
+    let seen: Vec<f64> = values.iter().copied().filter(|v| !v.is_nan()).collect();
+    let mean = seen.iter().sum::<f64>() / seen.len() as f64;
+    (seen.iter().map(|v| (v - mean).powi(2)).sum::<f64>() / seen.len() as f64).sqrt()
+}
+
+impl Case {
+    /// Values of the model's parameters in a `params` block of the case.
+    fn values(&self, params: &Value) -> Vec<f64> {
+        let model = self.structure.model();
+        let get = |name: &str| params[name].as_f64().unwrap_or(0.0);
+        model
+            .parameters()
+            .iter()
+            .map(|p| match p.name.as_str() {
+                "irregular" => get("sigma2.irregular"),
+                "level" => get("sigma2.level"),
+                "slope" => get("sigma2.slope"),
+                "season" => get("sigma2.seasonal"),
+                "slope_damping" => get("phi.slope"),
+                "cycle" => get("sigma2.cycle"),
+                "cycle_damping" => get("rho.cycle"),
+                "cycle_period" => std::f64::consts::TAU / get("frequency.cycle"),
+                "autoregression" => get("sigma2.ar"),
+                "ar_1" => get("phi.ar"),
+                driver => get(&format!("sigma2.beta.{driver}")),
+            })
+            .collect()
+    }
+
+    fn evaluate(&self, params: &Value) -> Result<Evaluation, EvaluationError> {
+        let (model, values) = (self.structure.model(), self.values(params));
+        if !self.diffuse_start {
+            return Evaluation::new(model, &values, self.series.clone());
+        }
+        let mut system = model.system_at(&values)?;
+        for start in std::mem::take(&mut system.proper) {
+            system.diffuse.extend(start.offset..start.offset + start.size);
+        }
+        system.diffuse.sort_unstable();
+        Evaluation::with_system(model, system, self.series.clone())
+    }
 }

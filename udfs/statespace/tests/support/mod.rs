@@ -1,25 +1,25 @@
 //! Reading the reference cases (tests/reference/README.md says where they come from).
 
 use serde_json::Value;
+use stillwell_statespace::Series;
 use stillwell_statespace::structure::{Cycle, Season, Structure, Trend};
-use stillwell_statespace::{Evaluation, EvaluationError, Series};
 
 /// One pair of series and structure.
-pub struct Case {
-    pub id: String,
-    pub json: Value,
-    pub structure: Structure,
-    pub series: Series,
-    pub drivers: Vec<String>,
+pub(crate) struct Case {
+    pub(crate) id: String,
+    pub(crate) json: Value,
+    pub(crate) structure: Structure,
+    pub(crate) series: Series,
+    pub(crate) drivers: Vec<String>,
     /// States that the case starts diffuse although this crate starts them stationary.
-    pub diffuse_start: bool,
+    pub(crate) diffuse_start: bool,
 }
 
 fn folder() -> std::path::PathBuf {
     std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/reference")
 }
 
-pub fn numbers(value: &Value) -> Vec<f64> {
+pub(crate) fn numbers(value: &Value) -> Vec<f64> {
     value.as_array().expect("an array").iter().map(|v| v.as_f64().unwrap_or(f64::NAN)).collect()
 }
 
@@ -30,7 +30,7 @@ fn names(value: &Value) -> Vec<String> {
         .unwrap_or_default()
 }
 
-pub fn all() -> Vec<Case> {
+pub(crate) fn all() -> Vec<Case> {
     let series: Value =
         serde_json::from_str(&std::fs::read_to_string(folder().join("series.json")).expect("series.json"))
             .expect("valid JSON");
@@ -41,10 +41,6 @@ pub fn all() -> Vec<Case> {
         .collect();
     files.sort();
     files.iter().map(|path| read(path, &series)).collect()
-}
-
-pub fn one(id: &str) -> Case {
-    all().into_iter().find(|c| c.id == id).expect("a known case")
 }
 
 fn read(path: &std::path::Path, all: &Value) -> Case {
@@ -97,49 +93,4 @@ fn read(path: &std::path::Path, all: &Value) -> Case {
         diffuse_start: cycle.is_some_and(|c| c["init"] == "diffuse") || spec["slope_init"] == "diffuse",
         json,
     }
-}
-
-impl Case {
-    /// Values of the model's parameters in a `params` block of the case.
-    pub fn values(&self, params: &Value) -> Vec<f64> {
-        let model = self.structure.model();
-        let get = |name: &str| params[name].as_f64().unwrap_or(0.0);
-        model
-            .parameters()
-            .iter()
-            .map(|p| match p.name.as_str() {
-                "irregular" => get("sigma2.irregular"),
-                "level" => get("sigma2.level"),
-                "slope" => get("sigma2.slope"),
-                "season" => get("sigma2.seasonal"),
-                "slope_damping" => get("phi.slope"),
-                "cycle" => get("sigma2.cycle"),
-                "cycle_damping" => get("rho.cycle"),
-                "cycle_period" => std::f64::consts::TAU / get("frequency.cycle"),
-                "autoregression" => get("sigma2.ar"),
-                "ar_1" => get("phi.ar"),
-                driver => get(&format!("sigma2.beta.{driver}")),
-            })
-            .collect()
-    }
-
-    pub fn evaluate(&self, params: &Value) -> Result<Evaluation, EvaluationError> {
-        let (model, values) = (self.structure.model(), self.values(params));
-        if !self.diffuse_start {
-            return Evaluation::new(model, &values, self.series.clone());
-        }
-        let mut system = model.system_at(&values)?;
-        for start in std::mem::take(&mut system.proper) {
-            system.diffuse.extend(start.offset..start.offset + start.size);
-        }
-        system.diffuse.sort_unstable();
-        Evaluation::with_system(model, system, self.series.clone())
-    }
-}
-
-/// Standard deviation of the observed values.
-pub fn sd(values: &[f64]) -> f64 {
-    let seen: Vec<f64> = values.iter().copied().filter(|v| !v.is_nan()).collect();
-    let mean = seen.iter().sum::<f64>() / seen.len() as f64;
-    (seen.iter().map(|v| (v - mean).powi(2)).sum::<f64>() / seen.len() as f64).sqrt()
 }

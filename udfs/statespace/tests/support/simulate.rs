@@ -8,7 +8,7 @@ use stillwell_statespace::structure::Structure;
 
 /// A series of `n` points of `structure` at `values`; diffuse states start at draws of size `start`.
 /// `drifting`: values of the drifting drivers.
-pub fn simulate(
+pub(crate) fn simulate(
     structure: &Structure,
     values: &[f64],
     n: usize,
@@ -51,9 +51,4 @@ pub fn simulate(
         }
     }
     Series { observed, drivers: Vec::new(), drifting_drivers: drifting }
-}
-
-/// A driver that wanders between about -1 and 1.
-pub fn driver(n: usize, phase: f64) -> Vec<f64> {
-    (0..n).map(|t| (t as f64 * 0.37 + phase).sin() + 0.3 * (t as f64 * 1.91 + phase).cos()).collect()
 }

@@ -1,0 +1,142 @@
+//! COPY and `--to` on the local file system: the whole result or nothing.
+//!
+//! The engine writes a COPY file by file into the target folder, beside what is there: a job that fails leaves
+//! half of its result, and a job that runs twice leaves its rows twice. Here the engine is given another place
+//! to write to:
+//!
+//! 1. a hidden folder beside the target, on the same file system (`.outlook.stillwell-Xy3k9Q`), holds the new
+//!    content while the statement runs; readers of the target see the old content, and so does the statement
+//!    itself, which may read what it replaces;
+//! 2. when the statement has succeeded, the content is given stable names (`part_names`), flushed to the disk
+//!    (`flush`) and put in the target's place by a rename (`swap`); an existing folder is replaced whole, and only if it
+//!    holds nothing but files of the format that is written (`contents`);
+//! 3. the hidden folder is removed, with the old content in it: also when the statement fails, at Ctrl-C and at
+//!    a panic. A process that is killed outright leaves it behind; it is recognised (nobody holds its lock) and
+//!    cleared by the next job that writes to the same target (`staging`).
+//!
+//! Targets with a scheme other than `file://` are left to the engine.
+
+mod conflicts;
+mod contents;
+mod flush;
+mod part_names;
+mod plain_columns;
+mod staging;
+mod swap;
+mod target;
+
+use datafusion::logical_expr::dml::CopyTo;
+use datafusion::logical_expr::{Analyze, LogicalPlan};
+use std::sync::Arc;
+
+pub(crate) use conflicts::refuse_conflicts;
+pub(crate) use plain_columns::plain_type;
+pub(crate) use staging::{Staging, clear_leftovers, remove_all_unfinished};
+pub(crate) use target::{Kind, Target};
+
+use crate::errors;
+use crate::exit::Outcome;
+
+/// What a statement has written.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub(crate) struct Written {
+    /// The target as the statement names it.
+    pub(crate) target: String,
+    /// One file, a folder of files, or a place the engine wrote to by itself.
+    pub(crate) kind: Option<Kind>,
+    /// Rows, where the engine counted them.
+    pub(crate) rows: Option<u64>,
+    /// Number and bytes of the files, where they are local.
+    pub(crate) files: Option<Files>,
+}
+
+/// How much lies in a place.
+#[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
+pub(crate) struct Files {
+    pub(crate) number: usize,
+    pub(crate) bytes: u64,
+}
+
+/// A plan ready to run, and where its COPY (if it has one) is staged.
+#[derive(Debug)]
+pub(crate) struct Prepared {
+    pub(crate) plan: LogicalPlan,
+    copy: Option<Copy>,
+}
+
+#[derive(Debug)]
+struct Copy {
+    target: String,
+    staging: Option<Staging>,
+}
+
+/// Points the COPY of `plan` (itself a COPY, or EXPLAIN ANALYZE of one) at a staging folder. Other plans, and
+/// targets that are not local, pass unchanged.
+///
+/// # Errors
+/// When the target cannot or must not be replaced; nothing has been touched then.
+pub(crate) fn prepare(plan: LogicalPlan) -> Outcome<Prepared> {
+    match plan {
+        LogicalPlan::Copy(copy) => {
+            let (copy, staged) = stage(copy)?;
+            Ok(Prepared { plan: LogicalPlan::Copy(copy), copy: Some(staged) })
+        }
+        LogicalPlan::Analyze(analyze) => match analyze.input.as_ref() {
+            LogicalPlan::Copy(copy) => {
+                let (copy, staged) = stage(copy.clone())?;
+                let analyze = Analyze { input: Arc::new(LogicalPlan::Copy(copy)), ..analyze };
+                Ok(Prepared { plan: LogicalPlan::Analyze(analyze), copy: Some(staged) })
+            }
+            _ => Ok(Prepared { plan: LogicalPlan::Analyze(analyze), copy: None }),
+        },
+        plan => Ok(Prepared { plan, copy: None }),
+    }
+}
+
+fn stage(copy: CopyTo) -> Outcome<(CopyTo, Copy)> {
+    let shown = copy.output_url.clone();
+    let Some(target) = Target::of_copy(&copy)? else {
+        return Ok((copy, Copy { target: shown, staging: None }));
+    };
+    let mut copy = plain_columns::simplify(copy).map_err(|error| errors::failure(&error))?;
+    let staging = Staging::open(target)?;
+    copy.output_url = staging.url()?;
+    Ok((copy, Copy { target: shown, staging: Some(staging) }))
+}
+
+impl Prepared {
+    /// Whether the plan writes files.
+    pub(crate) fn writes(&self) -> bool {
+        self.copy.is_some()
+    }
+
+    /// Puts the finished output of a successful statement in its place. `rows`: as counted by the engine.
+    ///
+    /// # Errors
+    /// When the file system refuses; the old content is in its place then.
+    pub(crate) fn finish(self, rows: Option<u64>) -> Outcome<Option<Written>> {
+        let Some(Copy { target, staging }) = self.copy else { return Ok(None) };
+        let Some(staging) = staging else {
+            return Ok(Some(Written { target, kind: None, rows, files: None }));
+        };
+        let kind = staging.kind();
+        let schema = copied_schema(&self.plan);
+        let files = staging.put_in_place(schema.as_ref())?;
+        Ok(Some(Written { target, kind: Some(kind), rows, files: Some(files) }))
+    }
+}
+
+/// The schema of an unpartitioned Parquet COPY: an empty result still leaves one file that carries it, so that
+/// the next job finds its columns.
+fn copied_schema(plan: &LogicalPlan) -> Option<arrow::datatypes::SchemaRef> {
+    let copy = match plan {
+        LogicalPlan::Copy(copy) => copy,
+        LogicalPlan::Analyze(analyze) => match analyze.input.as_ref() {
+            LogicalPlan::Copy(copy) => copy,
+            _ => return None,
+        },
+        _ => return None,
+    };
+    let parquet = copy.file_type.get_ext().trim_start_matches('.') == "parquet";
+    (parquet && copy.partition_by.is_empty()).then(|| Arc::clone(copy.input.schema().inner()))
+}

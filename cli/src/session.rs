@@ -1,0 +1,89 @@
+//! The engine's session for one run of the command.
+
+use std::sync::Arc;
+use std::thread;
+
+use datafusion::execution::SessionStateBuilder;
+use datafusion::execution::cache::cache_manager::CacheManagerConfig;
+use datafusion::execution::context::SessionContext;
+use datafusion::execution::memory_pool::{FairSpillPool, MemoryPool, TrackConsumersPool};
+use datafusion::execution::runtime_env::RuntimeEnvBuilder;
+use datafusion::logical_expr::LogicalPlan;
+use datafusion::prelude::SessionConfig;
+use datafusion::sql::parser::Statement;
+
+use crate::args::EngineArgs;
+use crate::errors;
+use crate::exit::{Failure, Outcome};
+use crate::file_tables;
+use crate::nearest::nearest;
+
+/// How many consumers of memory an out-of-memory message names.
+const CONSUMERS_NAMED: std::num::NonZeroUsize = std::num::NonZeroUsize::new(3).unwrap();
+
+/// The threads to work with: as asked for, or one per processor.
+pub(crate) fn threads(options: &EngineArgs) -> usize {
+    options
+        .threads
+        .map_or_else(|| thread::available_parallelism().map_or(1, std::num::NonZeroUsize::get), Into::into)
+}
+
+/// A session with stillwell's functions, files as tables, and the limits and settings of the command line.
+///
+/// # Errors
+/// For a setting that the engine does not know or whose value it refuses.
+pub(crate) async fn open(options: &EngineArgs, config: SessionConfig) -> Outcome<SessionContext> {
+    // One file per folder, or per value of PARTITIONED BY, keeps the rows in the order of the statement.
+    let config = config
+        .with_target_partitions(threads(options))
+        .with_information_schema(true)
+        .set_usize("datafusion.execution.minimum_parallel_output_files", 1);
+    let mut runtime = RuntimeEnvBuilder::new()
+        // A job reads folders that it has just replaced: a remembered list of files would be the old one.
+        .with_cache_manager(CacheManagerConfig::default().with_list_files_cache_limit(0));
+    if let Some(limit) = options.memory_limit {
+        let pool: Arc<dyn MemoryPool> =
+            Arc::new(TrackConsumersPool::new(FairSpillPool::new(limit.0), CONSUMERS_NAMED));
+        runtime = runtime.with_memory_pool(pool);
+    }
+    let runtime = runtime.build_arc().map_err(|error| Failure::usage(errors::text(&error)))?;
+    let state = SessionStateBuilder::new()
+        .with_config(config)
+        .with_runtime_env(runtime)
+        .with_default_features()
+        .build();
+    // First the catalogs, then the functions: they look tables up in the catalogs they find.
+    let context = file_tables::enable(SessionContext::new_with_state(state));
+    stillwell::register(&context).map_err(|error| errors::failure(&error))?;
+    for (key, value) in &options.settings {
+        set(&context, key, value).await?;
+    }
+    Ok(context)
+}
+
+async fn set(context: &SessionContext, key: &str, value: &str) -> Outcome<()> {
+    let known: Vec<String> =
+        context.state().config_options().entries().into_iter().map(|entry| entry.key).collect();
+    let is_key = key.chars().all(|c| c.is_ascii_alphanumeric() || c == '_' || c == '.');
+    if !is_key || (!known.iter().any(|other| other == key) && !key.starts_with("datafusion.runtime.")) {
+        let near = nearest(key, known.iter().map(String::as_str));
+        return Err(Failure::usage(format!(
+            "--set: the engine has no option '{key}'{}; stillwell query \"SHOW ALL\" --rows 0 lists them",
+            near.map(|name| format!(" (did you mean '{name}'?)")).unwrap_or_default()
+        )));
+    }
+    let statement = format!("SET {key} = '{}'", value.replace('\'', "''"));
+    match context.sql(&statement).await {
+        Ok(_) => Ok(()),
+        Err(error) => Err(Failure::usage(format!("--set {key}={value}: {}", errors::text(&error)))),
+    }
+}
+
+/// The plan of a statement.
+///
+/// # Errors
+/// When it names what is not there, or asks for what cannot be.
+pub(crate) async fn plan(context: &SessionContext, statement: Statement) -> Outcome<LogicalPlan> {
+    let planned = context.state().statement_to_plan(statement).await;
+    planned.map_err(|error| errors::failure(&error))
+}

@@ -1,0 +1,127 @@
+//! From the rows of one series to the series on its even grid.
+//!
+//! Times become grid points, gaps in the grid become missing points, and what stands before the first
+//! observation is dropped. The history ends with the last observation; later rows, whose `observed` is NULL,
+//! carry the plan of the drivers. What cannot be put on a grid is [`Unplaced`], with the reason.
+
+use stillwell_statespace::calendar::Step;
+use stillwell_statespace::{Series, Trouble};
+
+use super::groups::Group;
+use super::time::TimeKind;
+use super::time_grid::TimeGrid;
+
+/// A series on its grid.
+#[derive(Debug, Clone)]
+pub(crate) struct Placed {
+    /// The numbers.
+    pub(crate) series: Series,
+    grid: TimeGrid,
+    /// Grid point of the first observation.
+    first: usize,
+}
+
+impl Placed {
+    /// Points of the history: first to last observation, gaps included.
+    pub(crate) fn len(&self) -> usize {
+        self.series.observed.len()
+    }
+
+    /// The grid.
+    pub(crate) fn grid(&self) -> &TimeGrid {
+        &self.grid
+    }
+
+    /// A point as people write it, counted from the first observation.
+    pub(crate) fn describe_time(&self, index: usize) -> Option<String> {
+        self.time_at(index).map(|time| self.grid.format(time))
+    }
+
+    /// Grid point of the last observation.
+    pub(crate) fn last_point(&self) -> usize {
+        (self.first + self.len()).saturating_sub(1)
+    }
+
+    /// Time of point `index`, counted from the first observation; `None` beyond the range of the time type.
+    pub(crate) fn time_at(&self, index: usize) -> Option<i64> {
+        self.grid.time_at(self.first.checked_add(index)?)
+    }
+
+    /// Times of all points of the history.
+    pub(crate) fn times(&self) -> impl Iterator<Item = Option<i64>> {
+        (0..self.len()).map(|index| self.time_at(index))
+    }
+}
+
+/// A series that could not be put on a grid, or has nothing on it.
+#[derive(Debug, Clone)]
+pub(crate) struct Unplaced {
+    /// Why.
+    pub(crate) trouble: Trouble,
+    /// The grid, where it is known all the same, and the number of its points up to the last row.
+    pub(crate) grid: Option<Box<(TimeGrid, usize)>>,
+}
+
+impl From<Trouble> for Unplaced {
+    fn from(trouble: Trouble) -> Self {
+        Self { trouble, grid: None }
+    }
+}
+
+/// Puts the rows of one series on their grid.
+///
+/// `time` is the type of the time column, `every` the step, if the query states it. The first `constant` of the group's drivers have constant
+/// coefficients, the rest drifting ones.
+///
+/// # Errors
+/// NULL times, repeated times, times off the grid, no grid, no observation.
+pub(crate) fn place(
+    group: &Group,
+    time: &TimeKind,
+    every: Option<Step>,
+    constant: usize,
+) -> Result<Placed, Unplaced> {
+    let times = group.times.iter().copied().flatten().collect::<Vec<_>>();
+    if times.len() < group.len() {
+        return Err(Trouble::MissingTime { rows: group.len() - times.len() }.into());
+    }
+    let grid = time.grid(&times, every)?;
+    let mut points = Vec::with_capacity(times.len());
+    for &time in &times {
+        let off = || Trouble::OffGrid { at: grid.format(time), grid: grid.grid().describe() };
+        points.push(grid.index_of(time).ok_or_else(off)?);
+    }
+    let ends = (points.first(), points.last(), observed_ends(&group.observed));
+    let (Some(_), Some(&final_point), Some((first_row, last_row))) = ends else {
+        let grid = points.last().map(|&last| Box::new((grid, last.saturating_add(1))));
+        return Err(Unplaced { trouble: Trouble::AllMissing, grid });
+    };
+    let (first, last) = (points[first_row], points[last_row]);
+    let spread = |values: &[f64], end: usize| {
+        let mut spread = vec![f64::NAN; end - first + 1];
+        for (&point, &value) in points.iter().zip(values) {
+            // Rows before the first observation, and plan rows where only the history is wanted, fall out.
+            if let Some(place) = point.checked_sub(first).and_then(|at| spread.get_mut(at)) {
+                *place = value;
+            }
+        }
+        spread
+    };
+    let mut drivers = group.drivers.iter().map(|values| spread(values, final_point)).collect::<Vec<_>>();
+    let drifting_drivers = drivers.split_off(constant.min(drivers.len()));
+    Ok(Placed {
+        series: Series { observed: spread(&group.observed, last), drivers, drifting_drivers },
+        grid,
+        first,
+    })
+}
+
+/// Rows of the first and the last observation.
+fn observed_ends(observed: &[f64]) -> Option<(usize, usize)> {
+    let first = observed.iter().position(|value| !value.is_nan())?;
+    let last = observed.iter().rposition(|value| !value.is_nan())?;
+    Some((first, last))
+}
+
+#[cfg(test)]
+mod tests;

@@ -1,0 +1,42 @@
+//! Structural time series in SQL: level, slope, season, forecasts and checks of every series in a table,
+//! as relation functions of a [DataFusion](https://datafusion.apache.org) session.
+//!
+//! ```
+//! use datafusion::prelude::SessionContext;
+//!
+//! # #[tokio::main(flavor = "current_thread")]
+//! # async fn main() -> datafusion::error::Result<()> {
+//! let context = SessionContext::new();
+//! stillwell::register(&context)?;
+//! let outlook = context
+//!     .sql(
+//!         "SELECT at, step, round(expected) AS expected
+//!          FROM forecast(
+//!              data     => (SELECT value AS month, 100 + 3 * value + (value % 4) AS litres
+//!                           FROM generate_series(1, 48)),
+//!              at       => month,
+//!              observed => litres,
+//!              season   => 4,
+//!              horizon  => 2)",
+//!     )
+//!     .await?
+//!     .collect()
+//!     .await?;
+//! assert_eq!(outlook.iter().map(|batch| batch.num_rows()).sum::<usize>(), 2);
+//! # Ok(())
+//! # }
+//! ```
+//!
+//! [`register`] adds the functions to a session, [`extend`] to one that is still being built. A host with a
+//! query planner of its own adds [`StructuralExtensionPlanner`] to it. [`Progress`] lets a host watch.
+//! [`functions`] describes every function, argument and column.
+
+mod columns;
+mod sql;
+
+pub use columns::result::{ColumnKind, ColumnScope, ColumnSpec, Scale, Unit};
+pub use sql::{
+    ARGUMENTS, Argument, ColumnDoc, Function, FunctionDoc, Progress, StructuralExtensionPlanner,
+    StructuralQueryPlanner, StructuralRelationPlanner, Takes, TroubledSeries, arguments_of, extend,
+    functions, register, register_relations, statuses,
+};

@@ -1,0 +1,33 @@
+//! Structural time series in the SQL of a DataFusion session.
+//!
+//! A call in FROM becomes, step by step, a stream of results:
+//!
+//! 1. [`relation`] reads the call, with the one table of [`arguments`], and builds
+//! 2. a [`node`] of the logical plan, through which predicates on keys pass; [`planner`] turns it into
+//! 3. an [`operator`] that asks for rows by key and time; its [`stream`] cuts them into series, and
+//! 4. [`work`] fits these on blocking threads and writes the rows of the result.
+//!
+//! [`session`] puts all this into a session; [`docs`] describes the functions for people.
+
+mod arguments;
+mod docs;
+mod error;
+mod function;
+mod metrics;
+mod node;
+mod operator;
+mod parameters;
+mod planner;
+mod progress;
+mod relation;
+mod session;
+mod stream;
+mod work;
+
+pub use arguments::{ARGUMENTS, Argument, Takes, arguments_of};
+pub use docs::{ColumnDoc, FunctionDoc, functions, statuses};
+pub use function::Function;
+pub use planner::{StructuralExtensionPlanner, StructuralQueryPlanner};
+pub use progress::{Progress, TroubledSeries};
+pub use relation::StructuralRelationPlanner;
+pub use session::{extend, register, register_relations};

@@ -1,0 +1,69 @@
+//! A fit that breaks off, and cancellation.
+
+use datafusion::arrow::datatypes::DataType;
+use datafusion::physical_plan::empty::EmptyExec;
+use datafusion::physical_plan::metrics::ExecutionPlanMetricsSet;
+
+use super::super::arguments::settings::Values;
+use super::*;
+use crate::columns::groups::{Groups, Rows};
+use crate::columns::result::{Layout, Scale};
+
+fn workshop(function: Function) -> Workshop {
+    let time = TimeKind::try_new(&DataType::Int64).unwrap();
+    let settings = Values { function, given: &[] }.settings(time.axis(), &[], &[]).unwrap();
+    let layout = Layout {
+        time: DataType::Int64,
+        drivers: vec![],
+        drifting_drivers: vec![],
+        scale: Scale::BySeries,
+        parts: false,
+    };
+    let result = Arc::new(ResultSchema::new(vec![], layout.columns(function.columns())));
+    let input = Arc::new(EmptyExec::new(Arc::clone(result.schema())));
+    let job = Job { function, settings, time, key_names: vec![], result };
+    Workshop {
+        job: Arc::new(job),
+        metrics: StructuralMetrics::new(&ExecutionPlanMetricsSet::new(), 0),
+        progress: None,
+        cancelled: Arc::default(),
+        announcement: Announcement { input, done: Arc::default() },
+        spare: Mutex::default(),
+    }
+}
+
+fn group() -> Group {
+    let mut groups = Groups::try_new(&[]).unwrap();
+    let times = (0..40).map(Some).collect::<Vec<_>>();
+    let observed = (0..40).map(|at| f64::from(at * 7 % 11)).collect();
+    groups.push(Rows { keys: vec![], times, observed, drivers: vec![] }).unwrap();
+    groups.close();
+    groups.pop().unwrap()
+}
+
+#[test]
+fn a_panic_is_the_trouble_of_its_series_alone() {
+    let mut workspace = Workspace::new();
+    let none: [f64; 0] = [];
+    let trouble = guarded(&mut workspace, |_| Ok(none[none.len()])).unwrap_err();
+    assert_eq!(trouble.status(), "numerical trouble");
+    assert_eq!(guarded(&mut workspace, |_| Ok(7)), Ok(7), "the next series goes on with new buffers");
+}
+
+#[test]
+fn a_cancelled_workshop_does_nothing() {
+    let workshop = workshop(Function::Components);
+    workshop.cancelled.store(true, Ordering::Relaxed);
+    assert!(workshop.answer(&[group()]).unwrap_err().to_string().contains("cancelled"));
+    assert_eq!(workshop.metrics.series_fitted.value(), 0);
+}
+
+#[test]
+fn work_is_counted() {
+    let workshop = workshop(Function::Components);
+    workshop.answer(&[group()]).unwrap();
+    assert_eq!(workshop.metrics.series_fitted.value(), 1);
+    assert!(workshop.metrics.likelihood_evaluations.value() > 1);
+    assert!(workshop.metrics.time_in_fits.value() > 0);
+    assert_eq!(workshop.spare.lock().unwrap().len(), 1, "the buffers are kept for the next chunk");
+}

@@ -1,0 +1,90 @@
+//! How often the rules fire where they should and where they should not.
+
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+use rand_distr::{Distribution, StandardNormal};
+
+use super::*;
+
+/// Level that wanders, noise, and a season of this amplitude; the noise has variance 1.
+fn series(rng: &mut ChaCha8Rng, n: usize, period: f64, amplitude: f64, wander: f64) -> Vec<f64> {
+    let mut normal = || -> f64 { StandardNormal.sample(rng) };
+    let mut level = 0.0;
+    (0..n)
+        .map(|t| {
+            level += wander * normal();
+            let turn = std::f64::consts::TAU * t as f64 / period;
+            level + amplitude * turn.cos() + 0.4 * amplitude * (2.0 * turn).sin() + normal()
+        })
+        .collect()
+}
+
+fn share(n: usize, period: f64, amplitude: f64, wander: f64) -> f64 {
+    let mut rng = ChaCha8Rng::seed_from_u64(11);
+    let found =
+        (0..400).filter(|_| season_speaks(&series(&mut rng, n, period, amplitude, wander), period)).count();
+    found as f64 / 400.0
+}
+
+#[test]
+fn without_a_season_none_is_found_but_for_the_level_of_the_test() {
+    // Nominal 5 %; a wandering level and short series may take it to a tenth.
+    for (n, period) in [(60, 12.0), (120, 12.0), (24, 4.0), (60, 4.0), (208, 52.18), (365, 7.0)] {
+        for wander in [0.0, 0.3, 1.0] {
+            let share = share(n, period, 0.0, wander);
+            assert!(share <= 0.10, "n {n}, period {period}, wander {wander}: found in {share}");
+        }
+    }
+}
+
+#[test]
+fn a_clear_season_is_found() {
+    for (n, period, wander) in [(60, 12.0, 0.3), (40, 4.0, 0.3), (208, 52.18, 0.2), (120, 7.0, 0.3)] {
+        let share = share(n, period, 2.0, wander);
+        assert!(share >= 0.9, "n {n}, period {period}: found in {share}");
+    }
+}
+
+#[test]
+fn gaps_do_not_make_a_season() {
+    let mut rng = ChaCha8Rng::seed_from_u64(3);
+    let found = (0..200)
+        .filter(|_| {
+            let mut values = series(&mut rng, 120, 12.0, 0.0, 0.3);
+            for t in (5..120).step_by(12) {
+                values[t] = f64::NAN;
+            }
+            season_speaks(&values, 12.0)
+        })
+        .count();
+    assert!(found <= 24, "{found} of 200");
+}
+
+#[test]
+fn a_spread_that_grows_with_the_level_asks_for_the_logarithm() {
+    let mut rng = ChaCha8Rng::seed_from_u64(5);
+    let mut normal = || -> f64 { StandardNormal.sample(&mut rng) };
+    let growing: Vec<f64> = (0..120).map(|t| (0.02 * f64::from(t) + 0.1 * normal()).exp() * 50.0).collect();
+    assert!(spread_follows_level(&growing, Some(12.0)));
+    let even: Vec<f64> = (0..120).map(|t| 500.0 + f64::from(t) + 10.0 * normal()).collect();
+    assert!(!spread_follows_level(&even, Some(12.0)));
+    let with_zero: Vec<f64> =
+        growing.iter().enumerate().map(|(t, v)| if t == 7 { 0.0 } else { *v }).collect();
+    assert!(!spread_follows_level(&with_zero, Some(12.0)));
+}
+
+#[test]
+fn every_default_can_be_named() {
+    let request = Request { season: SeasonRequest::Auto(vec![12.0]), ..Request::default() };
+    let short: Vec<f64> = (0..10).map(|t| f64::from(t % 3)).collect();
+    let choice = choose(&request, &short).unwrap();
+    assert_eq!((choice.structure.trend, choice.log), (Trend::LocalLevel, false));
+    let long: Vec<f64> = (0..40).map(|t| f64::from(t % 12) + 0.1 * f64::from((t * 7) % 5) - 2.0).collect();
+    let choice = choose(&request, &long).unwrap();
+    assert_eq!(choice.structure.trend, Trend::Damped);
+    assert_eq!(choice.structure.seasons, vec![Season { period: 12.0, harmonics: None, fixed: false }]);
+    assert_eq!(
+        (default_harmonics(24.0), default_harmonics(52.18), default_harmonics(7.0)),
+        (Some(6), Some(3), None)
+    );
+}
