@@ -15,6 +15,9 @@ use crate::exit::{Exit, Failure};
 use crate::nearest::nearest;
 use crate::panics;
 
+/// How the engine begins when a URL has a scheme that nothing serves.
+const NO_STORE: &str = "No suitable object store found for ";
+
 /// The failure that `error` means: exit code 1, or 70 where a panic of the program is behind it.
 pub(crate) fn failure(error: &DataFusionError) -> Failure {
     let exit = if is_fault(error) { Exit::Internal } else { Exit::Failed };
@@ -52,6 +55,10 @@ pub(crate) fn text(error: &DataFusionError) -> String {
             "out of memory under the limit that was set: {message}. Raise --memory-limit, or lower --threads \
              so that each thread has more of it"
         ),
+        DataFusionError::Internal(message) if message.starts_with(NO_STORE) => {
+            let place = message[NO_STORE.len()..].split(". See").next().unwrap_or_default();
+            format!("cannot reach '{place}': this build reads and writes local files only")
+        }
         DataFusionError::Internal(message) => {
             format!("the engine met a case it did not expect: {}", first_line(message))
         }
@@ -195,6 +202,13 @@ mod tests {
     fn memory_pressure_names_the_options() {
         let told = text(&DataFusionError::ResourcesExhausted("need 3 MB more".into()));
         assert!(told.contains("--memory-limit") && told.contains("--threads"), "{told}");
+    }
+
+    #[test]
+    fn a_url_that_nothing_serves_is_said_plainly() {
+        let message = "No suitable object store found for s3://a/b. See `RuntimeEnv::register_object_store`";
+        let told = text(&DataFusionError::Internal(message.into()));
+        assert_eq!(told, "cannot reach 's3://a/b': this build reads and writes local files only");
     }
 
     #[test]

@@ -52,8 +52,8 @@ impl Format {
 /// Writes batches to `W` in one format.
 pub(crate) enum RowWriter<W: Write + Send> {
     Csv(Box<csv::Writer<W>>),
-    Json(arrow::json::Writer<W, JsonArray>),
-    Ndjson(arrow::json::Writer<W, LineDelimited>),
+    Json(Box<arrow::json::Writer<W, JsonArray>>),
+    Ndjson(Box<arrow::json::Writer<W, LineDelimited>>),
     Parquet(Box<ArrowWriter<W>>, SchemaRef),
 }
 
@@ -79,8 +79,8 @@ impl<W: Write + Send> RowWriter<W> {
                 writer.write(&RecordBatch::new_empty(Arc::clone(schema))).map_err(|e| cannot_write(&e))?;
                 Self::Csv(Box::new(writer))
             }
-            Format::Json => Self::Json(json(sink)),
-            Format::Ndjson => Self::Ndjson(json(sink)),
+            Format::Json => Self::Json(Box::new(json(sink))),
+            Format::Ndjson => Self::Ndjson(Box::new(json(sink))),
             Format::Parquet => {
                 let schema = plain_schema(schema);
                 let compression = ZstdLevel::try_new(3).map_or(Compression::SNAPPY, Compression::ZSTD);
@@ -114,14 +114,14 @@ impl<W: Write + Send> RowWriter<W> {
     /// When the sink refuses.
     pub(crate) fn finish(self) -> Outcome<W> {
         let mut sink = match self {
-            Self::Csv(writer) => writer.into_inner(),
+            Self::Csv(writer) => (*writer).into_inner(),
             Self::Json(mut writer) => {
                 writer.finish().map_err(|e| cannot_write(&e))?;
-                writer.into_inner()
+                (*writer).into_inner()
             }
             Self::Ndjson(mut writer) => {
                 writer.finish().map_err(|e| cannot_write(&e))?;
-                writer.into_inner()
+                (*writer).into_inner()
             }
             Self::Parquet(writer, _) => writer.into_inner().map_err(|e| cannot_write(&e))?,
         };

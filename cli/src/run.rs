@@ -95,8 +95,9 @@ async fn execute(context: SessionContext, statement: JobStatement, rows: usize, 
         return Ok(Step { written: None, table: None });
     }
     let inserted = insert_target(&plan);
+    let keeps_keys = context.state().config_options().execution.keep_partition_by_columns;
     let explained = matches!(plan, LogicalPlan::Analyze(_));
-    let prepared = copy_staging::prepare(plan)?;
+    let prepared = copy_staging::prepare(plan, keeps_keys)?;
     let counts = !explained && (prepared.writes() || inserted.is_some());
 
     let frame = context.execute_logical_plan(prepared.plan.clone()).await.map_err(engine)?;

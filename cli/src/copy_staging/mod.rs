@@ -8,7 +8,7 @@
 //!    content while the statement runs; readers of the target see the old content, and so does the statement
 //!    itself, which may read what it replaces;
 //! 2. when the statement has succeeded, the content is given stable names (`part_names`), flushed to the disk
-//!    (`flush`) and put in the target's place by a rename (`swap`); an existing folder is replaced whole, and only if it
+//!    (`disk`) and put in the target's place by a rename (`swap`); an existing folder is replaced whole, and only if it
 //!    holds nothing but files of the format that is written (`contents`);
 //! 3. the hidden folder is removed, with the old content in it: also when the statement fails, at Ctrl-C and at
 //!    a panic. A process that is killed outright leaves it behind; it is recognised (nobody holds its lock) and
@@ -18,7 +18,7 @@
 
 mod conflicts;
 mod contents;
-mod flush;
+mod disk;
 mod part_names;
 mod plain_columns;
 mod staging;
@@ -71,19 +71,20 @@ struct Copy {
 }
 
 /// Points the COPY of `plan` (itself a COPY, or EXPLAIN ANALYZE of one) at a staging folder. Other plans, and
-/// targets that are not local, pass unchanged.
+/// targets that are not local, pass unchanged. `keeps_keys`: whether the session keeps the columns of PARTITIONED BY
+/// in the files too.
 ///
 /// # Errors
 /// When the target cannot or must not be replaced; nothing has been touched then.
-pub(crate) fn prepare(plan: LogicalPlan) -> Outcome<Prepared> {
+pub(crate) fn prepare(plan: LogicalPlan, keeps_keys: bool) -> Outcome<Prepared> {
     match plan {
         LogicalPlan::Copy(copy) => {
-            let (copy, staged) = stage(copy)?;
+            let (copy, staged) = stage(copy, keeps_keys)?;
             Ok(Prepared { plan: LogicalPlan::Copy(copy), copy: Some(staged) })
         }
         LogicalPlan::Analyze(analyze) => match analyze.input.as_ref() {
             LogicalPlan::Copy(copy) => {
-                let (copy, staged) = stage(copy.clone())?;
+                let (copy, staged) = stage(copy.clone(), keeps_keys)?;
                 let analyze = Analyze { input: Arc::new(LogicalPlan::Copy(copy)), ..analyze };
                 Ok(Prepared { plan: LogicalPlan::Analyze(analyze), copy: Some(staged) })
             }
@@ -93,12 +94,12 @@ pub(crate) fn prepare(plan: LogicalPlan) -> Outcome<Prepared> {
     }
 }
 
-fn stage(copy: CopyTo) -> Outcome<(CopyTo, Copy)> {
+fn stage(copy: CopyTo, keeps_keys: bool) -> Outcome<(CopyTo, Copy)> {
     let shown = copy.output_url.clone();
     let Some(target) = Target::of_copy(&copy)? else {
         return Ok((copy, Copy { target: shown, staging: None }));
     };
-    let mut copy = plain_columns::simplify(copy).map_err(|error| errors::failure(&error))?;
+    let mut copy = plain_columns::simplify(copy, keeps_keys).map_err(|error| errors::failure(&error))?;
     let staging = Staging::open(target)?;
     copy.output_url = staging.url()?;
     Ok((copy, Copy { target: shown, staging: Some(staging) }))

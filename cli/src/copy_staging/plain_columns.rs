@@ -6,7 +6,8 @@
 //!
 //! A column of PARTITIONED BY becomes text, since the engine takes only some types there. A NULL in it becomes
 //! `__HIVE_DEFAULT_PARTITION__`, the name by which readers of hive folders know NULL: left to the engine, NULL
-//! would be filed under 0 or under the empty name.
+//! would be filed under 0 or under the empty name. Where the session keeps such columns in the files as well, they are
+//! left as they are.
 
 use std::sync::Arc;
 
@@ -20,9 +21,12 @@ use datafusion::logical_expr::{Expr, LogicalPlanBuilder, cast, lit};
 const NULL_FOLDER: &str = "__HIVE_DEFAULT_PARTITION__";
 
 /// `copy` with a projection on top of its input where a column needs one.
-pub(super) fn simplify(copy: CopyTo) -> Result<CopyTo> {
+///
+/// `keeps_keys`: the columns of PARTITIONED BY stay in the files as well (an option of the statement may say otherwise);
+/// then they keep their types.
+pub(super) fn simplify(copy: CopyTo, keeps_keys: bool) -> Result<CopyTo> {
     let keeps_keys =
-        copy.options.get("execution.keep_partition_by_columns").is_some_and(|v| v.trim() == "true");
+        copy.options.get("execution.keep_partition_by_columns").map_or(keeps_keys, |v| v.trim() == "true");
     let mut changed = false;
     let columns: Vec<Expr> = copy
         .input
@@ -70,7 +74,7 @@ mod tests {
     async fn simplified(sql: &str) -> CopyTo {
         let plan = SessionContext::new().state().create_logical_plan(sql).await.expect("plans");
         let LogicalPlan::Copy(copy) = plan else { panic!("no COPY: {sql}") };
-        simplify(copy).expect("simplifies")
+        simplify(copy, false).expect("simplifies")
     }
 
     #[tokio::test]

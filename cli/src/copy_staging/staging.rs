@@ -18,8 +18,9 @@ use arrow::datatypes::SchemaRef;
 use parquet::arrow::ArrowWriter;
 use url::Url;
 
+use super::disk::{self, Tree};
 use super::target::{Kind, Target};
-use super::{Files, contents, flush, part_names, swap};
+use super::{Files, contents, part_names, swap};
 use crate::exit::{Failure, Outcome};
 use crate::streams;
 
@@ -127,22 +128,27 @@ impl Staging {
         if self.target.kind == Kind::Folder {
             part_names::settle(&self.content)?;
             if let Some(schema) = schema
-                && contents::files_below(&self.content)?.is_empty()
+                && Tree::at(&self.content)?.files.is_empty()
             {
                 write_empty(&self.content.join("part-0.parquet"), schema)?;
             }
         }
-        flush::all_below(&self.content)?;
-        let files = contents::measure(&self.content)?;
+        let tree = Tree::at(&self.content)?;
+        tree.flush()?;
+        let files = contents::measure(&tree.files)?;
         let old = self.hidden.folder.join("old");
         {
-            let _nobody_removes_meanwhile = unfinished();
+            // Nobody removes meanwhile; and what somebody has begun to remove must not take anybody's place.
+            let listed = unfinished();
+            if !listed.iter().any(|hidden| hidden.folder == self.hidden.folder) {
+                return Err(io::ErrorKind::Interrupted.into());
+            }
             swap::replace(&self.content, &self.target.path, &old)?;
         }
         // What was made for the target holds it now.
         self.hidden.made.clear();
         if let Some(folder) = self.target.path.parent() {
-            flush::folder(folder);
+            disk::flush_folder(folder);
         }
         Ok(files)
     }
@@ -271,7 +277,7 @@ fn remove(hidden: &Hidden) {
 /// Tasks of the engine that are being cancelled may still create a file: try again for a moment.
 fn remove_folder(folder: &Path) {
     for _ in 0..10 {
-        match fs::remove_dir_all(folder) {
+        match disk::remove(folder) {
             Err(error) if error.kind() != io::ErrorKind::NotFound => thread::sleep(Duration::from_millis(20)),
             _ => return,
         }

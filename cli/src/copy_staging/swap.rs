@@ -40,9 +40,11 @@ fn exchange(_: &Path, _: &Path) -> io::Result<()> {
     Err(io::ErrorKind::Unsupported.into())
 }
 
-/// The answers of a kernel or file system that knows no exchange (EINVAL, ENOSYS, EOPNOTSUPP).
+/// The answers of a kernel or file system that knows no exchange (EINVAL, ENOSYS, EOPNOTSUPP), or not of this
+/// folder (EXDEV, on layered file systems).
 fn cannot_exchange(error: &io::Error) -> bool {
-    matches!(error.kind(), io::ErrorKind::Unsupported | io::ErrorKind::InvalidInput)
+    use io::ErrorKind::{CrossesDevices, InvalidInput, Unsupported};
+    matches!(error.kind(), Unsupported | InvalidInput | CrossesDevices)
 }
 
 fn two_renames(new: &Path, target: &Path, old: &Path) -> io::Result<()> {

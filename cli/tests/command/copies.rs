@@ -134,6 +134,17 @@ fn keys_of_any_type_make_folders_and_null_is_filed_as_null() {
 }
 
 #[test]
+fn keys_that_stay_in_the_files_keep_their_type() {
+    let place = Place::new();
+    let ran = place.run(
+        "SET datafusion.execution.keep_partition_by_columns = true;
+         COPY (SELECT 1 AS n, 7 AS depot) TO 'out/' STORED AS PARQUET PARTITIONED BY (depot)",
+    );
+    assert_eq!(ran.code, Some(0), "{}", ran.err);
+    assert_eq!(place.rows("SELECT arrow_typeof(depot) FROM 'out/depot=7/part-0.parquet'"), ["Int64"]);
+}
+
+#[test]
 fn explain_analyze_of_a_copy_is_staged_as_well() {
     let place = Place::new();
     place.write("out/part-0.csv", "a\n9\n");

@@ -82,6 +82,15 @@ fn an_empty_parquet_folder_carries_its_columns() {
 }
 
 #[test]
+fn what_was_removed_at_a_signal_does_not_come_back() {
+    let place = Place::new();
+    let staging = Staging::open(place.target("out", Kind::Folder)).expect("opened");
+    forget(&staging.hidden);
+    assert!(staging.put_in_place(None).is_err());
+    assert!(place.names().is_empty(), "{:?}", place.names());
+}
+
+#[test]
 fn leftovers_are_cleared_and_folders_in_use_are_not() {
     let place = Place::new();
     let in_use = Staging::open(place.target("out", Kind::Folder)).expect("opened");
