@@ -24,6 +24,19 @@ const MOST_HARMONICS: usize = 60;
 /// Observed points from which on the trend has a slope when nothing is said.
 const SLOPE_FROM: usize = 16;
 
+/// Names that parameters of a structure have; a drifting driver names a parameter too.
+const PARAMETERS: [&str; 9] = [
+    "irregular",
+    "level",
+    "slope",
+    "season",
+    "slope_damping",
+    "cycle",
+    "cycle_damping",
+    "cycle_period",
+    "autoregression",
+];
+
 /// Contradictions that no series could satisfy.
 ///
 /// # Errors
@@ -128,6 +141,16 @@ fn check_names(request: &Request) -> Result<(), BadRequest> {
         if all[..i].contains(name) {
             return Err(BadRequest::new("drivers", format!("'{name}' is listed twice")));
         }
+    }
+    let reserved =
+        |name: &str| PARAMETERS.contains(&name) || name.starts_with("season_") || name.starts_with("ar_");
+    if let Some(name) = request.drifting_drivers.iter().find(|name| reserved(name)) {
+        return Err(BadRequest::new(
+            "drifting_drivers",
+            format!(
+                "'{name}' is the name of a parameter of the model, and known => could not tell them apart; rename it"
+            ),
+        ));
     }
     Ok(())
 }

@@ -9,7 +9,8 @@ use crate::request::{Request, Series};
 use crate::residual_checks as checks;
 use crate::results::{Diagnostics, Parameter};
 use crate::scaling::Scaling;
-use crate::structure::{Model, Role, Structure};
+use crate::starts;
+use crate::structure::{Link, Model, Role, Structure, Trend};
 
 /// Largest magnitude of an observation: its square must stay in range.
 const LARGEST: f64 = 1e150;
@@ -55,19 +56,32 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
     let working = scaling.apply(&filled);
     let factors = scaling.factors(&model);
     let known: Vec<Option<f64>> = known.iter().zip(&factors).map(|(k, f)| k.map(|v| v / f)).collect();
+    let rounding = ROUNDING * modelled.iter().filter(|v| !v.is_nan()).fold(0.0_f64, |a, v| a.max(v.abs()));
+    if structure.trend == Trend::Damped
+        && starts::is_exact(&straightened(&structure), &working, rounding / scaling.unit, workspace)
+    {
+        return Err(Trouble::ExactFit);
+    }
     let mut objective = Objective::new(model.clone(), data_of(&working), workspace);
     let trouble = |error| trouble_of(error, &model, request);
     let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
     let evaluation = Evaluation::new(model.clone(), &estimate.values, working).map_err(trouble)?;
+    if reproduces(&evaluation, rounding, scaling.unit) {
+        return Err(Trouble::ExactFit);
+    }
     let parameters: Vec<Parameter> = (0..factors.len())
         .map(|i| Parameter {
             name: model.parameters()[i].name.clone(),
-            value: estimate.values[i] * factors[i],
+            value: if means_nothing(&model, &known, &estimate.values, i) {
+                f64::NAN
+            } else {
+                estimate.values[i] * factors[i]
+            },
             std_error: estimate.std_errors[i] * factors[i],
             known: known[i].is_some(),
         })
         .collect();
-    if parameters.iter().any(|p| !p.value.is_finite()) {
+    if parameters.iter().any(|p| p.value.is_infinite()) {
         return Err(Trouble::Numerical {
             what: "a variance leaves the range of double precision; bring the series and its drivers to similar sizes",
         });
@@ -84,6 +98,36 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
         parameters,
         estimate,
     })
+}
+
+/// The structure with a straight line for its trend. A damped trend comes as near to a line as it likes without being one, so that
+/// data on a line must be found out this way.
+fn straightened(structure: &Structure) -> Model {
+    Structure { trend: Trend::FixedLine, ..structure.clone() }.model()
+}
+
+/// A damping or period whose component has no variance shapes nothing: any value gives the same model.
+fn means_nothing(model: &Model, known: &[Option<f64>], values: &[f64], index: usize) -> bool {
+    let specs = model.parameters();
+    specs[index].link != Link::Variance
+        && known[index].is_none()
+        && (0..specs.len()).any(|i| {
+            specs[i].link == Link::Variance && specs[i].role == specs[index].role && values[i] == 0.0
+        })
+}
+
+/// Size of the one-step errors, relative to the values themselves, at which they are rounding.
+const ROUNDING: f64 = 4.0 * f64::EPSILON;
+
+/// The structure foretells every value to `rounding`. `unit` takes the errors to its scale.
+fn reproduces(evaluation: &Evaluation, rounding: f64, unit: f64) -> bool {
+    let one_step = evaluation.one_step();
+    let errors = one_step.standardised.iter().zip(&one_step.variance).map(|(e, v)| e * v.sqrt() * unit);
+    let mut worst: Option<f64> = None;
+    for error in errors.filter(|e| !e.is_nan()) {
+        worst = Some(worst.unwrap_or(0.0).max(error.abs()));
+    }
+    worst.is_some_and(|w| w <= rounding)
 }
 
 /// What is wrong with the observations as such.

@@ -69,7 +69,8 @@ pub struct Forecast {
 pub struct Parameter {
     /// Its name in `known`: `irregular`, `level`, `slope`, `season`, `<driver>`, `slope_damping`, ...
     pub name: String,
-    /// Value; variances in squared model-scale units (data's unit squared, or log units squared).
+    /// Value; variances in squared model-scale units (data's unit squared, or log units squared). NaN for a damping or
+    /// period whose component has no variance and so shapes nothing.
     pub value: f64,
     /// Standard error of the value; NaN where it was given, sits at zero, or is not determined.
     pub std_error: f64,

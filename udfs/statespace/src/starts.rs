@@ -5,9 +5,10 @@
 //! whole ray. The best points become starts: one where all parameters are variances, more where a cycle or an
 //! autoregression makes several optima likely.
 
-use crate::evaluation::EvaluationError;
-use crate::objective::Objective;
-use crate::structure::{Link, Role};
+use crate::evaluation::{EvaluationError, data_of};
+use crate::objective::{Objective, Workspace};
+use crate::request::Series;
+use crate::structure::{Link, Model, Role};
 
 /// Ratios to the irregular: irregular, level, slope, season, driver.
 const RATIOS: [[f64; 5]; 6] = [
@@ -76,6 +77,23 @@ pub(crate) fn choose(
         }
     }
     if starts.is_empty() { Err(trouble) } else { Ok(starts) }
+}
+
+/// True when the model, with an irregular and nothing that drifts, reproduces the series to rounding. `rounding`: size of an error
+/// of the data's own last digits.
+pub(crate) fn is_exact(model: &Model, series: &Series, rounding: f64, workspace: &mut Workspace) -> bool {
+    let values: Vec<f64> = model
+        .parameters()
+        .iter()
+        .map(|spec| match (spec.link, spec.role) {
+            (_, Role::Irregular) => 1.0,
+            (Link::Between { low, high }, _) => 0.5 * (low + high),
+            _ => 0.0,
+        })
+        .collect();
+    let mut objective = Objective::new(model.clone(), data_of(series), workspace);
+    let limit = EXACT.max(rounding * rounding);
+    objective.value(&values).is_ok_and(|value| value.degrees > 0.0 && value.rss <= value.degrees * limit)
 }
 
 fn is_variance(objective: &Objective<'_>, i: usize) -> bool {

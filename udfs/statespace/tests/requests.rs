@@ -295,3 +295,12 @@ proptest! {
         }
     }
 }
+
+#[test]
+fn a_drifting_driver_named_like_a_parameter() {
+    for name in ["level", "irregular", "season_12", "slope_damping"] {
+        let request = Request { drifting_drivers: names(&[name]), ..plain(Trend::LocalLevel) };
+        refused(&request, "drifting_drivers", &[name, "rename"]);
+    }
+    accepted(&Request { drifting_drivers: names(&["price"]), ..plain(Trend::LocalLevel) });
+}

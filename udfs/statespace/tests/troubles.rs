@@ -60,8 +60,11 @@ fn always(observed: &[f64], expected: &Trouble) {
 #[track_caller]
 fn sound(fit: &Fit, what: &str) {
     assert!(fit.converged(), "{what}");
+    let still = fit.parameters().iter().any(|p| p.name == "slope" && p.value == 0.0);
     for p in fit.parameters() {
-        assert!(p.value.is_finite() && p.value >= 0.0, "{what}: {p:?}");
+        // A damping has no value exactly where there is no slope to damp.
+        assert_eq!(p.value.is_nan(), p.name == "slope_damping" && still, "{what}: {p:?}");
+        assert!(p.value.is_nan() || (p.value.is_finite() && p.value >= 0.0), "{what}: {p:?}");
         assert!(p.std_error.is_nan() || (p.std_error > 0.0 && p.std_error.is_finite()), "{what}: {p:?}");
     }
     let d = fit.diagnostics();
@@ -181,10 +184,12 @@ fn hardly_moving() {
     let step: Vec<f64> = (0..40).map(|t| f64::from(u8::from(t >= 20))).collect();
     let spike: Vec<f64> = (0..40).map(|t| f64::from(u8::from(t == 20))).collect();
     let turns: Vec<f64> = (0..40).map(|t| f64::from(t % 2)).collect();
+    // Moving by rounding alone is no movement.
     let last_bit: Vec<f64> = (0..40).map(|t| if t == 20 { 1.0 + f64::EPSILON } else { 1.0 }).collect();
-    for (name, observed) in
-        [("two values", two), ("step", step), ("spike", spike), ("turns", turns), ("last bit", last_bit)]
-    {
+    for trend in TRENDS {
+        assert_eq!(attempt(&last_bit, &plain(trend)).err(), Some(Trouble::ExactFit), "{trend:?}");
+    }
+    for (name, observed) in [("two values", two), ("step", step), ("spike", spike), ("turns", turns)] {
         for trend in TRENDS {
             let what = format!("{name}, {}", trend.name());
             sound(&attempt(&observed, &plain(trend)).expect(&what), &what);
@@ -368,4 +373,25 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
     has(&all[12], &["7 row"]);
     has(&all[13], &["2020-02-03", "weeks", "every =>"]);
     has(&all[14], &["because", "every =>"]);
+}
+
+#[test]
+fn a_line_is_reproduced_whatever_the_trend_and_the_size() {
+    for scale in [1.0, 1e-9, 1e9] {
+        let line: Vec<f64> = (0..40).map(|t| 1.0 + scale * f64::from(t)).collect();
+        for trend in [Trend::FixedLine, Trend::LocalLinear, Trend::Smooth, Trend::Damped] {
+            let outcome = attempt(&line, &plain(trend));
+            assert_eq!(outcome.err(), Some(Trouble::ExactFit), "{trend:?}, step {scale}");
+        }
+    }
+}
+
+#[test]
+fn a_damping_that_shapes_nothing_has_no_value() {
+    // Alternation asks for no slope: its variance is zero, and any damping gives the same model.
+    let observed: Vec<f64> = (0..40).map(|t| f64::from(t % 2) + 0.01 * f64::from((t * t) % 7)).collect();
+    let fit = attempt(&observed, &plain(Trend::Damped)).expect("a fit");
+    let value = |name: &str| fit.parameters().iter().find(|p| p.name == name).expect("a parameter").value;
+    assert_eq!(value("slope"), 0.0);
+    assert!(value("slope_damping").is_nan());
 }
