@@ -71,6 +71,11 @@ impl StructuralRelationPlanner {
         context: &mut dyn RelationPlannerContext,
     ) -> Result<LogicalPlan> {
         let input = data::plan(function, call.take_required("data")?, &self.catalogs, context)?;
+        if !input.all_out_ref_exprs().is_empty() {
+            let what =
+                "cannot depend on another relation of the same FROM; join inside the query of data instead";
+            return Err(bad_argument(function, "data", what));
+        }
         let mut reader = ColumnReader::new(function, input, context);
         let keys = reader.keys(call.take("per"))?;
         let at = reader.at(call.take_required("at")?)?;

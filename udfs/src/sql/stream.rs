@@ -15,6 +15,7 @@ use datafusion::common::runtime::SpawnedTask;
 use datafusion::error::{DataFusionError, Result};
 use datafusion::execution::memory_pool::MemoryReservation;
 use datafusion::physical_plan::SendableRecordBatchStream;
+use datafusion::physical_plan::metrics::RecordOutput;
 use datafusion::physical_plan::stream::RecordBatchStreamAdapter;
 use futures::stream::{BoxStream, StreamExt, TryStreamExt, try_unfold};
 
@@ -181,10 +182,10 @@ pub(crate) fn run(input: SendableRecordBatchStream, setup: Setup) -> SendableRec
     });
     let results =
         chunks.map_ok(move |chunk| hand_over(Arc::clone(&workshop), chunk)).try_buffered(workers.max(1));
-    let batches = coalesce(results.boxed(), &schema, batch_size).inspect_ok(move |batch| {
+    let batches = coalesce(results.boxed(), &schema, batch_size).map_ok(move |batch| {
         // Owned by the closure, hence dropped with the stream.
         let _: &CancelOnDrop = &cancel;
-        baseline.record_output(batch.num_rows());
+        batch.record_output(&baseline)
     });
     Box::pin(RecordBatchStreamAdapter::new(schema, batches))
 }
@@ -193,9 +194,7 @@ pub(crate) fn run(input: SendableRecordBatchStream, setup: Setup) -> SendableRec
 fn hand_over(workshop: Arc<Workshop>, chunk: Chunk) -> impl Future<Output = Result<RecordBatch>> {
     let task = SpawnedTask::spawn_blocking(move || {
         let Chunk { groups, memory } = chunk;
-        let batch = workshop.answer(&groups);
-        drop(memory);
-        batch
+        workshop.answer(&groups, &memory)
     });
     async move { task.join().await.map_err(|error| DataFusionError::ExecutionJoin(Box::new(error)))? }
 }

@@ -9,6 +9,7 @@ use std::sync::{Arc, Mutex, PoisonError};
 
 use datafusion::arrow::array::RecordBatch;
 use datafusion::error::{DataFusionError, Result};
+use datafusion::execution::memory_pool::MemoryReservation;
 use datafusion::physical_plan::ExecutionPlan;
 use datafusion::physical_plan::sorts::sort::SortExec;
 use stillwell_statespace::{Components, Diagnostics, Fit, Forecast, Trouble, Workspace, fit};
@@ -23,6 +24,10 @@ use crate::columns::result::{ResultRows, ResultSchema};
 use crate::columns::series::{Placed, Unplaced, place};
 use crate::columns::time::TimeKind;
 use crate::columns::{components_rows, diagnostics_rows, forecast_rows};
+
+/// Bytes that a fit takes per grid point while it lasts, roughly: a packed covariance, gains and smoothed
+/// states of a structure with some ten states.
+const FIT_BYTES: usize = 1_024;
 
 /// What is to be done with every series. Plain data.
 #[derive(Debug, Clone)]
@@ -90,15 +95,16 @@ impl Workshop {
     /// Works through a chunk.
     ///
     /// # Errors
-    /// A series in trouble under `on_trouble => 'fail'`; cancellation; result columns that cannot be built.
-    pub(crate) fn answer(&self, groups: &[Group]) -> Result<RecordBatch> {
+    /// A series in trouble under `on_trouble => 'fail'`; cancellation; a series too long for the memory pool,
+    /// of which `memory` is a part; result columns that cannot be built.
+    pub(crate) fn answer(&self, groups: &[Group], memory: &MemoryReservation) -> Result<RecordBatch> {
         let mut workspace = self.take_workspace();
         let mut rows = ResultRows::new(Arc::clone(&self.job.result), self.job.time.clone());
         for group in groups {
             if self.cancelled.load(Ordering::Relaxed) {
                 return Err(DataFusionError::Execution("the query was cancelled".to_string()));
             }
-            self.one(group, &mut workspace, &mut rows)?;
+            self.one(group, &mut workspace, &mut rows, memory)?;
         }
         self.spare.lock().unwrap_or_else(PoisonError::into_inner).push(workspace);
         Ok(rows.finish()?)
@@ -110,12 +116,24 @@ impl Workshop {
     }
 
     /// One series, from its rows to the rows of the result.
-    fn one(&self, group: &Group, workspace: &mut Workspace, rows: &mut ResultRows) -> Result<()> {
+    fn one(
+        &self,
+        group: &Group,
+        workspace: &mut Workspace,
+        rows: &mut ResultRows,
+        memory: &MemoryReservation,
+    ) -> Result<()> {
         let settings = &self.job.settings;
         let request = &settings.request;
         let placed = place(group, &self.job.time, settings.every, request.drivers.len());
         let solved = match &placed {
             Ok(placed) => {
+                // A grid can be far longer than the rows on it.
+                let for_rows =
+                    placed.len().saturating_sub(group.len()) * self.job.result.schema().fields().len();
+                let for_fit = placed.len() * FIT_BYTES;
+                memory.try_grow(for_fit + for_rows * size_of::<f64>())?;
+                let _held = Held { memory, bytes: for_fit };
                 let _time = self.metrics.time_in_fits.timer();
                 guarded(workspace, |workspace| self.solve(placed, workspace))
             }
@@ -222,6 +240,18 @@ impl Workshop {
                 diagnostics_rows::write_trouble(rows, group, placed.as_ref().ok(), (trouble, message));
             }
         }
+    }
+}
+
+/// Memory that is given back when the fit is over.
+struct Held<'a> {
+    memory: &'a MemoryReservation,
+    bytes: usize,
+}
+
+impl Drop for Held<'_> {
+    fn drop(&mut self) {
+        self.memory.shrink(self.bytes);
     }
 }
 

@@ -29,7 +29,7 @@ mistakes! {
     an_argument_given_twice: "forecast" "observed => units, horizon => 3, horizon => 4" =>
         "forecast: argument 'horizon' is given twice";
     a_missing_argument: "forecast" "observed => units" =>
-        "forecast: argument 'horizon' is required: horizon => a whole number from 1 to 100000";
+        "forecast: argument 'horizon' is required: horizon => a whole number from 1 to 10000";
     an_unnamed_argument: "components" "units" =>
         "components: 'units' has no name; only data may stand first without one, write name => value";
     an_unknown_value: "components" "observed => units, trend => 'local lineal'" =>
@@ -41,11 +41,11 @@ mistakes! {
     a_transform_of_another_day: "components" "observed => units, transform => 'box-cox'" =>
         "components: argument 'transform' does not know 'box-cox'; valid are 'none', 'log', 'auto'";
     a_horizon_of_nothing: "forecast" "observed => units, horizon => 0" =>
-        "forecast: argument 'horizon' takes a whole number from 1 to 100000, not 0";
+        "forecast: argument 'horizon' takes a whole number from 1 to 10000, not 0";
     a_horizon_with_a_fraction: "forecast" "observed => units, horizon => 2.5" =>
-        "forecast: argument 'horizon' takes a whole number from 1 to 100000, not 2.5";
+        "forecast: argument 'horizon' takes a whole number from 1 to 10000, not 2.5";
     a_horizon_without_end: "forecast" "observed => units, horizon => 1000000" =>
-        "forecast: argument 'horizon' takes a whole number from 1 to 100000, not 1000000";
+        "forecast: argument 'horizon' takes a whole number from 1 to 10000, not 1000000";
     a_coverage_in_percent: "forecast" "observed => units, horizon => 3, coverage => 90" =>
         "forecast: argument 'coverage' takes a number above 0 and below 1, not 90";
     null_as_a_value: "components" "observed => units, season => NULL" =>
@@ -120,8 +120,17 @@ async fn a_column_that_is_not_there() {
 async fn a_table_that_is_not_there() {
     let sql = "SELECT * FROM components(data => sails, at => week, observed => units)";
     let message = error(&session(), sql).await;
-    assert!(message.contains("'sails' cannot be found"), "{message}");
-    assert!(message.contains("data => (SELECT * FROM sails)"), "{message}");
+    let expected =
+        "components: argument 'data' names 'sails', but there is no such table or CTE; did you mean 'sales'?";
+    assert!(message.contains(expected), "{message}");
+}
+
+#[tokio::test]
+async fn data_that_depends_on_its_neighbour() {
+    let sql = "SELECT * FROM (SELECT 7 AS n) AS t, LATERAL (SELECT * FROM components(
+                   data => (SELECT * FROM sales WHERE price > t.n), at => week, observed => units))";
+    let message = error(&session(), sql).await;
+    assert!(message.contains("argument 'data' cannot depend on another relation"), "{message}");
 }
 
 #[tokio::test]

@@ -194,7 +194,7 @@ async fn prepared_with_parameters() {
     assert_eq!(rows(&context, "EXECUTE outlook(5, 4)").await.num_rows(), 30);
     let message = error(&context, "EXECUTE outlook(0, 4)").await;
     assert!(
-        message.contains("forecast: argument 'horizon' takes a whole number from 1 to 100000, not 0"),
+        message.contains("forecast: argument 'horizon' takes a whole number from 1 to 10000, not 0"),
         "{message}"
     );
 }

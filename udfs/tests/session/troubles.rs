@@ -170,9 +170,28 @@ async fn progress_counts_series_and_names_those_in_trouble() {
     assert_eq!(progress.series(), cases.len() as u64);
     let bad = cases.iter().filter(|(_, status)| *status != "ok").count();
     assert_eq!(progress.in_trouble(), bad as u64);
-    let rows = cases.iter().map(|((_, rows), _)| rows.len() as u64).sum::<u64>();
-    assert_eq!((progress.rows(), progress.expected_rows()), (rows, rows));
+    let all = cases.iter().map(|((_, rows), _)| rows.len() as u64).sum::<u64>();
+    assert_eq!(progress.rows(), all);
     let troubled = progress.troubled();
     assert_eq!(troubled.len(), bad);
     assert_eq!((troubled[0].series.as_str(), troubled[0].status), ("depot=all missing", "all missing"));
+}
+
+#[tokio::test]
+async fn progress_knows_how_many_rows_come_out_of_files() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = format!("{}/sales/", folder.path().display());
+    let progress = Arc::new(stillwell::Progress::default());
+    let context = session();
+    context.state_ref().write().config_mut().set_extension(Arc::clone(&progress));
+    context.sql(&format!("COPY sales TO '{path}' STORED AS PARQUET")).await.unwrap().collect().await.unwrap();
+    let create = format!("CREATE EXTERNAL TABLE files STORED AS PARQUET LOCATION '{path}'");
+    context.sql(&create).await.unwrap();
+    let call =
+        "diagnostics(data => files, per => (region, product), at => week, observed => units, season => 0)";
+    rows(&context, &format!("SELECT * FROM {call}")).await;
+    assert_eq!((progress.expected_rows(), progress.rows()), (360, 360));
+    progress.reset();
+    rows(&context, &format!("SELECT * FROM {call} WHERE region = 'South'")).await;
+    assert_eq!((progress.expected_rows(), progress.rows()), (180, 180));
 }

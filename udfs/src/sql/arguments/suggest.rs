@@ -2,11 +2,11 @@
 
 use strsim::damerau_levenshtein;
 
-/// The valid name nearest to `given`, if it is near enough to be a slip: at most one edit in three letters
-/// (and at least one), transpositions counting once.
+/// The valid name nearest to `given`, if it is near enough to be a slip: one edit in a name of up to four
+/// letters, and one more for every three beyond, transpositions counting once.
 pub(crate) fn nearest<'a>(given: &str, valid: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
     let given = given.to_lowercase();
-    let allowed = (given.chars().count() / 3).max(1);
+    let allowed = ((given.chars().count() + 1) / 3).max(1);
     valid
         .into_iter()
         .map(|name| (damerau_levenshtein(&given, name), name))

@@ -5,7 +5,7 @@ use std::sync::Arc;
 use datafusion::catalog::CatalogProviderList;
 use datafusion::common::TableReference;
 use datafusion::datasource::provider_as_source;
-use datafusion::error::Result;
+use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::planner::RelationPlannerContext;
 use datafusion::logical_expr::{LogicalPlan, LogicalPlanBuilder};
 use datafusion::sql::sqlparser::ast::FunctionArguments;
@@ -13,6 +13,7 @@ use datafusion::sql::sqlparser::ast::{Expr, Ident, ObjectName, TableFactor, Tabl
 use futures::FutureExt;
 
 use crate::sql::arguments::call::{arguments, is_named, text_of};
+use crate::sql::arguments::suggest::nearest;
 use crate::sql::error::bad_argument;
 use crate::sql::function::Function;
 
@@ -60,7 +61,7 @@ pub(super) fn plan(
     }
 }
 
-fn not_a_relation(function: Function, what: &str) -> datafusion::error::DataFusionError {
+fn not_a_relation(function: Function, what: &str) -> DataFusionError {
     bad_argument(
         function,
         "data",
@@ -91,27 +92,35 @@ fn named(
     context: &mut dyn RelationPlannerContext,
 ) -> Result<LogicalPlan> {
     let name = ObjectName::from(name);
-    let error = match context.plan(table(name.clone(), None)) {
-        Ok(plan) => return Ok(plan),
-        Err(error) => error,
-    };
+    if let Ok(plan) = context.plan(table(name.clone(), None)) {
+        return Ok(plan);
+    }
     let reference = context.object_name_to_table_reference(name)?;
     let defaults = &context.context_provider().options().catalog;
     let full = reference.clone().resolve(&defaults.default_catalog, &defaults.default_schema);
     let schema = catalogs.catalog(&full.catalog).and_then(|catalog| catalog.schema(&full.schema));
+    let known = schema.as_ref().map(|schema| schema.table_names()).unwrap_or_default();
     match schema.map(|schema| schema.table(&full.table).now_or_never()) {
         Some(Some(Ok(Some(provider)))) => {
             LogicalPlanBuilder::scan(reference, provider_as_source(provider), None)?.build()
         }
         Some(Some(Err(error))) => Err(error),
         // The catalog has to wait for an answer, which planning cannot.
-        Some(None) => Err(by_query(function, &reference, "is in a catalog that cannot answer at once")),
-        Some(Some(Ok(None))) | None => Err(error.context(
-            by_query(function, &reference, "cannot be found; if it is a view or a file").to_string(),
-        )),
+        Some(None) => {
+            let what = format!(
+                "names '{reference}', whose catalog cannot answer at once; write data => (SELECT * FROM {reference})"
+            );
+            Err(bad_argument(function, "data", what))
+        }
+        Some(Some(Ok(None))) | None => Err(unknown(function, &reference, &known)),
     }
 }
 
-fn by_query(function: Function, name: &TableReference, why: &str) -> datafusion::error::DataFusionError {
-    bad_argument(function, "data", format!("'{name}' {why}, write data => (SELECT * FROM {name})"))
+/// There is no such table; `known` are those of the schema it would be in.
+fn unknown(function: Function, name: &TableReference, known: &[String]) -> DataFusionError {
+    let help = match nearest(name.table(), known.iter().map(String::as_str)) {
+        Some(meant) => format!("did you mean '{meant}'?"),
+        None => "write a query, data => (SELECT … FROM …), or register the table first".to_string(),
+    };
+    bad_argument(function, "data", format!("names '{name}', but there is no such table or CTE; {help}"))
 }

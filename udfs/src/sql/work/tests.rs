@@ -1,6 +1,7 @@
 //! A fit that breaks off, and cancellation.
 
 use datafusion::arrow::datatypes::DataType;
+use datafusion::execution::memory_pool::{MemoryConsumer, MemoryPool, UnboundedMemoryPool};
 use datafusion::physical_plan::empty::EmptyExec;
 use datafusion::physical_plan::metrics::ExecutionPlanMetricsSet;
 
@@ -41,6 +42,11 @@ fn group() -> Group {
     groups.pop().unwrap()
 }
 
+fn memory() -> MemoryReservation {
+    let pool: Arc<dyn MemoryPool> = Arc::new(UnboundedMemoryPool::default());
+    MemoryConsumer::new("test").register(&pool)
+}
+
 #[test]
 fn a_panic_is_the_trouble_of_its_series_alone() {
     let mut workspace = Workspace::new();
@@ -54,14 +60,14 @@ fn a_panic_is_the_trouble_of_its_series_alone() {
 fn a_cancelled_workshop_does_nothing() {
     let workshop = workshop(Function::Components);
     workshop.cancelled.store(true, Ordering::Relaxed);
-    assert!(workshop.answer(&[group()]).unwrap_err().to_string().contains("cancelled"));
+    assert!(workshop.answer(&[group()], &memory()).unwrap_err().to_string().contains("cancelled"));
     assert_eq!(workshop.metrics.series_fitted.value(), 0);
 }
 
 #[test]
 fn work_is_counted() {
     let workshop = workshop(Function::Components);
-    workshop.answer(&[group()]).unwrap();
+    workshop.answer(&[group()], &memory()).unwrap();
     assert_eq!(workshop.metrics.series_fitted.value(), 1);
     assert!(workshop.metrics.likelihood_evaluations.value() > 1);
     assert!(workshop.metrics.time_in_fits.value() > 0);
