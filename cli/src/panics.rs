@@ -64,7 +64,7 @@ mod tests {
 
     #[test]
     fn source_paths_are_shortened() {
-        assert_eq!(short("/builds/x/registry/engine-1.0/src/sort/merge.rs"), "src/sort/merge.rs");
+        assert_eq!(short("/builds/x/crates/engine-1.0/src/sort/merge.rs"), "src/sort/merge.rs");
         assert_eq!(short("main.rs"), "main.rs");
     }
 

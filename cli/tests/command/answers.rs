@@ -56,6 +56,14 @@ fn the_reference_lists_and_describes_the_functions() {
 }
 
 #[test]
+fn the_page_in_the_tree_is_the_one_that_is_printed() {
+    let page = Place::new().stillwell(&["functions", "--markdown"]).out;
+    let kept = concat!(env!("CARGO_MANIFEST_DIR"), "/../udfs/docs/functions.md");
+    let kept = std::fs::read_to_string(kept).expect("the page in the tree");
+    assert!(page == kept, "udfs/docs/functions.md is stale: write `stillwell functions --markdown` into it");
+}
+
+#[test]
 fn an_unknown_function_suggests_one() {
     let ran = Place::new().stillwell(&["functions", "forcast"]);
     assert_eq!(ran.code, Some(2));

@@ -151,7 +151,7 @@ pub const ARGUMENTS: &[Argument] = &[
     argument(
         "autoregression",
         Takes::Value,
-        ("an order from 0", "0"),
+        ("an order from 0 to 8", "0"),
         "Order of a stationary autoregression beside the white irregular.",
     ),
     argument(
@@ -164,8 +164,9 @@ pub const ARGUMENTS: &[Argument] = &[
         "known",
         Takes::Value,
         ("{'parameter': value, …} or named_struct('parameter', value, …)", "nothing known"),
-        "Parameters that are given and not estimated: the variances irregular, level, slope, season, or the \
-         name of a drifting driver; slope_damping.",
+        "Parameters that are given and not estimated: the variances irregular, level, slope, season (season_7 and \
+         so on with several), cycle, autoregression, or the name of a drifting driver; and slope_damping, \
+         cycle_damping, cycle_period, ar_1 and so on.",
     ),
     argument(
         "every",
@@ -183,7 +184,7 @@ pub const ARGUMENTS: &[Argument] = &[
     argument(
         "coverage",
         Takes::Value,
-        ("a number above 0 and below 1", "0.9"),
+        ("a number above 0 and at most 0.999999", "0.9"),
         "Probability that an interval is to cover. No influence on diagnostics, which takes it all the same so \
          that one list of arguments serves all three.",
     ),

@@ -12,15 +12,18 @@ use std::sync::Arc;
 
 use datafusion::catalog::CatalogProviderList;
 use datafusion::common::DFSchema;
-use datafusion::error::Result;
+use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::planner::{
     PlannedRelation, RelationPlanner, RelationPlannerContext, RelationPlanning,
 };
 use datafusion::logical_expr::{Expr, Extension, LogicalPlan};
-use datafusion::sql::sqlparser::ast::{Ident, ObjectName, ObjectNamePart, TableAlias, TableFactor};
+use datafusion::sql::sqlparser::ast::{
+    Expr as SqlExpr, FunctionArg, Ident, ObjectName, ObjectNamePart, TableAlias, TableFactor,
+};
 
 use super::arguments::call::Call;
 use super::arguments::constant::Given;
+use super::arguments::suggest::valid_and_nearest;
 use super::arguments::{Argument, Takes};
 use super::error::bad_argument;
 use super::function::Function;
@@ -58,9 +61,29 @@ impl RelationPlanner for StructuralRelationPlanner {
                 let alias = alias.unwrap_or_else(|| alias_like(function));
                 Ok(RelationPlanning::Planned(Box::new(PlannedRelation::new(plan, Some(alias)))))
             }
-            (_, relation) => Ok(RelationPlanning::Original(Box::new(relation))),
+            (_, relation) => match slip_of(&relation, context) {
+                Some(message) => Err(DataFusionError::Plan(message)),
+                None => Ok(RelationPlanning::Original(Box::new(relation))),
+            },
         }
     }
+}
+
+/// The complaint about a function that is not there, when the call can only mean one of ours: it has the named argument
+/// `data`, which no table function of the engine can take.
+fn slip_of(relation: &TableFactor, context: &dyn RelationPlannerContext) -> Option<String> {
+    let TableFactor::Table { name, args: Some(args), .. } = relation else { return None };
+    let [ObjectNamePart::Identifier(ident)] = name.0.as_slice() else { return None };
+    let is_data = |name: &Ident| context.normalize_ident(name.clone()) == "data";
+    let ours = args.args.iter().any(|argument| match argument {
+        FunctionArg::Named { name, .. } | FunctionArg::ExprNamed { name: SqlExpr::Identifier(name), .. } => {
+            is_data(name)
+        }
+        _ => false,
+    });
+    let given = context.normalize_ident(ident.clone());
+    let valid = Function::ALL.map(Function::name);
+    ours.then(|| format!("there is no function '{given}' for FROM; {}", valid_and_nearest(&given, &valid)))
 }
 
 impl StructuralRelationPlanner {

@@ -8,8 +8,8 @@
 //! * **season**: a candidate period stays when at least three full periods are observed and, once the moving average over a
 //!   period is taken off, the autocorrelation at that lag is above its one-sided 95 % bound under no season (Bartlett 1946,
 //!   *JRSS Suppl.* 8).
-//! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, half of them
-//!   when the period is up to 24, otherwise 3 (common practice: the first few carry a yearly pattern).
+//! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, a quarter of the period
+//!   (rounded up) of them up to a period of 24, otherwise 3 (common practice: the first few carry a yearly pattern).
 //! * **trend**: `damped` from 16 observed points on (the safe default of the trade, common practice), else `local level`.
 
 use crate::error::{BadRequest, Trouble};
@@ -81,7 +81,7 @@ pub fn check(request: &Request) -> Result<(), BadRequest> {
                 return Err(BadRequest::new(
                     "harmonics",
                     format!(
-                        "a count lies between 1 and {MOST_HARMONICS}, got {count}; leave it out for the dummy form"
+                        "a count lies between 1 and {MOST_HARMONICS}, got {count}; leave it out for the default"
                     ),
                 ));
             }
@@ -101,6 +101,7 @@ pub fn check(request: &Request) -> Result<(), BadRequest> {
             }
         }
     }
+    check_overlap(request, periods)?;
     if let Some((shortest, longest)) = request.cycle
         && !(shortest >= 2.0 && longest > shortest && longest.is_finite())
     {
@@ -133,6 +134,34 @@ pub fn check(request: &Request) -> Result<(), BadRequest> {
 
 fn explicit(request: &Request) -> bool {
     matches!(request.season, SeasonRequest::Given(_))
+}
+
+/// Two seasons must not share a frequency: nothing could tell whose pattern it is.
+fn check_overlap(request: &Request, periods: &[f64]) -> Result<(), BadRequest> {
+    if !explicit(request) {
+        return Ok(());
+    }
+    let structure = structure_of(request, Trend::None, periods);
+    let frequencies = |season: &Season| -> Vec<f64> {
+        let count = season.harmonics.unwrap_or((season.period / 2.0).floor() as usize);
+        (1..=count).map(|j| j as f64 / season.period).collect()
+    };
+    for (i, a) in structure.seasons.iter().enumerate() {
+        for b in &structure.seasons[..i] {
+            let others = frequencies(b);
+            if frequencies(a).iter().any(|x| others.iter().any(|y| (x - y).abs() < 1e-9)) {
+                return Err(BadRequest::new(
+                    "season",
+                    format!(
+                        "the seasons {} and {} share a harmonic, so the data cannot tell them apart; give the longer one fewer harmonics, or leave one out",
+                        period_label(b.period),
+                        period_label(a.period)
+                    ),
+                ));
+            }
+        }
+    }
+    Ok(())
 }
 
 fn check_names(request: &Request) -> Result<(), BadRequest> {
@@ -181,7 +210,11 @@ fn check_known(request: &Request) -> Result<(), BadRequest> {
         if !names.contains(name) {
             return Err(BadRequest::new(
                 "known",
-                format!("'{name}' is no parameter of this structure; it has {}", names.join(", ")),
+                format!(
+                    "'{name}' is no parameter of this structure; it has {}{}",
+                    names.join(", "),
+                    nearest(name, &names)
+                ),
             ));
         }
         let (valid, rule) = match name.as_str() {
@@ -197,6 +230,16 @@ fn check_known(request: &Request) -> Result<(), BadRequest> {
         }
     }
     Ok(())
+}
+
+/// "; did you mean 'x'?" where a valid name is near.
+fn nearest(name: &str, names: &[String]) -> String {
+    names
+        .iter()
+        .map(|n| (strsim::damerau_levenshtein(name, n), n))
+        .min()
+        .filter(|(distance, n)| *distance <= 1 + n.len() / 4)
+        .map_or_else(String::new, |(_, n)| format!("; did you mean '{n}'?"))
 }
 
 /// A structure with its scale.

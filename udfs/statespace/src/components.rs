@@ -93,7 +93,8 @@ impl Fit {
     /// Forecast of `horizon` steps with intervals of this coverage. The series must carry its drivers' plan.
     ///
     /// # Errors
-    /// [`Trouble::NoDriverPlan`] names the first driver and step without a value.
+    /// [`Trouble::NoDriverPlan`] names the first driver and step without a value; [`Trouble::Numerical`] when a log model's
+    /// forecast overflows.
     pub fn forecast(&self, horizon: usize, coverage: f64) -> Result<Forecast, Trouble> {
         let n = self.modelled.len();
         let names = self.drivers.0.iter().chain(&self.drivers.1);
@@ -118,6 +119,11 @@ impl Fit {
             let m = path.signal.mean[step] * unit + shift;
             let v = (path.signal.variance[step] + h) * unit * unit;
             let s = v.sqrt();
+            if self.log && (v > transform::LARGEST || m + (z * s).max(0.5 * v) > transform::LARGEST) {
+                return Err(Trouble::Numerical {
+                    what: "on the log scale the forecast leaves the range of double precision within the horizon; use transform => 'none', a damped trend, or a shorter horizon",
+                });
+            }
             let (expected, std_error) = if self.log { transform::lognormal(m, v) } else { (m, s) };
             out.expected.push(expected);
             out.std_error.push(std_error);

@@ -16,6 +16,13 @@ pub enum Trouble {
         /// Observed points that there are.
         got: usize,
     },
+    /// The series does not reach over one full period of a season that was asked for.
+    ShorterThanSeason {
+        /// The period in steps.
+        period: f64,
+        /// Grid points from the first to the last observation.
+        points: usize,
+    },
     /// Every observation has the same value: no variance can be estimated.
     Constant {
         /// The value.
@@ -95,7 +102,7 @@ impl Trouble {
     pub fn status(&self) -> &'static str {
         match self {
             Self::AllMissing => "all missing",
-            Self::TooShort { .. } => "too short",
+            Self::TooShort { .. } | Self::ShorterThanSeason { .. } => "too short",
             Self::Constant { .. } => "constant",
             Self::NotFinite { .. } => "not finite",
             Self::TooLarge { .. } => "too large",
@@ -141,6 +148,11 @@ impl fmt::Display for Trouble {
                 f,
                 "{got} observed points, but this structure needs at least {needed}; ask for a simpler trend, no season or fewer drivers"
             ),
+            Self::ShorterThanSeason { period, points } => write!(
+                f,
+                "the series has {points} steps, less than one season of {}; nothing can be said about the season: use season => 0, or 'auto', which asks for three full periods",
+                crate::structure::period_label(*period)
+            ),
             Self::Constant { value } => write!(
                 f,
                 "every observed value is {value}; a series that never moves has no variance to estimate"
@@ -159,7 +171,7 @@ impl fmt::Display for Trouble {
             ),
             Self::DriverGap { driver, index } => write!(
                 f,
-                "driver '{driver}' has no finite value at grid point {index} (from 0) of the history; fill it in, drivers must be known wherever the series is"
+                "driver '{driver}' has no finite value below 1e150 in size at grid point {index} (from 0) of the history; fill it in, drivers must be known wherever the series is"
             ),
             Self::NoDriverPlan { driver, step } => write!(
                 f,

@@ -22,7 +22,7 @@ const LAST_GAIN: f64 = 1e-7;
 /// Gain that a zero variance must promise to be freed again.
 const REOPENING_GAIN: f64 = 1e-8;
 /// Most evaluations of one climb.
-const MOST: usize = 200;
+const MOST: usize = 120;
 /// Longest step on the unbounded side.
 const STRIDE: f64 = 3.0;
 /// A variance below this share of the largest one is tried at zero when it is still falling.

@@ -335,7 +335,44 @@ mod tests {
     use crate::structure::{Season, Structure, Trend};
     use proptest::prelude::*;
 
+    /// Every predicted covariance is symmetric to the last bit and has no direction of negative variance.
+    fn assert_covariances(pass: &Pass) -> Result<(), TestCaseError> {
+        let m = pass.m;
+        for p in pass.covariances.chunks_exact(m * m).take(pass.n) {
+            let matrix = nalgebra::DMatrix::from_row_slice(m, m, p);
+            prop_assert_eq!(&matrix, &matrix.transpose());
+            let largest = matrix.amax();
+            let smallest = matrix.symmetric_eigenvalues().min();
+            prop_assert!(smallest >= -1e-12 * largest, "eigenvalue {smallest} beside {largest}");
+        }
+        Ok(())
+    }
+
     proptest! {
+        #[test]
+        fn covariances_are_symmetric_and_not_negative(
+            noise in proptest::collection::vec(-1.0..1.0f64, 60),
+            variances in proptest::collection::vec(0.0..1.0f64, 8),
+            gap in 0usize..50,
+        ) {
+            let structure = Structure {
+                trend: Trend::Damped,
+                seasons: vec![Season { period: 12.4, harmonics: Some(3), fixed: false }],
+                drifting_drivers: vec!["price".to_owned()],
+                ..Structure::default()
+            };
+            let values = [variances[0], variances[1], variances[2], 0.8, variances[3], variances[4]];
+            let system = structure.model().system_at(&values).unwrap();
+            let mut observed = noise.clone();
+            observed[gap..gap + 8].fill(f64::NAN);
+            let price: Vec<f64> = (0..60).map(|t| (f64::from(t) * 0.7).sin()).collect();
+            let data = Data { observed: &observed, drivers: &[], drifting: &[price] };
+            let mut pass = Pass::default();
+            if run(&system, data, Keep::Everything, &mut pass).is_ok() {
+                assert_covariances(&pass)?;
+            }
+        }
+
         /// A flat prior convolved with any proper one is still flat.
         #[test]
         fn nothing_depends_on_the_start_scale(

@@ -44,6 +44,10 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
     let modelled: Vec<f64> =
         if log { series.observed.iter().map(|v| v.ln()).collect() } else { series.observed.clone() };
     let (filled, unknown) = fill_drivers(series, request, &modelled)?;
+    let points = modelled.len() - modelled.iter().position(|v| !v.is_nan()).unwrap_or(0);
+    if let Some(season) = structure.seasons.iter().find(|s| (points as f64) < s.period) {
+        return Err(Trouble::ShorterThanSeason { period: season.period, points });
+    }
     let model = structure.model();
     let known = known_values(&model, request);
     let seen = modelled.iter().filter(|v| !v.is_nan()).count();

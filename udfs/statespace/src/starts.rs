@@ -62,7 +62,10 @@ pub(crate) fn choose(
         }
     }
     found.sort_by(|a, b| b.0.total_cmp(&a.0));
-    let most = if shapes.len() > 1 { 4 } else { 1 };
+    // A cycle or an autoregression has optima of its own for each period and sign; a damped slope seldom has.
+    let several =
+        objective.model.parameters().iter().any(|p| matches!(p.role, Role::Cycle | Role::Autoregression));
+    let most = if several { 4 } else { 1 };
     let mut starts: Vec<Vec<f64>> = Vec::new();
     let mut groups: Vec<usize> = Vec::new();
     for (_, values, group) in &found {

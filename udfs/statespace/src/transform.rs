@@ -9,7 +9,7 @@ use crate::results::State;
 use crate::smoother::Smoothed;
 
 /// Largest logarithm that is taken back without overflow.
-const LARGEST: f64 = 700.0;
+pub(crate) const LARGEST: f64 = 700.0;
 
 /// exp that saturates instead of overflowing; NaN (missing) stays NaN, which `min` would not.
 pub(crate) fn exp(x: f64) -> f64 {

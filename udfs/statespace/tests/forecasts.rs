@@ -116,7 +116,8 @@ fn steps_and_totals_follow_from_the_joint_law() {
                 (forecast.total_lower[step], total - z * of_total),
                 (forecast.total_upper[step], total + z * of_total),
             ] {
-                worst = worst.max((ours - expected).abs() / (1.0 + expected.abs()));
+                let difference = (ours - expected).abs() / (1.0 + expected.abs());
+                worst = if difference.is_nan() { f64::INFINITY } else { worst.max(difference) };
             }
         }
         println!("{:?}: worst {worst:.1e}", case.structure);

@@ -17,6 +17,11 @@ const VARIANCES: f64 = 1e-8;
 /// Standardised one-step errors, absolute.
 const ERRORS: f64 = 1e-8;
 
+/// The larger of two differences; one that is not a number is as large as can be.
+fn larger(a: f64, b: f64) -> f64 {
+    if b.is_nan() { f64::INFINITY } else { a.max(b) }
+}
+
 #[derive(Default)]
 struct Worst {
     log_likelihood: f64,
@@ -31,10 +36,10 @@ impl Worst {
     fn states(&mut self, ours: &State, reference: &serde_json::Value, unit: f64) {
         let (mean, var) = (numbers(&reference["mean"]), numbers(&reference["var"]));
         for t in 0..mean.len() {
-            self.states = self.states.max((ours.value[t] - mean[t]).abs() / unit);
+            self.states = larger(self.states, (ours.value[t] - mean[t]).abs() / unit);
             // A variance that is zero in truth (1e-36 in 50 digits) is compared on the scale of the series.
             let size = if var[t] > 1e-20 * unit * unit { var[t] } else { unit * unit };
-            self.variances = self.variances.max((ours.std_error[t].powi(2) - var[t]).abs() / size);
+            self.variances = larger(self.variances, (ours.std_error[t].powi(2) - var[t]).abs() / size);
         }
     }
 }
@@ -87,9 +92,9 @@ fn compare(case: &Case) -> Worst {
     let signal_var = numbers(&fixed["forecast"]["signal_var"]);
     let (m, v, s) = evaluation.forecast(mean.len());
     for i in 0..mean.len() {
-        worst.forecasts = worst.forecasts.max((m[i] - mean[i]).abs() / unit);
+        worst.forecasts = larger(worst.forecasts, (m[i] - mean[i]).abs() / unit);
         for (ours, reference) in [(v[i], var[i]), (s[i], signal_var[i])] {
-            worst.forecast_variances = worst.forecast_variances.max((ours / reference - 1.0).abs());
+            worst.forecast_variances = larger(worst.forecast_variances, (ours / reference - 1.0).abs());
         }
     }
     let errors = numbers(&fixed["std_resid"]);
@@ -101,7 +106,7 @@ fn compare(case: &Case) -> Worst {
             case.id
         );
         if !reference.is_nan() {
-            worst.errors = worst.errors.max((ours - reference).abs());
+            worst.errors = larger(worst.errors, (ours - reference).abs());
         }
     }
     worst

@@ -42,6 +42,7 @@ fn powers(x: &[f64], degree: i32) -> Vec<Vec<f64>> {
 
 /// Number of correct digits, at most 15.
 fn digits(ours: f64, certified: f64) -> f64 {
+    assert!(ours.is_finite(), "{ours} for {certified}");
     let size = if certified == 0.0 { 1.0 } else { certified.abs() };
     (-((ours - certified).abs() / size).log10()).min(15.0)
 }

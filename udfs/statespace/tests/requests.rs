@@ -304,3 +304,20 @@ fn a_drifting_driver_named_like_a_parameter() {
     }
     accepted(&Request { drifting_drivers: names(&["price"]), ..plain(Trend::LocalLevel) });
 }
+
+#[test]
+fn seasons_that_share_a_harmonic() {
+    refused(&with_harmonics(&[7.0, 14.0], &[3, 7]), "season", &["7", "14", "share a harmonic"]);
+    refused(&given(&[6.0, 12.0]), "season", &["6", "12"]);
+    accepted(&with_harmonics(&[7.0, 365.25], &[3, 4]));
+    accepted(&given(&[24.0, 168.0]));
+}
+
+#[test]
+fn a_slip_in_a_known_name_is_understood() {
+    refused(
+        &with_known(Trend::LocalLevel, &[("irregulr", 1.0)]),
+        "known",
+        &["irregulr", "did you mean 'irregular'?"],
+    );
+}

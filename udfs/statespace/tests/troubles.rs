@@ -395,3 +395,23 @@ fn a_damping_that_shapes_nothing_has_no_value() {
     assert_eq!(value("slope"), 0.0);
     assert!(value("slope_damping").is_nan());
 }
+
+#[test]
+fn shorter_than_one_season() {
+    for (period, harmonics) in [(52.18, None), (60.0, Some(vec![2])), (41.0, Some(vec![3]))] {
+        let request =
+            Request { season: SeasonRequest::Given(vec![period]), harmonics, ..plain(Trend::LocalLevel) };
+        let trouble = attempt(&noise(), &request).expect_err("too short for the season");
+        assert_eq!(trouble, Trouble::ShorterThanSeason { period, points: 40 });
+        assert_eq!(trouble.status(), "too short");
+    }
+}
+
+#[test]
+fn a_log_forecast_that_leaves_the_range() {
+    let observed: Vec<f64> = noise().iter().enumerate().map(|(t, v)| (6.0 * t as f64 + v).exp()).collect();
+    let request = Request { transform: TransformRequest::Log, ..plain(Trend::LocalLinear) };
+    let fit = attempt(&observed, &request).expect("a fit");
+    assert!(fit.forecast(20, 0.9).is_ok());
+    assert!(matches!(fit.forecast(120, 0.9), Err(Trouble::Numerical { .. })));
+}

@@ -182,7 +182,12 @@ fn sound(fit: &Fit, series: &Series) -> Result<(), TestCaseError> {
         let trouble = fit.forecast(STEPS, 0.9).expect_err("no plan");
         prop_assert!(matches!(trouble, Trouble::NoDriverPlan { .. }), "{trouble}");
     }
-    let f = fit.forecast(planned, 0.9).expect("a forecast");
+    let f = match fit.forecast(planned, 0.9) {
+        Ok(forecast) => forecast,
+        // A log model may leave the range of double precision; then it says so.
+        Err(Trouble::Numerical { .. }) if fit.log_transform() => return Ok(()),
+        Err(trouble) => return Err(TestCaseError::fail(trouble.to_string())),
+    };
     for s in 0..planned {
         prop_assert!(f.expected[s].is_finite() && f.std_error[s] >= 0.0, "{f:?}");
         prop_assert!(f.lower[s] <= f.upper[s] && f.total_lower[s] <= f.total_upper[s], "{f:?}");

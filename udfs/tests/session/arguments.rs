@@ -47,7 +47,7 @@ mistakes! {
     a_horizon_without_end: "forecast" "observed => units, horizon => 1000000" =>
         "forecast: argument 'horizon' takes a whole number from 1 to 10000, not 1000000";
     a_coverage_in_percent: "forecast" "observed => units, horizon => 3, coverage => 90" =>
-        "forecast: argument 'coverage' takes a number above 0 and below 1, not 90";
+        "forecast: argument 'coverage' takes a number above 0 and at most 0.999999, not 90";
     null_as_a_value: "components" "observed => units, season => NULL" =>
         "components: argument 'season' is NULL; leave it out for its default";
     a_season_of_text: "components" "observed => units, season => 'weekly'" =>

@@ -7,7 +7,7 @@ use stillwell_statespace::{Request, SeasonRequest, TransformRequest};
 
 use super::constant::{Given, Value};
 use super::suggest::valid_and_nearest;
-use super::{ARGUMENTS, Argument};
+use super::{ARGUMENTS, Argument, REQUIRED};
 use crate::columns::every;
 use crate::columns::result::Scale;
 use crate::sql::error::{bad_argument, bad_request};
@@ -68,7 +68,12 @@ impl Values<'_> {
     fn value(&self, name: &str) -> Result<Option<Value>> {
         match self.given(name).and_then(Given::value) {
             Some(Value::Null) => {
-                Err(bad_argument(self.function, name, "is NULL; leave it out for its default"))
+                let argument = ARGUMENTS.iter().find(|argument| argument.name == name);
+                let remedy = match argument.filter(|argument| argument.default == REQUIRED) {
+                    Some(argument) => format!("is NULL, but it is required: {}", argument.values),
+                    None => "is NULL; leave it out for its default".to_owned(),
+                };
+                Err(bad_argument(self.function, name, remedy))
             }
             value => Ok(value),
         }
@@ -286,7 +291,7 @@ impl Values<'_> {
             None => Ok(0.9),
             Some(value) => value
                 .as_number()
-                .filter(|c| 0.0 < *c && *c < 1.0)
+                .filter(|c| 0.0 < *c && *c <= 0.999_999)
                 .ok_or_else(|| self.wrong("coverage", &value)),
         }
     }

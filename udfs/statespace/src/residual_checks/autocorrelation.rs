@@ -38,9 +38,7 @@ pub fn ljung_box(errors: &[f64], lags: usize, estimated: usize) -> Statistic {
 
 /// How many lags Q should look at for `n` errors of a series with season `period` (in steps; 0 or 1 = none).
 ///
-/// Ten, or two periods where that is more, but no more than a fifth of the errors and at least one. After
-/// Hyndman & Athanasopoulos (2018), *Forecasting: Principles and Practice*, 2nd ed., 3.3 (10 without and 2m
-/// with a season, at most T/5; quoted from memory), with their 10 as the floor for short seasons too.
+/// Ten, or two periods where that is more, but no more than a fifth of the errors and at least one (common practice).
 pub fn default_lags(n: usize, period: f64) -> usize {
     let two_periods = if period.is_finite() { (2.0 * period).round() } else { 0.0 };
     // The cast saturates, so that an absurd period is cut to n / 5 like any other.

@@ -1,0 +1,18 @@
+//! Checks of the whole, in one binary: what a person who writes SQL sees.
+//!
+//! - [`slt`] runs the SQL records of `slt/**/*.slt`: functions, arguments, time axes, types, troubles, plans;
+//! - [`published`] holds figures of the literature against the answers of queries;
+//! - [`outlook`] runs the demo job once; [`truth`] holds its answers against what the demo was drawn from, and
+//!   [`demo_output`] looks at the files it wrote;
+//! - [`readme`] runs the SQL of the documents and holds what the README shows against it;
+//! - [`memory`] fits under a small memory limit.
+
+mod demo_output;
+mod jobs;
+mod memory;
+mod outlook;
+mod published;
+mod readme;
+mod slt;
+mod support;
+mod truth;

@@ -1,0 +1,167 @@
+//! The SQL in the documents runs, and what the README shows is what it answers.
+//!
+//! A block marked `sql` is run, all of a document in one session from the root of the repository; a block marked `text`
+//! straight after it is the answer of its last statement.
+
+use std::fs;
+use std::path::Path;
+
+use arrow::array::RecordBatch;
+use arrow::util::display::FormatOptions;
+use arrow::util::pretty::pretty_format_batches_with_options;
+
+use crate::jobs::{Detour, run};
+use crate::outlook::{JOB, Outlook};
+use crate::support::{ROOT, session_over_files};
+
+/// A fenced block of a Markdown document.
+#[derive(Debug, PartialEq, Eq)]
+struct Block {
+    /// What stands behind the opening fence.
+    language: String,
+    /// Line of the opening fence, from 1.
+    line: usize,
+    text: String,
+}
+
+/// All fenced blocks.
+fn blocks(document: &str) -> Vec<Block> {
+    let mut blocks = Vec::new();
+    let mut open: Option<Block> = None;
+    for (at, line) in document.lines().enumerate() {
+        match (line.strip_prefix("```"), open.take()) {
+            (Some(_), Some(block)) => blocks.push(block),
+            (Some(language), None) => {
+                open =
+                    Some(Block { language: language.trim().to_string(), line: at + 1, text: String::new() });
+            }
+            (None, Some(mut block)) => {
+                block.text.push_str(line);
+                block.text.push('\n');
+                open = Some(block);
+            }
+            (None, None) => {}
+        }
+    }
+    assert!(open.is_none(), "a block is not closed: {open:?}");
+    blocks
+}
+
+/// The cells of a table, without the spaces and rules that only make it pretty.
+fn cells(table: &str) -> Vec<Vec<&str>> {
+    let rows = table.lines().filter(|line| line.starts_with('|'));
+    rows.map(|row| row.trim_matches('|').split('|').map(str::trim).collect()).collect()
+}
+
+/// Holds an answer against what the document shows of it.
+fn compare(rows: &[RecordBatch], shown: &str) -> Result<(), String> {
+    let options = FormatOptions::default().with_null("NULL");
+    let answer =
+        pretty_format_batches_with_options(rows, &options).map_err(|error| error.to_string())?.to_string();
+    if cells(&answer) == cells(shown) {
+        Ok(())
+    } else {
+        Err(format!("the document shows another answer:\n{answer}"))
+    }
+}
+
+/// Runs the SQL of a document; the failures, each with the number and line of its block.
+async fn failures(name: &str, document: &str, detour: &mut Detour, folder: &Path) -> Vec<String> {
+    let context = session_over_files();
+    let blocks = blocks(document);
+    let mut failures = Vec::new();
+    let mut number = 0;
+    for (at, block) in blocks.iter().enumerate().filter(|(_, block)| block.language == "sql") {
+        number += 1;
+        detour.add(&block.text, folder);
+        let mut outcome = run(&context, &block.text, detour).await;
+        if let (Ok(rows), Some(next)) = (&outcome, blocks.get(at + 1))
+            && next.language == "text"
+            && let Err(failure) = compare(rows, &next.text)
+        {
+            outcome = Err(failure);
+        }
+        if let Err(failure) = outcome {
+            failures.push(format!("{name}, SQL block {number} (line {}): {failure}", block.line));
+        }
+    }
+    assert!(number > 0, "{name} has no block marked sql");
+    failures
+}
+
+fn runtime() -> tokio::runtime::Runtime {
+    tokio::runtime::Builder::new_multi_thread().enable_all().build().expect("a runtime")
+}
+
+#[test]
+fn the_readme_says_what_the_program_does() {
+    let outlook = Outlook::get();
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let mut detour = Detour::default();
+    // The README begins with the demo job, whose results it may read.
+    detour.add(&fs::read_to_string(ROOT.join(JOB)).expect("the demo job"), outlook.folder.path());
+    let readme = fs::read_to_string(ROOT.join("README.md")).expect("README.md");
+    let failures = runtime().block_on(failures("README.md", &readme, &mut detour, folder.path()));
+    assert!(failures.is_empty(), "\n\n{}", failures.join("\n\n"));
+}
+
+#[test]
+fn the_examples_of_the_reference_run() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    // The table that the examples speak of, made of the demo.
+    let table = "```sql\nCREATE VIEW sales AS SELECT region, product, week, units AS litres, price, promo FROM 'parquet-samples/sales/'\n```\n";
+    let reference = fs::read_to_string(ROOT.join("udfs/docs/functions.md")).expect("the reference");
+    let document = format!("{table}{reference}");
+    let failures = runtime().block_on(failures(
+        "udfs/docs/functions.md",
+        &document,
+        &mut Detour::default(),
+        folder.path(),
+    ));
+    assert!(failures.is_empty(), "\n\n{}", failures.join("\n\n"));
+}
+
+#[test]
+fn the_jobs_of_the_demo_run() {
+    // The main one has run already, for those who look at what it wrote.
+    Outlook::get();
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    for entry in fs::read_dir(ROOT.join("parquet-samples")).expect("the demo") {
+        let path = entry.expect("an entry").path();
+        if path.extension().is_none_or(|extension| extension != "sql") || path.ends_with(JOB) {
+            continue;
+        }
+        let job = fs::read_to_string(&path).expect("a job");
+        let mut detour = Detour::default();
+        detour.add(&job, folder.path());
+        if let Err(failure) = runtime().block_on(run(&session_over_files(), &job, &detour)) {
+            panic!("{}: {failure}", path.display());
+        }
+    }
+}
+
+#[test]
+fn blocks_know_their_language_and_line() {
+    let document = "# A\n\n```sql\nSELECT 1;\n```\ntext\n```text\n| 1 |\n```\n";
+    let found = blocks(document);
+    assert_eq!(
+        found.iter().map(|b| (b.language.as_str(), b.line)).collect::<Vec<_>>(),
+        [("sql", 3), ("text", 7)]
+    );
+    assert_eq!(found[0].text, "SELECT 1;\n");
+}
+
+#[test]
+fn a_wrong_answer_and_a_broken_statement_are_found() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let document = "```sql\nSELECT 1 AS one;\n```\n\n```text\n| one |\n| 2   |\n```\n\n```sql\nSELECT 1;\nSELECT nothing;\n```\n\
+                    ```sql\nSELECT 3 AS three\n```\n```text\n+---+\n| three |\n+---+\n|     3 |\n```\n";
+    let found = runtime().block_on(failures("x.md", document, &mut Detour::default(), folder.path()));
+    assert_eq!(found.len(), 2, "{found:?}");
+    assert!(
+        found[0].starts_with("x.md, SQL block 1 (line 1): the document shows another answer"),
+        "{}",
+        found[0]
+    );
+    assert!(found[1].starts_with("x.md, SQL block 2 (line 10): statement 2: "), "{}", found[1]);
+}
