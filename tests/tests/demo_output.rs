@@ -3,6 +3,7 @@
 use std::collections::BTreeSet;
 use std::fs::{self, File};
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 use arrow::datatypes::{DataType, SchemaRef};
 use parquet::arrow::arrow_reader::ParquetRecordBatchReaderBuilder;
@@ -33,7 +34,7 @@ fn files(folder: &Path) -> Vec<(String, PathBuf)> {
 
 fn schema(file: &Path) -> SchemaRef {
     let file = File::open(file).expect("a file that the job wrote");
-    ParquetRecordBatchReaderBuilder::try_new(file).expect("Parquet").schema().clone()
+    Arc::clone(ParquetRecordBatchReaderBuilder::try_new(file).expect("Parquet").schema())
 }
 
 #[test]

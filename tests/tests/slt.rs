@@ -46,8 +46,9 @@ fn every_record_holds() {
         _ => false,
     };
     let failures = Mutex::new(Vec::new());
+    let workers = if complete { 1 } else { WORKERS };
     thread::scope(|scope| {
-        for _ in 0..if complete { 1 } else { WORKERS } {
+        for _ in 0..workers {
             scope.spawn(|| {
                 let next = || files.lock().unwrap_or_else(PoisonError::into_inner).pop_front();
                 while let Some(file) = next() {
@@ -70,13 +71,10 @@ fn every_status_has_a_record() {
     let records = fs::read_to_string(support::ROOT.join("tests/slt/troubles.slt")).expect("the records");
     let answers = records.split("\n----\n").skip(1).collect::<Vec<_>>();
     for status in stillwell::statuses() {
-        let shown = |answer: &&str| {
-            answer.lines().take_while(|line| !line.is_empty()).any(|line| line.contains(status))
-        };
-        assert!(
-            answers.iter().any(|answer| shown(&answer)),
-            "no record of slt/troubles.slt answers '{status}'"
-        );
+        // A line begins with the depot, which may be named after its status.
+        let says = |line: &str| line.strip_prefix(status).unwrap_or(line).contains(status);
+        let shown = answers.iter().any(|answer| answer.lines().take_while(|line| !line.is_empty()).any(says));
+        assert!(shown, "no record of slt/troubles.slt answers '{status}'");
     }
 }
 

@@ -2,7 +2,7 @@
 
 use std::env;
 use std::path::{Path, PathBuf};
-use std::sync::LazyLock;
+use std::sync::{Arc, LazyLock};
 
 use arrow::array::{Array, AsArray, RecordBatch};
 use arrow::compute::{cast, concat_batches};
@@ -38,7 +38,7 @@ pub(crate) fn session_over_files() -> SessionContext {
 /// The rows of a statement as one batch.
 pub(crate) async fn query(context: &SessionContext, sql: &str) -> Result<RecordBatch> {
     let frame = context.sql(sql).await?;
-    let schema = frame.schema().inner().clone();
+    let schema = Arc::clone(frame.schema().inner());
     let batches = frame.collect().await?;
     let schema = batches.first().map_or(schema, RecordBatch::schema);
     Ok(concat_batches(&schema, &batches)?)

@@ -5,8 +5,8 @@
 //! to write to:
 //!
 //! 1. a hidden folder beside the target, on the same file system (`.outlook.stillwell-Xy3k9Q`), holds the new
-//!    content while the statement runs; readers of the target see the old content, and so does the statement
-//!    itself, which may read what it replaces;
+//!    content while the statement runs; readers of the target see the old content. A statement that reads what it
+//!    would replace is refused (`sources`): its source would be gone;
 //! 2. when the statement has succeeded, the content is given stable names (`part_names`), flushed to the disk
 //!    (`disk`) and put in the target's place by a rename (`swap`); an existing folder is replaced whole, and only if it
 //!    holds nothing but files of the format that is written (`contents`);
@@ -21,6 +21,7 @@ mod contents;
 mod disk;
 mod part_names;
 mod plain_columns;
+mod sources;
 mod staging;
 mod swap;
 mod target;
@@ -35,7 +36,7 @@ pub(crate) use staging::{Staging, clear_leftovers, remove_all_unfinished};
 pub(crate) use target::{Kind, Target};
 
 use crate::errors;
-use crate::exit::Outcome;
+use crate::exit::{Failure, Outcome};
 
 /// What a statement has written.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -99,6 +100,7 @@ fn stage(copy: CopyTo, keeps_keys: bool) -> Outcome<(CopyTo, Copy)> {
     let Some(target) = Target::of_copy(&copy)? else {
         return Ok((copy, Copy { target: shown, staging: None }));
     };
+    sources::refuse(&copy.input, &target)?;
     let mut copy = plain_columns::simplify(copy, keeps_keys).map_err(|error| errors::failure(&error))?;
     let staging = Staging::open(target)?;
     copy.output_url = staging.url()?;
@@ -122,6 +124,12 @@ impl Prepared {
         };
         let kind = staging.kind();
         let schema = copied_schema(&self.plan);
+        if rows == Some(0) && kind == Kind::Folder && schema.is_none() && staging.replaces_files() {
+            return Err(Failure::failed(format!(
+                "the statement gave no rows, and an empty result would have emptied '{target}'; it was left as it is. \
+                 Look at the source, or remove the folder yourself"
+            )));
+        }
         let files = staging.put_in_place(schema.as_ref())?;
         Ok(Some(Written { target, kind: Some(kind), rows, files: Some(files) }))
     }

@@ -96,6 +96,11 @@ impl Staging {
         self.target.kind
     }
 
+    /// True when files stand in the target's place.
+    pub(super) fn replaces_files(&self) -> bool {
+        Tree::at(&self.target.path).is_ok_and(|tree| !tree.files.is_empty())
+    }
+
     /// Where the new content grows.
     pub(crate) fn content(&self) -> &Path {
         &self.content

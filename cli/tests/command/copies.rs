@@ -25,12 +25,26 @@ fn a_job_that_runs_twice_leaves_the_same_files() {
 }
 
 #[test]
-fn a_copy_may_read_what_it_replaces() {
+fn a_copy_must_not_replace_what_it_reads() {
     let place = Place::new();
     assert_eq!(place.run("COPY (SELECT 1 AS n) TO 'n/' STORED AS PARQUET").code, Some(0));
-    let ran = place.run("COPY (SELECT n + 1 AS n FROM 'n/') TO 'n/' STORED AS PARQUET; SELECT n FROM 'n/';");
-    assert_eq!(ran.code, Some(0), "{}", ran.err);
-    assert!(ran.out.contains("| 2 |"), "{}", ran.out);
+    let before = place.files();
+    for job in [
+        "COPY (SELECT n + 1 AS n FROM 'n/') TO 'n/' STORED AS PARQUET",
+        "COPY (SELECT n FROM 'n/*.parquet') TO 'n/' STORED AS PARQUET",
+        "COPY (SELECT n FROM 'n/') TO 'n/below/' STORED AS PARQUET",
+        "CREATE EXTERNAL TABLE t STORED AS PARQUET LOCATION 'n/'; CREATE VIEW v AS SELECT n FROM t;
+         COPY (SELECT 1 AS n WHERE EXISTS (SELECT 1 FROM v)) TO 'n/' STORED AS PARQUET",
+        "CREATE EXTERNAL TABLE t STORED AS PARQUET LOCATION 'n/';
+         COPY (SELECT * FROM forecast(data => (SELECT n FROM t), at => n, observed => n, horizon => 1))
+         TO 'n/' STORED AS PARQUET",
+    ] {
+        let ran = place.run(job);
+        assert_eq!(ran.code, Some(1), "{job}: {}", ran.err);
+        assert!(ran.err.contains("which the same statement reads"), "{}", ran.err);
+    }
+    assert_eq!(place.files(), before);
+    assert!(place.run("SELECT n FROM 'n/'").out.contains("| 1 |"));
 }
 
 #[test]
@@ -109,16 +123,19 @@ fn two_copies_to_one_place_are_a_slip() {
 }
 
 #[test]
-fn an_empty_result_replaces_the_old_rows() {
+fn an_empty_result_never_leaves_nothing() {
     let place = Place::new();
     let copy = |condition: &str| {
         format!("COPY (SELECT 1 AS a WHERE {condition}) TO 'flat/' STORED AS PARQUET;
                  COPY (SELECT 1 AS a, 2 AS b WHERE {condition}) TO 'parts/' STORED AS PARQUET PARTITIONED BY (b);")
     };
     assert_eq!(place.run(&copy("true")).code, Some(0));
-    assert_eq!(place.run(&copy("false")).code, Some(0));
-    assert_eq!(place.files(), ["flat/part-0.parquet", "parts/"]);
+    let ran = place.run(&copy("false"));
+    // An empty file still has its columns; an empty set of folders would have nothing, so the old ones stay.
+    assert_eq!(ran.code, Some(1), "{}", ran.err);
+    assert!(ran.err.contains("gave no rows"), "{}", ran.err);
     assert!(place.rows("SELECT a FROM 'flat/'").is_empty());
+    assert_eq!(place.files(), ["flat/part-0.parquet", "parts/b=2/part-0.parquet"]);
 }
 
 #[test]

@@ -7,7 +7,7 @@
 //!   spread-versus-level plot, Tukey 1977, *Exploratory Data Analysis*, ch. 5; slope b suggests the power 1 - b).
 //! * **season**: a candidate period stays when at least three full periods are observed and, once the moving average over a
 //!   period is taken off, the autocorrelation at that lag is above its one-sided 95 % bound under no season (Bartlett 1946,
-//!   *JRSS Suppl.* 8).
+//!   *JRSS Suppl.* 8), and every step of the period is observed at least twice.
 //! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, a quarter of the period
 //!   (rounded up) of them up to a period of 24, otherwise 3 (common practice: the first few carry a yearly pattern).
 //! * **trend**: `damped` from 16 observed points on (the safe default of the trade, common practice), else `local level`.
@@ -353,7 +353,7 @@ fn spread_follows_level(observed: &[f64], period: Option<f64>) -> bool {
 fn season_speaks(values: &[f64], period: f64) -> bool {
     let lag = period.round() as usize;
     let seen = values.iter().filter(|v| !v.is_nan()).count() as f64;
-    if lag < 2 || seen < 3.0 * period || values.len() < 3 * lag {
+    if lag < 2 || seen < 3.0 * period || values.len() < 3 * lag || !every_step_is_seen(values, lag) {
         return false;
     }
     let rest = without_moving_average(values, lag);
@@ -365,6 +365,12 @@ fn season_speaks(values: &[f64], period: f64) -> bool {
     let short: f64 = (1..=(lag / 4).max(1)).map(|k| (mean_product(&rest, k).0 / variance).powi(2)).sum();
     let bound = normal_quantile(0.95) * ((1.0 + 2.0 * short) / pairs.max(1.0)).sqrt();
     pairs >= 3.0 && at_period / variance > bound
+}
+
+/// Each step of the period is observed at least twice. Working days have no weekly pattern that the data could show: two
+/// of its seven steps are never there.
+fn every_step_is_seen(values: &[f64], period: usize) -> bool {
+    (0..period).all(|phase| values.iter().skip(phase).step_by(period).filter(|v| !v.is_nan()).count() >= 2)
 }
 
 /// The series less its centred moving average over `period` points (half weights at the ends of an even one: classical

@@ -83,7 +83,7 @@ fn more_or_fewer_harmonic_counts_than_periods() {
 
 #[test]
 fn a_harmonic_count_of_none_or_too_many() {
-    refused(&with_harmonics(&[52.0], &[0]), "harmonics", &["between 1 and 60", "got 0", "dummy form"]);
+    refused(&with_harmonics(&[52.0], &[0]), "harmonics", &["between 1 and 60", "got 0", "default"]);
     refused(&with_harmonics(&[365.0], &[61]), "harmonics", &["between 1 and 60", "got 61"]);
     accepted(&with_harmonics(&[365.0], &[60]));
 }

@@ -57,7 +57,8 @@ impl Step {
             Self::Every(n) => match axis.unit_nanos().map(|unit| unit * i128::from(n)) {
                 Some(nanos) if nanos >= DAY => {
                     let days = nanos as f64 / DAY as f64;
-                    [7.0 / days, 365.25 / days]
+                    // Two decimals (52.18), so that the period as printed, and named, is the period as used.
+                    [7.0 / days, (36_525.0 / days).round() / 100.0]
                 }
                 Some(nanos) if nanos >= 60_000_000_000 => {
                     let steps = DAY as f64 / nanos as f64;

@@ -61,6 +61,19 @@ fn gaps_do_not_make_a_season() {
 }
 
 #[test]
+fn working_days_ask_for_no_weekly_season() {
+    let mut rng = ChaCha8Rng::seed_from_u64(9);
+    let mut values = series(&mut rng, 365, 7.0, 2.0, 0.1);
+    assert!(season_speaks(&values, 7.0));
+    for (t, v) in values.iter_mut().enumerate() {
+        if t % 7 >= 5 {
+            *v = f64::NAN;
+        }
+    }
+    assert!(!season_speaks(&values, 7.0));
+}
+
+#[test]
 fn a_spread_that_grows_with_the_level_asks_for_the_logarithm() {
     let mut rng = ChaCha8Rng::seed_from_u64(5);
     let mut normal = || -> f64 { StandardNormal.sample(&mut rng) };

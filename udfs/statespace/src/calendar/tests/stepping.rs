@@ -77,10 +77,10 @@ fn names_and_seasons() {
     let nanos = Axis::Ticks { per_second: 1_000_000_000 };
     let cases: [(Axis, Step, i64, &str, &[f64]); 24] = [
         (Axis::Days, Step::Every(1), first, "day", &[7.0, 365.25]),
-        (Axis::Days, Step::Every(2), first, "2 days", &[182.625]),
-        (Axis::Days, Step::Every(7), first, "week", &[365.25 / 7.0]),
-        (Axis::Days, Step::Every(14), first, "2 weeks", &[365.25 / 14.0]),
-        (Axis::Days, Step::Every(91), first, "13 weeks", &[365.25 / 91.0]),
+        (Axis::Days, Step::Every(2), first, "2 days", &[182.63]),
+        (Axis::Days, Step::Every(7), first, "week", &[52.18]),
+        (Axis::Days, Step::Every(14), first, "2 weeks", &[26.09]),
+        (Axis::Days, Step::Every(91), first, "13 weeks", &[4.01]),
         (Axis::Days, Step::Every(182), first, "26 weeks", &[]),
         (Axis::Days, Step::Months(1), first, "month", &[12.0]),
         (Axis::Days, Step::Months(1), first - 1, "month end", &[12.0]),
@@ -92,7 +92,7 @@ fn names_and_seasons() {
         (Axis::Days, Step::Months(12), first - 1, "year", &[]),
         (Axis::Days, Step::Months(12), day(2024, 2, 29), "year, at month end", &[]),
         (Axis::Days, Step::Months(24), first, "2 years", &[]),
-        (SECONDS, Step::Every(7 * DAY), first * DAY, "week", &[365.25 / 7.0]),
+        (SECONDS, Step::Every(7 * DAY), first * DAY, "week", &[52.18]),
         (SECONDS, Step::Every(3_600), first * DAY, "hour", &[24.0, 168.0]),
         (SECONDS, Step::Every(6 * 3_600), first * DAY, "6 hours", &[4.0, 28.0]),
         (SECONDS, Step::Every(12 * 3_600), first * DAY, "12 hours", &[2.0, 14.0]),
