@@ -2,7 +2,12 @@
 //!
 //! A block marked `sql` is run, all of a document in one session from the root of the repository; a block marked `text`
 //! straight after it is the answer of its last statement.
+//!
+//!     STILLWELL_README=complete cargo test -p stillwell-tests readme
+//!
+//! writes the answers into README.md instead of comparing: read the difference before keeping it.
 
+use std::env;
 use std::fs;
 use std::path::Path;
 
@@ -53,40 +58,66 @@ fn cells(table: &str) -> Vec<Vec<&str>> {
     rows.map(|row| row.trim_matches('|').split('|').map(str::trim).collect()).collect()
 }
 
-/// Holds an answer against what the document shows of it.
-fn compare(rows: &[RecordBatch], shown: &str) -> Result<(), String> {
+/// A block that shows something else than the answer.
+#[derive(Debug)]
+struct Stale {
+    /// Line of the opening fence of what is shown, and how many lines it has.
+    shown: (usize, usize),
+    answer: String,
+}
+
+/// Where a document fails.
+#[derive(Debug, Default)]
+struct Found {
+    failures: Vec<String>,
+    stale: Vec<Stale>,
+}
+
+/// The answer, if the document shows another one.
+fn other(rows: &[RecordBatch], shown: &str) -> Result<Option<String>, String> {
     let options = FormatOptions::default().with_null("NULL");
     let answer =
         pretty_format_batches_with_options(rows, &options).map_err(|error| error.to_string())?.to_string();
-    if cells(&answer) == cells(shown) {
-        Ok(())
-    } else {
-        Err(format!("the document shows another answer:\n{answer}"))
-    }
+    Ok((cells(&answer) != cells(shown)).then_some(answer))
 }
 
-/// Runs the SQL of a document; the failures, each with the number and line of its block.
-async fn failures(name: &str, document: &str, detour: &mut Detour, folder: &Path) -> Vec<String> {
+/// Runs the SQL of a document; what fails, each with the number and line of its block.
+async fn check(name: &str, document: &str, detour: &mut Detour, folder: &Path) -> Found {
     let context = session_over_files();
     let blocks = blocks(document);
-    let mut failures = Vec::new();
+    let mut found = Found::default();
     let mut number = 0;
     for (at, block) in blocks.iter().enumerate().filter(|(_, block)| block.language == "sql") {
         number += 1;
         detour.add(&block.text, folder);
-        let mut outcome = run(&context, &block.text, detour).await;
-        if let (Ok(rows), Some(next)) = (&outcome, blocks.get(at + 1))
-            && next.language == "text"
-            && let Err(failure) = compare(rows, &next.text)
-        {
-            outcome = Err(failure);
-        }
-        if let Err(failure) = outcome {
-            failures.push(format!("{name}, SQL block {number} (line {}): {failure}", block.line));
-        }
+        let shown = blocks.get(at + 1).filter(|next| next.language == "text");
+        let outcome = match (run(&context, &block.text, detour).await, shown) {
+            (Ok(rows), Some(shown)) => other(&rows, &shown.text).map(|answer| answer.zip(Some(shown))),
+            (outcome, _) => outcome.map(|_| None),
+        };
+        let failure = match outcome {
+            Ok(None) => continue,
+            Ok(Some((answer, shown))) => {
+                let failure = format!("the document shows another answer:\n{answer}");
+                found.stale.push(Stale { shown: (shown.line, shown.text.lines().count()), answer });
+                failure
+            }
+            Err(failure) => failure,
+        };
+        found.failures.push(format!("{name}, SQL block {number} (line {}): {failure}", block.line));
     }
     assert!(number > 0, "{name} has no block marked sql");
-    failures
+    found
+}
+
+/// The document with the answers in place of what it shows.
+fn completed(document: &str, stale: &[Stale]) -> String {
+    let mut lines = document.lines().map(str::to_string).collect::<Vec<_>>();
+    // From the end, so that the lines before keep their numbers.
+    for Stale { shown: (fence, count), answer } in stale.iter().rev() {
+        lines.splice(*fence..fence + count, answer.lines().map(str::to_string));
+    }
+    lines.join("\n") + "\n"
 }
 
 fn runtime() -> tokio::runtime::Runtime {
@@ -101,8 +132,13 @@ fn the_readme_says_what_the_program_does() {
     // The README begins with the demo job, whose results it may read.
     detour.add(&fs::read_to_string(ROOT.join(JOB)).expect("the demo job"), outlook.folder.path());
     let readme = fs::read_to_string(ROOT.join("README.md")).expect("README.md");
-    let failures = runtime().block_on(failures("README.md", &readme, &mut detour, folder.path()));
-    assert!(failures.is_empty(), "\n\n{}", failures.join("\n\n"));
+    let found = runtime().block_on(check("README.md", &readme, &mut detour, folder.path()));
+    if env::var("STILLWELL_README").is_ok_and(|word| word == "complete") {
+        fs::write(ROOT.join("README.md"), completed(&readme, &found.stale))
+            .expect("README.md can be written");
+        return;
+    }
+    assert!(found.failures.is_empty(), "\n\n{}", found.failures.join("\n\n"));
 }
 
 #[test]
@@ -112,13 +148,9 @@ fn the_examples_of_the_reference_run() {
     let table = "```sql\nCREATE VIEW sales AS SELECT region, product, week, units AS litres, price, promo FROM 'parquet-samples/sales/'\n```\n";
     let reference = fs::read_to_string(ROOT.join("udfs/docs/functions.md")).expect("the reference");
     let document = format!("{table}{reference}");
-    let failures = runtime().block_on(failures(
-        "udfs/docs/functions.md",
-        &document,
-        &mut Detour::default(),
-        folder.path(),
-    ));
-    assert!(failures.is_empty(), "\n\n{}", failures.join("\n\n"));
+    let found =
+        runtime().block_on(check("udfs/docs/functions.md", &document, &mut Detour::default(), folder.path()));
+    assert!(found.failures.is_empty(), "\n\n{}", found.failures.join("\n\n"));
 }
 
 #[test]
@@ -156,12 +188,11 @@ fn a_wrong_answer_and_a_broken_statement_are_found() {
     let folder = tempfile::tempdir().expect("a temporary folder");
     let document = "```sql\nSELECT 1 AS one;\n```\n\n```text\n| one |\n| 2   |\n```\n\n```sql\nSELECT 1;\nSELECT nothing;\n```\n\
                     ```sql\nSELECT 3 AS three\n```\n```text\n+---+\n| three |\n+---+\n|     3 |\n```\n";
-    let found = runtime().block_on(failures("x.md", document, &mut Detour::default(), folder.path()));
-    assert_eq!(found.len(), 2, "{found:?}");
-    assert!(
-        found[0].starts_with("x.md, SQL block 1 (line 1): the document shows another answer"),
-        "{}",
-        found[0]
-    );
-    assert!(found[1].starts_with("x.md, SQL block 2 (line 10): statement 2: "), "{}", found[1]);
+    let found = runtime().block_on(check("x.md", document, &mut Detour::default(), folder.path()));
+    let [first, second] = found.failures.as_slice() else { panic!("{found:?}") };
+    assert!(first.starts_with("x.md, SQL block 1 (line 1): the document shows another answer"), "{first}");
+    assert!(second.starts_with("x.md, SQL block 2 (line 10): statement 2: "), "{second}");
+    let now = completed(document, &found.stale);
+    assert_eq!(cells(&blocks(&now)[1].text), [["one"], ["1"]]);
+    assert_eq!(blocks(&now).len(), blocks(document).len());
 }

@@ -143,7 +143,7 @@ fn check_overlap(request: &Request, periods: &[f64]) -> Result<(), BadRequest> {
     }
     let structure = structure_of(request, Trend::None, periods);
     let frequencies = |season: &Season| -> Vec<f64> {
-        let count = season.harmonics.unwrap_or((season.period / 2.0).floor() as usize);
+        let count = season.harmonics.unwrap_or_else(|| (season.period / 2.0).floor() as usize);
         (1..=count).map(|j| j as f64 / season.period).collect()
     };
     for (i, a) in structure.seasons.iter().enumerate() {

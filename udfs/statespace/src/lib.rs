@@ -6,11 +6,11 @@
 //!
 //! The way through the crate follows the job:
 //!
-//! 1. [`Request`] says what is wanted; [`choose`] settles what was left to decide.
+//! 1. [`Request`] says what is wanted; `choose` settles what was left to decide.
 //! 2. [`structure`] turns the settled [`structure::Structure`] into a [`system::System`]
 //!    (`y_t = Z_t a_t + e_t`, `a_{t+1} = T a_t + n_t`), one component a file.
-//! 3. [`filter`] runs it forward with the diffuse elements as extra columns, [`smoother`] backward.
-//! 4. [`estimate`] climbs the likelihood with the [`score`] and the average information.
+//! 3. `filter` runs it forward with the diffuse elements as extra columns, `smoother` backward.
+//! 4. `estimate` climbs the likelihood with the `score` and the average information.
 //! 5. [`fit`] ties these together; a [`Fit`] answers with [`Components`], [`Forecast`], [`Diagnostics`].
 //!
 //! Sources, cited on the functions as DK, H and CK: Durbin & Koopman (2012), *Time Series Analysis by

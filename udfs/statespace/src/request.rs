@@ -25,7 +25,7 @@ pub enum SeasonRequest {
 /// Which scale to model on.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum TransformRequest {
-    /// Decide by the rule on [`crate::choose`].
+    /// Decide by the rule on `crate::choose`.
     Auto,
     /// The data as they are.
     None,

@@ -28,9 +28,10 @@ pub struct Components {
     pub effects: Vec<State>,
     /// Coefficient of each driver at each point (same order as `effects`), model scale.
     pub coefficients: Vec<State>,
-    /// Observed minus fitted (log: observed over fitted); NaN where missing. Includes an autoregression, if any.
+    /// Observed minus fitted (log: observed over fitted); NaN where missing.
     pub irregular: Vec<f64>,
-    /// The smoothed signal: what the series would show without its irregular.
+    /// The smoothed signal: what the series would show without its irregular. An autoregression, if any, is in it and has
+    /// no component of its own here.
     pub fitted: Vec<f64>,
     /// Interval of the signal at the coverage asked for.
     pub lower: Vec<f64>,

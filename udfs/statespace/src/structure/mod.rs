@@ -1,8 +1,8 @@
 //! The structures: what a user can ask for, and the component files that turn it into a model.
 //!
 //! Each component is one file that says its matrices, its parameters, its start and its source:
-//! [`trend`], [`season_dummy`], [`season_harmonic`], [`driver`], [`cycle`], [`autoregression`], [`irregular`].
-//! They fill an [`Assembly`](assembly::Assembly) one after another; the result is a [`Model`].
+//! `trend`, `season_dummy`, `season_harmonic`, `driver`, `cycle`, `autoregression`, `irregular`.
+//! They fill an `Assembly` one after another; the result is a [`Model`].
 
 pub(crate) mod assembly;
 mod autoregression;
