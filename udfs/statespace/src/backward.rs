@@ -9,6 +9,7 @@
 //! given `e` are `r - N B L^-T w` and `N + C C'` with `C = -N B L^-T`, `w ~ N(0, I)` (Woodbury on `N = (J^-1 + P)^-1`, J the
 //! information of the points to come). So `C` are the columns with which the pass goes on.
 
+use crate::buffer::refill;
 use crate::filter::{Data, Pass};
 use crate::system::System;
 
@@ -111,14 +112,10 @@ impl Cumulants {
         let (m, k, drivers) = (pass.m, pass.reduction.eliminated(), pass.width(pass.n) - 1);
         let b = &pass.bridge;
         let Self { r, n, crossing, nb, .. } = self;
-        let resize = |v: &mut Vec<f64>, len: usize| {
-            v.clear();
-            v.resize(len, 0.0);
-        };
-        resize(nb, m * k);
-        resize(&mut crossing.mean, k);
-        resize(&mut crossing.along, k * drivers);
-        resize(&mut crossing.lower, k * k);
+        refill(nb, m * k);
+        refill(&mut crossing.mean, k);
+        refill(&mut crossing.along, k * drivers);
+        refill(&mut crossing.lower, k * k);
         crossing.states = k;
         let narrow = 1 + drivers;
         for i in 0..m {
@@ -195,8 +192,7 @@ pub(crate) fn run(
         (&mut cumulants.u, 1 + pass.elements),
         (&mut cumulants.kn, m),
     ] {
-        buffer.clear();
-        buffer.resize(len, 0.0);
+        refill(buffer, len);
     }
     for t in (0..pass.n).rev() {
         if t + 1 == pass.collapsed_at {

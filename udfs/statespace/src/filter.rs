@@ -11,6 +11,7 @@
 //! `P` their posterior covariance, and the ordinary filter goes on (de Jong 1991, section 5; DK 5.7.3). The
 //! columns of constant drivers stay open to the end, so that a driver that starts late needs no special case.
 
+use crate::buffer::refill;
 use crate::reduction::Reduction;
 use crate::system::System;
 
@@ -303,10 +304,6 @@ impl Pass {
         let width = d + 1;
         (self.n, self.m, self.elements, self.observed) = (n, m, d, 0);
         self.collapsed_at = n + 1;
-        let refill = |v: &mut Vec<f64>, len: usize| {
-            v.clear();
-            v.resize(len, 0.0);
-        };
         refill(&mut self.a, m * width);
         refill(&mut self.p, m * m);
         refill(&mut self.pz, m);

@@ -9,6 +9,7 @@
 //! `r_{t-1} = T' r_t + Z' u_t` and `x_{t+1} = T x_t + Q r_t` that make up `V u`. `P q_j` is one vector pass of filter and
 //! smoother with the gains at hand. No covariance recursion is run again.
 
+use crate::buffer::refill;
 use crate::filter::{Data, Pass};
 use crate::score::Paths;
 use crate::structure::{Effect, Model};
@@ -41,10 +42,6 @@ impl Information {
         paths: &Paths,
     ) {
         let (n, m, p) = (pass.n, pass.m, model.effects.len());
-        let refill = |v: &mut Vec<f64>, len: usize| {
-            v.clear();
-            v.resize(len, 0.0);
-        };
         refill(&mut self.matrix, p * p);
         refill(&mut self.responses, p * n);
         refill(&mut self.projected, n);

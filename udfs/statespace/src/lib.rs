@@ -18,6 +18,7 @@
 //! Kalman Filter*; Commandeur & Koopman (2007), *An Introduction to State Space Time Series Analysis*.
 
 mod backward;
+mod buffer;
 pub mod calendar;
 mod choose;
 mod components;

@@ -7,6 +7,7 @@
 //! diffuse elements correct each second moment.
 
 use crate::backward::{self, Basis, Cumulants, NearlySingular, Visitor};
+use crate::buffer::refill;
 use crate::filter::{Data, Pass};
 use crate::structure::Model;
 use crate::system::System;
@@ -60,10 +61,6 @@ impl Score {
         pass: &Pass,
     ) -> Result<(), NearlySingular> {
         let (n, m, width) = (pass.n, pass.m, pass.elements + 1);
-        let refill = |v: &mut Vec<f64>, len: usize| {
-            v.clear();
-            v.resize(len, 0.0);
-        };
         refill(&mut self.paths.r, n * m);
         refill(&mut self.paths.u, n);
         let moments = &mut self.moments;
