@@ -5,9 +5,10 @@
 //! logits). No optimiser crate offers scoring with a caller's own curvature and bounds that are part of the answer, which is why
 //! this one is here.
 //!
-//! **Zero variances.** A variance whose best value is zero would make log variances creep for ever. As soon as one is small
-//! and still falling, zero itself is tried: where the likelihood is not lower there, the variance is exactly zero and leaves the
-//! free set. It comes back if the score at zero later points upward.
+//! **Limits.** A variance whose best value is zero would make its logarithm creep for ever, and so would a damping or a period whose
+//! best value is the end of its range. As soon as one is near its limit and still on the way, the limit itself is tried: where the
+//! likelihood is not lower there, the parameter is held there, exactly, and leaves the free set. It comes back if the score later
+//! points inward. A damping is tried at its limit with the spread of its component, variance / (1 - damping^2), left as it is.
 
 use nalgebra::{DMatrix, DVector};
 
@@ -19,7 +20,7 @@ use crate::structure::Link;
 /// Predicted gain in log-likelihood below which one more step ends the climb. The step is taken: what it leaves
 /// behind is a small share of this.
 const LAST_GAIN: f64 = 1e-7;
-/// Gain that a zero variance must promise to be freed again.
+/// Gain that a parameter held at its limit must promise to be freed again.
 const REOPENING_GAIN: f64 = 1e-8;
 /// Most evaluations of one climb.
 const MOST: usize = 120;
@@ -27,6 +28,8 @@ const MOST: usize = 120;
 const STRIDE: f64 = 3.0;
 /// A variance below this share of the largest one is tried at zero when it is still falling.
 const SMALL: f64 = 1e-3;
+/// A parameter with two ends is tried at the one it moves to when this share of its range is left.
+const NEAR: f64 = 0.03;
 
 /// The result of an estimation.
 #[derive(Debug, Clone, PartialEq)]
@@ -87,9 +90,11 @@ pub(crate) fn maximise(
 struct Climb {
     links: Vec<Link>,
     free: Vec<bool>,
-    /// Free variances that sit at exactly zero.
-    zero: Vec<bool>,
-    /// Value below which zero is tried (again) for each variance.
+    /// What a damping's variance is scaled with when the damping moves: index of the variance.
+    spread_of: Vec<Option<usize>>,
+    /// Free parameters that are held at a limit: variances at exactly zero, the others at an end of their range.
+    held: Vec<bool>,
+    /// Distance below which the limit is tried (again): a variance's own value, the share of the range that is left.
     try_below: Vec<f64>,
     values: Vec<f64>,
     log_likelihood: f64,
@@ -108,8 +113,9 @@ impl Climb {
         let p = values.len();
         Ok(Self {
             links: objective.model.parameters().iter().map(|s| s.link).collect(),
+            spread_of: (0..p).map(|i| objective.model.variance_of_damping(i)).collect(),
             free: known.iter().map(Option::is_none).collect(),
-            zero: vec![false; p],
+            held: vec![false; p],
             try_below: vec![f64::INFINITY; p],
             values,
             log_likelihood,
@@ -123,7 +129,7 @@ impl Climb {
         let first = objective.evaluations;
         let mut lambda = 1e-3;
         while objective.evaluations - first < MOST {
-            if self.try_zeros(objective) {
+            if self.try_limits(objective) {
                 continue;
             }
             let Some((step, gain)) = self.step(&mut lambda) else {
@@ -180,7 +186,7 @@ impl Climb {
     }
 
     fn moves(&self, i: usize) -> bool {
-        self.free[i] && !self.zero[i]
+        self.free[i] && !self.held[i]
     }
 
     fn accept(&mut self, objective: &Objective<'_>, values: Vec<f64>, log_likelihood: f64) {
@@ -229,49 +235,65 @@ impl Climb {
         }
     }
 
-    /// Tries zero for the variances that are small and falling; true when something changed.
-    fn try_zeros(&mut self, objective: &mut Objective<'_>) -> bool {
+    /// The limit that parameter `i` is near and still moves to, and how far away it is (see `try_below`).
+    fn limit(&self, i: usize, largest: f64) -> Option<(f64, f64)> {
+        let (value, slope) = (self.values[i], self.gradient[i]);
+        match self.links[i] {
+            Link::Variance => (slope < 0.0 && value < SMALL * largest).then_some((0.0, value)),
+            Link::Between { low, high } => {
+                let above = (value - low) / (high - low);
+                if slope > 0.0 && 1.0 - above < NEAR {
+                    Some((high, 1.0 - above))
+                } else {
+                    (slope < 0.0 && above < NEAR).then_some((low, above))
+                }
+            }
+            Link::Free => None,
+        }
+    }
+
+    /// Tries the limits of the parameters that are near them and still on the way; true when something changed.
+    fn try_limits(&mut self, objective: &mut Objective<'_>) -> bool {
         let largest = (0..self.values.len())
             .filter(|&i| self.links[i] == Link::Variance)
             .fold(0.0_f64, |a, i| a.max(self.values[i]));
-        let small: Vec<usize> = (0..self.values.len())
-            .filter(|&i| {
-                self.links[i] == Link::Variance
-                    && self.moves(i)
-                    && self.gradient[i] < 0.0
-                    && self.values[i] < SMALL * largest
-                    && self.values[i] < self.try_below[i]
-            })
+        let near: Vec<(usize, f64, f64)> = (0..self.values.len())
+            .filter(|&i| self.moves(i))
+            .filter_map(|i| self.limit(i, largest).map(|(at, distance)| (i, at, distance)))
+            .filter(|&(i, _, distance)| distance < self.try_below[i])
             .collect();
-        if small.is_empty() {
+        if near.is_empty() {
             return false;
         }
-        if self.try_zero(objective, &small) {
+        if self.try_limit(objective, &near) {
             return true;
         }
-        if small.len() > 1 {
-            for &i in &small {
-                if self.try_zero(objective, &[i]) {
+        if near.len() > 1 {
+            for one in &near {
+                if self.try_limit(objective, &[*one]) {
                     return true;
                 }
             }
         }
-        for i in small {
-            self.try_below[i] = self.values[i] * 1e-2;
+        for (i, _, distance) in near {
+            self.try_below[i] = distance * if self.links[i] == Link::Variance { 1e-2 } else { 0.2 };
         }
         false
     }
 
-    fn try_zero(&mut self, objective: &mut Objective<'_>, which: &[usize]) -> bool {
+    fn try_limit(&mut self, objective: &mut Objective<'_>, which: &[(usize, f64, f64)]) -> bool {
         let mut values = self.values.clone();
-        for &i in which {
-            values[i] = 0.0;
+        for &(i, at, _) in which {
+            if let Some(variance) = self.spread_of[i].filter(|&v| self.moves(v)) {
+                values[variance] *= (1.0 - at * at) / (1.0 - values[i] * values[i]);
+            }
+            values[i] = at;
         }
         match objective.full(&values) {
             Ok(value) if value.log_likelihood >= self.log_likelihood - 1e-10 => {
                 self.accept(objective, values, value.log_likelihood);
-                for &i in which {
-                    self.zero[i] = true;
+                for &(i, ..) in which {
+                    self.held[i] = true;
                 }
                 true
             }
@@ -279,21 +301,31 @@ impl Climb {
         }
     }
 
-    /// Frees zero variances whose score points upward by enough to matter; true when there was one.
+    /// Frees held parameters whose score points inward by enough to matter; true when there was one.
     fn reopen(&mut self) -> bool {
         let p = self.values.len();
         let mut any = false;
         for i in 0..p {
-            if self.zero[i] && self.gradient[i] > 0.0 {
-                let curvature = self.information[i * p + i];
-                let gain = 0.5 * self.gradient[i] * self.gradient[i] / curvature;
-                if gain > REOPENING_GAIN && curvature > 0.0 {
-                    self.zero[i] = false;
-                    self.values[i] = self.gradient[i] / curvature;
-                    self.try_below[i] = self.values[i] * 1e-4;
-                    any = true;
-                }
+            let (slope, curvature) = (self.gradient[i], self.information[i * p + i]);
+            let gain = 0.5 * slope * slope / curvature;
+            if !(self.held[i] && gain > REOPENING_GAIN && curvature > 0.0) {
+                continue;
             }
+            let value = self.values[i] + slope / curvature;
+            match self.links[i] {
+                Link::Variance if slope > 0.0 => {
+                    self.values[i] = value;
+                    self.try_below[i] = value * 1e-4;
+                }
+                Link::Between { low, high } if (self.values[i] == high) == (slope < 0.0) => {
+                    let inside = 0.5 * NEAR * (high - low);
+                    self.values[i] = value.clamp(low + inside, high - inside);
+                    self.try_below[i] = 0.2 * NEAR;
+                }
+                _ => continue,
+            }
+            self.held[i] = false;
+            any = true;
         }
         any
     }

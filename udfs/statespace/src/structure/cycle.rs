@@ -4,14 +4,15 @@
 //! Stationary start: both states `N(0, cycle / (1 - damping^2))`, uncorrelated. Parameters `cycle`, `cycle_damping` in
 //! (0, 1), `cycle_period` between the bounds asked for.
 
-use super::Cycle;
 use super::assembly::{Assembly, Load, Shape, StateSpec};
 use super::model::{Effect, Link, NotStationary, Role};
+use super::{Cycle, MOST_DAMPING};
 use crate::system::{Op, ProperStart};
 
 pub(super) fn add(assembly: &mut Assembly, bounds: Cycle) {
     let variance = assembly.parameter("cycle", Role::Cycle, Link::Variance);
-    let damping = assembly.parameter("cycle_damping", Role::Cycle, Link::Between { low: 0.0, high: 1.0 });
+    let damping =
+        assembly.parameter("cycle_damping", Role::Cycle, Link::Between { low: 0.0, high: MOST_DAMPING });
     let period = assembly.parameter(
         "cycle_period",
         Role::Cycle,

@@ -18,6 +18,10 @@ pub(crate) use autoregression::MAX_ORDER;
 pub(crate) use model::Effect;
 pub use model::{Link, Model, ParameterSpec, Role};
 
+/// Largest damping that estimation considers. A damped slope or cycle comes as near to an undamped one as it likes without being one;
+/// without an end of the range a straight series would make its estimate creep for ever.
+pub(crate) const MOST_DAMPING: f64 = 0.9999;
+
 /// Form of the trend (H 2.3, 6.1; DK 3.2).
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
 pub enum Trend {

@@ -29,7 +29,7 @@ pub enum Role {
 pub enum Link {
     /// A variance: not negative, may be exactly zero; logarithm inside.
     Variance,
-    /// Between two bounds, exclusive; logit inside.
+    /// Between two bounds, both allowed; logit inside.
     Between {
         /// Lower bound.
         low: f64,
@@ -112,6 +112,16 @@ impl Model {
     /// Diffuse elements d: non-stationary states and constant driver coefficients.
     pub fn diffuse_elements(&self) -> usize {
         self.assembly.states.iter().filter(|s| s.diffuse).count() + self.drivers
+    }
+
+    /// The variance of the component that parameter `i` damps; `None` where it is not a damping.
+    pub(crate) fn variance_of_damping(&self, i: usize) -> Option<usize> {
+        self.assembly.shapes.iter().find_map(|placed| match placed.shape {
+            Shape::DampedSlope { damping, variance } | Shape::Cycle { damping, variance, .. } => {
+                (damping == i).then_some(variance)
+            }
+            Shape::Autoregression { .. } => None,
+        })
     }
 
     /// True when some parameter is not a variance.

@@ -5,9 +5,9 @@
 //! smooth trend (integrated random walk) no level variance. The start is diffuse, except that the slope of a
 //! damped trend starts from its stationary distribution `N(0, slope / (1 - damping^2))` (H 2.3.2).
 
-use super::Trend;
 use super::assembly::{Assembly, Load, Shape, StateSpec};
 use super::model::{Effect, Link, NotStationary, Role};
+use super::{MOST_DAMPING, Trend};
 use crate::system::{Op, ProperStart};
 
 pub(super) fn add(assembly: &mut Assembly, trend: Trend) {
@@ -38,7 +38,8 @@ pub(super) fn add(assembly: &mut Assembly, trend: Trend) {
     };
     let block = assembly.block(Op::Trend { damping: 1.0 }, [level, slope]);
     if let (Trend::Damped, Some(variance)) = (trend, slope_variance) {
-        let damping = assembly.parameter("slope_damping", Role::Slope, Link::Between { low: 0.0, high: 1.0 });
+        let damping =
+            assembly.parameter("slope_damping", Role::Slope, Link::Between { low: 0.0, high: MOST_DAMPING });
         assembly.shape(block, Shape::DampedSlope { damping, variance });
     }
 }
