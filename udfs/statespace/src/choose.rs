@@ -16,6 +16,7 @@ use crate::error::{BadRequest, Trouble};
 use crate::quantile::normal_quantile;
 use crate::request::{Request, SeasonRequest, TransformRequest};
 use crate::structure::{Cycle, Season, Structure, Trend, period_label};
+use crate::transform::{LARGEST_POWER, Transform};
 
 /// Longest whole period that is modelled by dummies when nothing is said.
 const LONGEST_DUMMY: f64 = 13.0;
@@ -42,6 +43,14 @@ const PARAMETERS: [&str; 9] = [
 /// # Errors
 /// Names the argument, what is wrong and what would be right.
 pub fn check(request: &Request) -> Result<(), BadRequest> {
+    if let TransformRequest::BoxCox(Some(power)) = request.transform
+        && !(0.0..=LARGEST_POWER).contains(&power)
+    {
+        return Err(BadRequest::new(
+            "transform",
+            format!("a Box-Cox power lies between 0 (the logarithm) and {LARGEST_POWER}, got {power}"),
+        ));
+    }
     let periods = match &request.season {
         SeasonRequest::Auto(periods) | SeasonRequest::Given(periods) => periods,
     };
@@ -246,7 +255,9 @@ fn nearest(name: &str, names: &[String]) -> String {
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Choice {
     pub(crate) structure: Structure,
-    pub(crate) log: bool,
+    pub(crate) transform: Transform,
+    /// The power of the transform is still to be estimated; what depends on the scale was settled on that of square roots.
+    pub(crate) power_open: bool,
 }
 
 /// Settles the request for one series.
@@ -254,22 +265,25 @@ pub(crate) struct Choice {
 /// # Errors
 /// When the series cannot carry what was asked for.
 pub(crate) fn choose(request: &Request, observed: &[f64]) -> Result<Choice, Trouble> {
-    let log = match request.transform {
-        TransformRequest::None => false,
-        TransformRequest::Log => {
-            if let Some(index) = observed.iter().position(|v| *v <= 0.0) {
-                return Err(Trouble::NotPositive { index, value: observed[index] });
-            }
-            true
-        }
+    let transform = match request.transform {
+        TransformRequest::None => Transform::None,
+        TransformRequest::Log => Transform::Log,
+        TransformRequest::Log1p => Transform::Log1p,
+        TransformRequest::BoxCox(power) => Transform::BoxCox(power.unwrap_or(0.5)),
         TransformRequest::Auto => {
             let period = match &request.season {
                 SeasonRequest::Auto(p) | SeasonRequest::Given(p) => p.first().copied(),
             };
-            spread_follows_level(observed, period)
+            if spread_follows_level(observed, period) { Transform::Log } else { Transform::None }
         }
     };
-    let scaled: Vec<f64> = if log { observed.iter().map(|v| v.ln()).collect() } else { observed.to_vec() };
+    let power_open = request.transform == TransformRequest::BoxCox(None);
+    // An open power may come out as 0, the logarithm: the data must allow that.
+    let strictest = if power_open { Transform::Log } else { transform };
+    if let Some(index) = strictest.refuses(observed) {
+        return Err(Trouble::NotPositive { index, value: observed[index], transform: strictest });
+    }
+    let scaled: Vec<f64> = observed.iter().map(|&v| transform.forward(v)).collect();
     let periods = match &request.season {
         SeasonRequest::Given(periods) => periods.clone(),
         SeasonRequest::Auto(candidates) => {
@@ -278,7 +292,7 @@ pub(crate) fn choose(request: &Request, observed: &[f64]) -> Result<Choice, Trou
     };
     let count = observed.iter().filter(|v| !v.is_nan()).count();
     let trend = request.trend.unwrap_or(if count >= SLOPE_FROM { Trend::Damped } else { Trend::LocalLevel });
-    Ok(Choice { structure: structure_of(request, trend, &periods), log })
+    Ok(Choice { structure: structure_of(request, trend, &periods), transform, power_open })
 }
 
 fn structure_of(request: &Request, trend: Trend, periods: &[f64]) -> Structure {

@@ -2,12 +2,13 @@
 
 use crate::error::Trouble;
 use crate::fit::Fit;
-use crate::forecast::Step;
+use crate::forecast::{Path, Step};
 use crate::quantile::normal_quantile;
 use crate::results::{Components, Forecast, State};
 use crate::smoother::{Functional, Smoothed};
 use crate::structure::Role;
-use crate::transform::{self, Unit};
+use crate::totals::Totals;
+use crate::transform::{Transform, Unit};
 
 /// Longest horizon: the totals of a log model take time that grows with its square.
 pub const LONGEST_HORIZON: usize = 10_000;
@@ -24,36 +25,61 @@ enum Part {
     Signal,
 }
 
-/// Running sum of lognormal steps: interval of the lognormal with its mean and variance.
-struct LogTotals {
-    unit: f64,
-    shift: f64,
-    expected: Vec<f64>,
-    total: f64,
-    /// Variance of the total over its squared mean, which stays in range where the variance does not.
-    relative: f64,
-    z: f64,
-    ends: Vec<(f64, f64)>,
+/// What takes a forecast from the working scale to the data's.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct ForecastScale {
+    pub(crate) transform: Transform,
+    pub(crate) unit: f64,
+    pub(crate) shift: f64,
+    /// Irregular variance, working scale.
+    pub(crate) h: f64,
+    /// Normal quantile of the intervals' upper end.
+    pub(crate) z: f64,
 }
 
-impl LogTotals {
-    /// Adds a step: `Cov(exp x, exp y) = E exp x E exp y (exp(cov) - 1)`, summed over the steps before.
-    fn add(&mut self, step: &Step<'_>) {
-        let square = self.unit * self.unit;
-        let (expected, _) = transform::lognormal(step.mean * self.unit + self.shift, step.variance * square);
-        let before = self.total;
-        self.total += expected;
-        let total = self.total;
-        let share = |part: f64| if total > 0.0 { part / total } else { 0.0 };
-        let mut relative = self.relative * share(before).powi(2);
-        for (earlier, c) in self.expected.iter().zip(step.with_earlier) {
-            relative += 2.0 * share(*earlier) * share(expected) * (c * square).min(700.0).exp_m1();
+impl ForecastScale {
+    /// The forecast that `ahead` runs, all but its parts, and the path it came from. `ahead` gets the listener for the joint covariance, where one is needed.
+    ///
+    /// # Errors
+    /// [`Trouble::Numerical`] when the way back overflows.
+    pub(crate) fn forecast(
+        &self,
+        horizon: usize,
+        ahead: impl FnOnce(Option<&mut dyn FnMut(Step<'_>)>) -> Path,
+    ) -> Result<(Forecast, Path), Trouble> {
+        let Self { transform, unit, shift, h, z } = *self;
+        let transformed = transform != Transform::None;
+        let mut totals = Totals::new(transform, unit, shift, z);
+        let mut add = |step: Step<'_>| totals.add(&step);
+        let path = ahead(if transformed { Some(&mut add) } else { None });
+        let mut out = Forecast::default();
+        let mut total = 0.0;
+        for step in 0..horizon {
+            let m = path.signal.mean[step] * unit + shift;
+            let v = (path.signal.variance[step] + h) * unit * unit;
+            let s = v.sqrt();
+            if !transform.in_range(m, v, z) {
+                return Err(Trouble::Numerical {
+                    what: "on the transformed scale the forecast leaves the range of double precision within the horizon; use transform => 'none', a damped trend, or a shorter horizon",
+                });
+            }
+            let (expected, std_error) = transform.moments(m, v);
+            out.expected.push(expected);
+            out.std_error.push(std_error);
+            out.lower.push(transform.back(m - z * s));
+            out.upper.push(transform.back(m + z * s));
+            total += expected;
+            out.total_expected.push(total);
+            let (low, high) = if transformed {
+                totals.ends[step]
+            } else {
+                let s = path.sum_variance[step].sqrt() * unit;
+                (total - z * s, total + z * s)
+            };
+            out.total_lower.push(low);
+            out.total_upper.push(high);
         }
-        relative += share(expected).powi(2) * (step.variance * square).min(700.0).exp_m1();
-        self.relative = relative;
-        self.expected.push(expected);
-        let (m, v) = transform::lognormal_with_moments(total, relative);
-        self.ends.push(((m - self.z * v.sqrt()).exp(), (m + self.z * v.sqrt()).exp()));
+        Ok((out, path))
     }
 }
 
@@ -72,17 +98,14 @@ impl Fit {
             let signal = &smoothing.functionals[signal];
             for t in 0..n {
                 let (m, v) = (signal.mean[t], signal.variance[t]);
-                let (value, low, high) = if self.unknown[t] {
-                    (f64::NAN, f64::NAN, f64::NAN)
-                } else {
-                    let (m, s) = (m * self.scaling.unit + self.scaling.shift, v.sqrt() * self.scaling.unit);
-                    (self.back(m), self.back(m - z * s), self.back(m + z * s))
-                };
-                out.fitted.push(value);
-                out.lower.push(low);
-                out.upper.push(high);
-                let observed = self.back(self.modelled[t]);
-                out.irregular.push(if self.log { observed / value } else { observed - value });
+                let (m, s) = (m * self.scaling.unit + self.scaling.shift, v.sqrt() * self.scaling.unit);
+                let back = |x| if self.unknown[t] { f64::NAN } else { self.transform.back(x) };
+                let (x, fitted) = (self.modelled[t], back(m));
+                out.fitted.push(fitted);
+                out.lower.push(back(m - z * s));
+                out.upper.push(back(m + z * s));
+                let m = if self.unknown[t] { f64::NAN } else { m };
+                out.irregular.push(self.transform.irregular((self.transform.back(x), fitted), (x, m)));
             }
         }
         out.outlier_t = smoothing.outlier_t;
@@ -104,47 +127,17 @@ impl Fit {
             }
         }
         let (parts, functionals) = self.functionals(false);
-        let (unit, shift) = (self.scaling.unit, self.scaling.shift);
-        let z = normal_quantile(0.5 + 0.5 * coverage);
-        let h = self.evaluation.system().h;
-        let mut totals =
-            LogTotals { unit, shift, expected: Vec::new(), total: 0.0, relative: 0.0, z, ends: Vec::new() };
-        let mut add = |step: Step<'_>| totals.add(&step);
-        let joint: Option<&mut dyn FnMut(Step<'_>)> = if self.log { Some(&mut add) } else { None };
-        let path = self.evaluation.ahead(horizon, &functionals, joint);
-        let mut out =
-            Forecast { parts: self.assemble(&parts, &path.functionals, horizon, n), ..Forecast::default() };
-        let mut total = 0.0;
-        for step in 0..horizon {
-            let m = path.signal.mean[step] * unit + shift;
-            let v = (path.signal.variance[step] + h) * unit * unit;
-            let s = v.sqrt();
-            if self.log && (v > transform::LARGEST || m + (z * s).max(0.5 * v) > transform::LARGEST) {
-                return Err(Trouble::Numerical {
-                    what: "on the log scale the forecast leaves the range of double precision within the horizon; use transform => 'none', a damped trend, or a shorter horizon",
-                });
-            }
-            let (expected, std_error) = if self.log { transform::lognormal(m, v) } else { (m, s) };
-            out.expected.push(expected);
-            out.std_error.push(std_error);
-            out.lower.push(self.back(m - z * s));
-            out.upper.push(self.back(m + z * s));
-            total += expected;
-            out.total_expected.push(total);
-            let (low, high) = if self.log {
-                totals.ends[step]
-            } else {
-                let s = path.sum_variance[step].sqrt() * unit;
-                (total - z * s, total + z * s)
-            };
-            out.total_lower.push(low);
-            out.total_upper.push(high);
-        }
+        let scale = ForecastScale {
+            transform: self.transform,
+            unit: self.scaling.unit,
+            shift: self.scaling.shift,
+            h: self.evaluation.system().h,
+            z: normal_quantile(0.5 + 0.5 * coverage),
+        };
+        let (mut out, path) =
+            scale.forecast(horizon, |joint| self.evaluation.ahead(horizon, &functionals, joint))?;
+        out.parts = self.assemble(&parts, &path.functionals, horizon, n);
         Ok(out)
-    }
-
-    fn back(&self, value: f64) -> f64 {
-        if self.log { transform::exp(value) } else { value }
     }
 
     /// The functionals of all components this fit has, and what each is for.
@@ -169,7 +162,7 @@ impl Fit {
     /// Components from smoothed or predicted functionals; `first` is the grid point of their first element.
     fn assemble(&self, parts: &[Part], smoothed: &[Smoothed], count: usize, first: usize) -> Components {
         let (unit, shift) = (self.scaling.unit, self.scaling.shift);
-        let component = |s: &Smoothed, kind: Unit| transform::component(s, self.log, kind, unit, shift);
+        let component = |s: &Smoothed, kind: Unit| self.transform.component(s, kind, unit, shift);
         let mut out = Components::default();
         for (driver, x) in self.evaluation.series().drivers.iter().enumerate() {
             let (b, se) = self.evaluation.coefficient(driver);

@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::transform::Transform;
+
 /// Why one series could not be fitted. [`Trouble::status`] is the closed list that results carry;
 /// the `Display` text is the sentence with the value, the place and the remedy.
 #[derive(Debug, Clone, PartialEq)]
@@ -40,12 +42,14 @@ pub enum Trouble {
         /// The value there.
         value: f64,
     },
-    /// A logarithm was asked of a value that is not above zero.
+    /// A transform was asked of a value that it does not take: a logarithm of a value that is not above zero.
     NotPositive {
         /// Grid point, from 0.
         index: usize,
         /// The value there.
         value: f64,
+        /// The transform.
+        transform: Transform,
     },
     /// A driver has no (finite) value at a point of the history.
     DriverGap {
@@ -165,10 +169,19 @@ impl fmt::Display for Trouble {
                 f,
                 "the observed value {value:e} at grid point {index} (from 0) is beyond 1e150 in size; rescale the column"
             ),
-            Self::NotPositive { index, value } => write!(
-                f,
-                "the logarithm needs values above zero, but grid point {index} (from 0) holds {value}; use transform => 'none'"
-            ),
+            Self::NotPositive { index, value, transform } => {
+                let (what, remedy) = match transform {
+                    Transform::Log1p => ("log1p needs values above -1", "transform => 'none'"),
+                    Transform::BoxCox(_) => {
+                        ("Box-Cox needs values that are not negative", "transform => 'none'")
+                    }
+                    _ => (
+                        "the logarithm needs values above zero",
+                        "transform => 'none', or 'log1p' where there are zeros",
+                    ),
+                };
+                write!(f, "{what}, but grid point {index} (from 0) holds {value}; use {remedy}")
+            }
             Self::DriverGap { driver, index } => write!(
                 f,
                 "driver '{driver}' has no finite value below 1e150 in size at grid point {index} (from 0) of the history; fill it in, drivers must be known wherever the series is"

@@ -1,5 +1,6 @@
 //! A fitted series: from the request to the estimate, and the diagnostics of it.
 
+use crate::box_cox;
 use crate::choose::{self, Choice};
 use crate::error::Trouble;
 use crate::estimate::{self, Estimate};
@@ -11,6 +12,7 @@ use crate::results::{Diagnostics, Parameter};
 use crate::scaling::Scaling;
 use crate::starts;
 use crate::structure::{Link, Model, Role, Structure, Trend};
+use crate::transform::Transform;
 
 /// Largest magnitude of an observation: its square must stay in range.
 const LARGEST: f64 = 1e150;
@@ -19,7 +21,9 @@ const LARGEST: f64 = 1e150;
 #[derive(Debug, Clone)]
 pub struct Fit {
     pub(crate) structure: Structure,
-    pub(crate) log: bool,
+    pub(crate) transform: Transform,
+    /// The power of the transform was estimated.
+    pub(crate) power_estimated: bool,
     pub(crate) scaling: Scaling,
     pub(crate) evaluation: Evaluation,
     /// Observations on the model scale (after the transform), NaN = missing.
@@ -40,9 +44,28 @@ pub struct Fit {
 /// [`Trouble`] says what is wrong with the series, or why its structure cannot be fitted to it.
 pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Result<Fit, Trouble> {
     examine(&series.observed)?;
-    let Choice { structure, log } = choose::choose(request, &series.observed)?;
-    let modelled: Vec<f64> =
-        if log { series.observed.iter().map(|v| v.ln()).collect() } else { series.observed.clone() };
+    let choice = choose::choose(request, &series.observed)?;
+    if !choice.power_open {
+        return fit_as(series, request, &choice, workspace);
+    }
+    let power = box_cox::power(series, request, &choice, workspace)?;
+    let choice = Choice { transform: Transform::BoxCox(power), ..choice };
+    let fit = fit_as(series, request, &choice, workspace)?;
+    Ok(Fit { power_estimated: true, ..fit })
+}
+
+/// Fits one series in the structure and on the scale of `choice`.
+///
+/// # Errors
+/// As [`fit`].
+pub(crate) fn fit_as(
+    series: &Series,
+    request: &Request,
+    choice: &Choice,
+    workspace: &mut Workspace,
+) -> Result<Fit, Trouble> {
+    let Choice { structure, transform, .. } = choice.clone();
+    let modelled: Vec<f64> = series.observed.iter().map(|&v| transform.forward(v)).collect();
     let (filled, unknown) = fill_drivers(series, request, &modelled)?;
     let points = modelled.len() - modelled.iter().position(|v| !v.is_nan()).unwrap_or(0);
     if let Some(season) = structure.seasons.iter().find(|s| (points as f64) < s.period) {
@@ -92,7 +115,8 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
     }
     Ok(Fit {
         structure,
-        log,
+        transform,
+        power_estimated: false,
         scaling,
         evaluation,
         modelled,
@@ -236,9 +260,9 @@ impl Fit {
         &self.structure
     }
 
-    /// True when the model is on the logarithm of the data.
-    pub fn log_transform(&self) -> bool {
-        self.log
+    /// The scale of the model.
+    pub fn transform(&self) -> Transform {
+        self.transform
     }
 
     /// All parameters, known ones included, on the model scale.
@@ -270,7 +294,7 @@ impl Fit {
     pub fn diagnostics(&self) -> Diagnostics {
         let evaluation = &self.evaluation;
         let (n, d) = (evaluation.observed(), evaluation.diffuse_elements());
-        let w = self.parameters.iter().filter(|p| !p.known).count();
+        let w = self.parameters.iter().filter(|p| !p.known).count() + usize::from(self.power_estimated);
         let log_likelihood = evaluation.log_likelihood() + self.scaling.log_likelihood(n as f64 - d as f64);
         let one_step = evaluation.one_step();
         let standardised: Vec<f64> = one_step.standardised.iter().copied().filter(|e| !e.is_nan()).collect();

@@ -18,6 +18,7 @@
 //! Kalman Filter*; Commandeur & Koopman (2007), *An Introduction to State Space Time Series Analysis*.
 
 mod backward;
+mod box_cox;
 mod buffer;
 pub mod calendar;
 mod choose;
@@ -29,6 +30,7 @@ mod filter;
 mod fit;
 mod forecast;
 mod information;
+mod normal_law;
 mod objective;
 mod one_step;
 pub mod quantile;
@@ -42,6 +44,7 @@ mod smoother;
 mod starts;
 pub mod structure;
 mod system;
+mod totals;
 mod transform;
 
 pub use choose::check;
@@ -54,3 +57,4 @@ pub use one_step::OneStep;
 pub use request::{Request, SeasonRequest, Series, TransformRequest};
 pub use results::{Components, Diagnostics, Forecast, Parameter, State};
 pub use system::{Op, ProperStart, System};
+pub use transform::Transform;

@@ -23,7 +23,7 @@ pub enum SeasonRequest {
 }
 
 /// Which scale to model on.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, Copy, PartialEq)]
 pub enum TransformRequest {
     /// Decide by the rule on `crate::choose`.
     Auto,
@@ -31,6 +31,10 @@ pub enum TransformRequest {
     None,
     /// The natural logarithm.
     Log,
+    /// The natural logarithm of one plus the value.
+    Log1p,
+    /// Box-Cox with this power; absent = estimated between 0 and 1.
+    BoxCox(Option<f64>),
 }
 
 /// The whole request. `None` or `Auto` leave a matter to the program.

@@ -14,7 +14,8 @@ use plain::plain;
 use series::column;
 use stillwell_statespace::structure::{Season, Structure, Trend};
 use stillwell_statespace::{
-    Components, Fit, Forecast, Request, SeasonRequest, Series, State, TransformRequest, Workspace, fit,
+    Components, Fit, Forecast, Request, SeasonRequest, Series, State, Transform, TransformRequest, Workspace,
+    fit,
 };
 
 const STEPS: usize = 12;
@@ -452,13 +453,17 @@ fn a_choice_left_open_equals_the_same_choice_named() {
         let structure = chosen.structure();
         let named = Request {
             season: SeasonRequest::Given(structure.seasons.iter().map(|s| s.period).collect()),
-            transform: if chosen.log_transform() { TransformRequest::Log } else { TransformRequest::None },
+            transform: if chosen.transform() == Transform::Log {
+                TransformRequest::Log
+            } else {
+                TransformRequest::None
+            },
             ..plain(structure.trend)
         };
         let same = fit(&series, &named, &mut Workspace::new()).expect("a fit");
         assert_eq!(same.structure(), structure);
         assert_eq!(bits(parameters(&same, 1.0)), bits(parameters(&chosen, 1.0)));
         assert_eq!(bits(linear_numbers(&same)), bits(linear_numbers(&chosen)));
-        println!("{structure:?}, log {}", chosen.log_transform());
+        println!("{structure:?}, {:?}", chosen.transform());
     }
 }

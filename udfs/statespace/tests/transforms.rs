@@ -17,7 +17,9 @@ use rand_distr::{Distribution, StandardNormal};
 use series::column;
 use stillwell_statespace::quantile::normal_quantile;
 use stillwell_statespace::structure::Trend;
-use stillwell_statespace::{Fit, Request, SeasonRequest, Series, TransformRequest, Workspace, fit};
+use stillwell_statespace::{
+    Fit, Request, SeasonRequest, Series, Transform, TransformRequest, Workspace, fit,
+};
 
 const STEPS: usize = 12;
 const COVERAGE: f64 = 0.9;
@@ -70,7 +72,7 @@ fn close(ours: f64, expected: f64, tolerance: f64) {
 #[test]
 fn the_model_is_that_of_the_logged_data() {
     let (multiplied, added) = both();
-    assert!(multiplied.log_transform() && !added.log_transform());
+    assert!(multiplied.transform() == Transform::Log && added.transform() == Transform::None);
     for (a, b) in multiplied.parameters().iter().zip(added.parameters()) {
         assert_eq!((&a.name, a.value, a.known), (&b.name, b.value, b.known));
     }

@@ -8,7 +8,7 @@ use proptest::prelude::*;
 use proptest::sample::select;
 use stillwell_statespace::structure::Trend;
 use stillwell_statespace::{
-    Fit, Request, SeasonRequest, Series, State, TransformRequest, Trouble, Workspace, check, fit,
+    Fit, Request, SeasonRequest, Series, State, Transform, TransformRequest, Trouble, Workspace, check, fit,
 };
 
 /// Longest horizon asked for; plans reach less far now and then.
@@ -83,7 +83,14 @@ prop_compose! {
         fixed_season in any::<bool>(),
         cycle in prop_oneof![5 => Just(None), 1 => Just(Some((3.0, 9.0)))],
         autoregression in prop_oneof![5 => Just(0usize), 1 => 1usize..3],
-        transform in select(vec![TransformRequest::None, TransformRequest::Log, TransformRequest::Auto]),
+        transform in select(vec![
+            TransformRequest::None,
+            TransformRequest::Log,
+            TransformRequest::Auto,
+            TransformRequest::Log1p,
+            TransformRequest::BoxCox(Some(0.3)),
+            TransformRequest::BoxCox(None),
+        ]),
         known in known(),
         drivers in 0usize..3,
         drifting in prop_oneof![3 => Just(0usize), 1 => Just(1usize)],
@@ -169,7 +176,7 @@ fn sound(fit: &Fit, series: &Series) -> Result<(), TestCaseError> {
             prop_assert!(c.lower[t] <= c.fitted[t] && c.fitted[t] <= c.upper[t], "interval at {t}");
         }
         // As a factor it has no value where a driver of 1e12 throws the fitted value out of the range of doubles.
-        let in_range = !fit.log_transform() || (1e-100..1e100).contains(&c.fitted[t]);
+        let in_range = fit.transform() == Transform::None || (1e-100..1e100).contains(&c.fitted[t]);
         prop_assert!(!in_range || c.irregular[t].is_finite() == seen, "irregular at {t}: {}", c.irregular[t]);
         prop_assert!(seen || c.irregular[t].is_nan(), "irregular at {t}: {}", c.irregular[t]);
         for value in [c.outlier_t[t], c.shift_t[t], fit.standardised_errors()[t]] {
@@ -185,14 +192,14 @@ fn sound(fit: &Fit, series: &Series) -> Result<(), TestCaseError> {
     let f = match fit.forecast(planned, 0.9) {
         Ok(forecast) => forecast,
         // A log model may leave the range of double precision; then it says so.
-        Err(Trouble::Numerical { .. }) if fit.log_transform() => return Ok(()),
+        Err(Trouble::Numerical { .. }) if fit.transform() != Transform::None => return Ok(()),
         Err(trouble) => return Err(TestCaseError::fail(trouble.to_string())),
     };
     for s in 0..planned {
         prop_assert!(f.expected[s].is_finite() && f.std_error[s] >= 0.0, "{f:?}");
         prop_assert!(f.lower[s] <= f.upper[s] && f.total_lower[s] <= f.total_upper[s], "{f:?}");
         prop_assert!(!f.total_expected[s].is_nan(), "{f:?}");
-        if !fit.log_transform() {
+        if fit.transform() == Transform::None {
             prop_assert!(
                 f.std_error[s].is_finite() && f.total_lower[s].is_finite() && f.total_upper[s].is_finite()
             );

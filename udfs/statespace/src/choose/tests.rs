@@ -91,7 +91,7 @@ fn every_default_can_be_named() {
     let request = Request { season: SeasonRequest::Auto(vec![12.0]), ..Request::default() };
     let short: Vec<f64> = (0..10).map(|t| f64::from(t % 3)).collect();
     let choice = choose(&request, &short).unwrap();
-    assert_eq!((choice.structure.trend, choice.log), (Trend::LocalLevel, false));
+    assert_eq!((choice.structure.trend, choice.transform), (Trend::LocalLevel, Transform::None));
     let long: Vec<f64> = (0..40).map(|t| f64::from(t % 12) + 0.1 * f64::from((t * 7) % 5) - 2.0).collect();
     let choice = choose(&request, &long).unwrap();
     assert_eq!(choice.structure.trend, Trend::Damped);
