@@ -22,13 +22,15 @@ pub(crate) const COLUMNS: &[ColumnSpec] = &[
     ColumnSpec::number("seasonal_se", Unit::Part, "Standard error of the seasonal pattern."),
     ColumnSpec::number("cycle", Unit::Part, "Stochastic cycle."),
     ColumnSpec::number("cycle_se", Unit::Part, "Standard error of the cycle."),
+    ColumnSpec::number("autoregression", Unit::Part, "Autoregression at this point."),
+    ColumnSpec::number("autoregression_se", Unit::Part, "Standard error of the autoregression."),
     ColumnSpec::number("effect_of_<driver>", Unit::Part, "What the driver contributes at this point.")
         .each_driver(),
     ColumnSpec::number("effect_of_<driver>_se", Unit::Part, "Standard error of that effect.").each_driver(),
     ColumnSpec::number(
         "irregular",
         Unit::Part,
-        "Observed against fitted: difference, or ratio on the log scale.",
+        "Observed against fitted: difference, or ratio on a logarithmic scale.",
     ),
     ColumnSpec::number("fitted", Unit::Data, "The smoothed signal: the series without its irregular."),
     ColumnSpec::number("lower", Unit::Data, "Lower end of the signal's interval at the coverage asked for."),
@@ -83,6 +85,7 @@ pub(crate) fn write_parts(rows: &mut ResultRows, components: &Components, driver
         ("slope", &components.slope),
         ("seasonal", &components.seasonal),
         ("cycle", &components.cycle),
+        ("autoregression", &components.autoregression),
     ];
     for (name, state) in states {
         if let Some(state) = state {

@@ -1,7 +1,7 @@
 //! The result of `diagnostics`: one row per series.
 
 use stillwell_statespace::structure::{Structure, period_label};
-use stillwell_statespace::{Components, Diagnostics, Parameter, Trouble};
+use stillwell_statespace::{Components, Diagnostics, Parameter, Transform, Trouble};
 
 use super::groups::{Group, Key};
 use super::result::{ColumnSpec, ResultRows, Unit, with_driver};
@@ -18,7 +18,12 @@ pub(crate) const COLUMNS: &[ColumnSpec] = &[
         "harmonics",
         "Harmonics of each season, or 'dummy' for the dummy form; NULL without a season.",
     ),
-    ColumnSpec::text("transform", "Scale of the model: 'none' or 'log'."),
+    ColumnSpec::text("transform", "Scale of the model: 'none', 'log', 'log1p' or 'box-cox'."),
+    ColumnSpec::number(
+        "transform_power",
+        Unit::Number,
+        "Power of 'box-cox', given or estimated: transform => with this number gives the same model.",
+    ),
     ColumnSpec::text("every", "Step of the grid in words, such as 'week' or 'month end'."),
     ColumnSpec::time("first_at", "Time of the first observation."),
     ColumnSpec::time("last_at", "Time of the last observation."),
@@ -109,7 +114,7 @@ pub(crate) const COLUMNS: &[ColumnSpec] = &[
 #[derive(Debug)]
 pub(crate) struct Findings<'a> {
     pub(crate) structure: &'a Structure,
-    pub(crate) log_transform: bool,
+    pub(crate) transform: Transform,
     pub(crate) parameters: &'a [Parameter],
     pub(crate) diagnostics: &'a Diagnostics,
     /// Only looked at for the coefficients of drivers.
@@ -128,7 +133,8 @@ pub(crate) fn write(
     rows.begin(key, 1);
     rows.text("trend", findings.structure.trend.name());
     write_seasons(rows, findings.structure);
-    rows.text("transform", if findings.log_transform { "log" } else { "none" });
+    rows.text("transform", findings.transform.name());
+    rows.number("transform_power", findings.transform.power().unwrap_or(f64::NAN));
     write_span(rows, placed);
     write_parameters(rows, findings.parameters, drifting);
     if let Some(components) = findings.components {

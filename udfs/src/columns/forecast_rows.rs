@@ -28,6 +28,8 @@ pub(crate) const COLUMNS: &[ColumnSpec] = &[
     ColumnSpec::number("seasonal_se", Unit::Part, "Its standard error.").part(),
     ColumnSpec::number("cycle", Unit::Part, "Forecast of the cycle.").part(),
     ColumnSpec::number("cycle_se", Unit::Part, "Its standard error.").part(),
+    ColumnSpec::number("autoregression", Unit::Part, "Forecast of the autoregression.").part(),
+    ColumnSpec::number("autoregression_se", Unit::Part, "Its standard error.").part(),
     ColumnSpec::number("effect_of_<driver>", Unit::Part, "Effect of the driver's planned value.")
         .part()
         .each_driver(),

@@ -157,8 +157,10 @@ pub const ARGUMENTS: &[Argument] = &[
     argument(
         "transform",
         Takes::Constant,
-        ("'none', 'log', 'auto'", "'auto'"),
-        "The scale of the model. On 'log', season and effects are factors and the slope is growth per step.",
+        ("'none', 'log', 'log1p', 'box-cox', a power from 0 to 2, 'auto'", "'auto'"),
+        "The scale of the model. On 'log', and on 'log1p' which takes zeros, season and effects are factors and the slope is \
+         growth per step. 'box-cox' estimates a power between 0 (the logarithm) and 1 (no transform), a number gives it; level, \
+         fitted values and forecasts are then in the data's unit, all other parts on the transformed scale.",
     ),
     argument(
         "known",

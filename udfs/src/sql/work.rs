@@ -207,7 +207,7 @@ impl Workshop {
             Answer::Diagnostics { fit, diagnostics, components } => {
                 let findings = diagnostics_rows::Findings {
                     structure: fit.structure(),
-                    log_transform: fit.log_transform(),
+                    transform: fit.transform(),
                     parameters: fit.parameters(),
                     diagnostics,
                     components: components.as_ref(),

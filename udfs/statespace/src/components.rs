@@ -20,6 +20,7 @@ enum Part {
     Slope,
     Seasonal,
     Cycle,
+    Autoregression,
     Effect(usize),
     Coefficient(usize),
     Signal,
@@ -148,6 +149,7 @@ impl Fit {
             (Part::Slope, evaluation.functional(Role::Slope)),
             (Part::Seasonal, evaluation.functional(Role::Season)),
             (Part::Cycle, evaluation.functional(Role::Cycle)),
+            (Part::Autoregression, evaluation.functional(Role::Autoregression)),
         ];
         for driver in 0..self.drivers.1.len() {
             list.push((Part::Effect(driver), evaluation.effect(driver)));
@@ -180,6 +182,7 @@ impl Fit {
                 Part::Slope => out.slope = Some(component(s, Unit::Growth)),
                 Part::Seasonal => out.seasonal = Some(component(s, Unit::Factor)),
                 Part::Cycle => out.cycle = Some(component(s, Unit::Factor)),
+                Part::Autoregression => out.autoregression = Some(component(s, Unit::Factor)),
                 Part::Effect(_) => out.effects.push(self.hide_unknown(component(s, Unit::Factor), first)),
                 Part::Coefficient(driver) => {
                     // The coefficient of the driver as handed in, not of its scaled copy.

@@ -70,6 +70,11 @@ pub enum Trouble {
         /// Name of the first driver that adds nothing.
         driver: String,
     },
+    /// A diffuse state of a system given as matrices about which the observations say nothing.
+    UndeterminedState {
+        /// Number of the state, from 1.
+        state: usize,
+    },
     /// The structure reproduces the data to rounding: no variance is left to estimate.
     ExactFit,
     /// The likelihood could not be evaluated where the structure needs it.
@@ -114,6 +119,7 @@ impl Trouble {
             Self::DriverGap { .. } => "driver gap",
             Self::NoDriverPlan { .. } => "no driver plan",
             Self::CollinearDrivers { .. } => "collinear drivers",
+            Self::UndeterminedState { .. } => "undetermined state",
             Self::ExactFit => "exact fit",
             Self::Numerical { .. } => "numerical trouble",
             Self::DuplicateTime { .. } => "duplicate time",
@@ -124,7 +130,7 @@ impl Trouble {
     }
 
     /// Every status there is, 'ok' first.
-    pub const STATUSES: [&'static str; 16] = [
+    pub const STATUSES: [&'static str; 17] = [
         "ok",
         "all missing",
         "too short",
@@ -135,6 +141,7 @@ impl Trouble {
         "driver gap",
         "no driver plan",
         "collinear drivers",
+        "undetermined state",
         "exact fit",
         "numerical trouble",
         "duplicate time",
@@ -193,6 +200,10 @@ impl fmt::Display for Trouble {
             Self::CollinearDrivers { driver } => write!(
                 f,
                 "driver '{driver}' says nothing that level, slope, season and the other drivers do not already say; leave it out"
+            ),
+            Self::UndeterminedState { state } => write!(
+                f,
+                "the observations say nothing about the start of state {state}; give it a start in a1 and p1, or leave the state out"
             ),
             Self::ExactFit => write!(
                 f,

@@ -204,9 +204,7 @@ fn run_from(
         system.forward(&mut a[..m * width], width);
         if !settled {
             system.propagate(p);
-            for i in 0..m {
-                p[i * m + i] += system.q[i];
-            }
+            system.disturb(p);
             if steady_possible && !missing && (f - previous_f).abs() <= SETTLED * f {
                 settled = unchanged(before, p, m);
             }

@@ -145,10 +145,10 @@ fn means_nothing(model: &Model, known: &[Option<f64>], values: &[f64], index: us
 }
 
 /// Size of the one-step errors, relative to the values themselves, at which they are rounding.
-const ROUNDING: f64 = 4.0 * f64::EPSILON;
+pub(crate) const ROUNDING: f64 = 4.0 * f64::EPSILON;
 
 /// The structure foretells every value to `rounding`. `unit` takes the errors to its scale.
-fn reproduces(evaluation: &Evaluation, rounding: f64, unit: f64) -> bool {
+pub(crate) fn reproduces(evaluation: &Evaluation, rounding: f64, unit: f64) -> bool {
     let one_step = evaluation.one_step();
     let errors = one_step.standardised.iter().zip(&one_step.variance).map(|(e, v)| e * v.sqrt() * unit);
     let mut worst: Option<f64> = None;
@@ -159,7 +159,7 @@ fn reproduces(evaluation: &Evaluation, rounding: f64, unit: f64) -> bool {
 }
 
 /// What is wrong with the observations as such.
-fn examine(observed: &[f64]) -> Result<(), Trouble> {
+pub(crate) fn examine(observed: &[f64]) -> Result<(), Trouble> {
     let mut first = None;
     let mut moves = false;
     for (index, &value) in observed.iter().enumerate() {
@@ -188,7 +188,7 @@ fn examine(observed: &[f64]) -> Result<(), Trouble> {
 
 /// Drivers with zeros where neither they nor the series have a value (no equation uses them there), and
 /// those points.
-fn fill_drivers(
+pub(crate) fn fill_drivers(
     series: &Series,
     request: &Request,
     modelled: &[f64],

@@ -118,9 +118,7 @@ pub(crate) fn run(
         system.forward(&mut sum_state, 1);
         system.forward(&mut a, width);
         system.propagate(&mut p);
-        for i in 0..m {
-            p[i * m + i] += system.q[i];
-        }
+        system.disturb(&mut p);
     }
     path
 }

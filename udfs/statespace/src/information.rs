@@ -119,13 +119,18 @@ impl Information {
                     self.dx[i] += value * self.x[j];
                 }
                 system.forward(&mut self.x, 1);
-                for i in 0..m {
-                    self.x[i] += system.q[i] * paths.r[t * m + i];
-                    self.dx[i] += system.q[i] * self.dr[(t + 1) * m + i];
-                }
+                system.add_disturbance(&mut self.x, &paths.r[t * m..(t + 1) * m]);
+                system.add_disturbance(&mut self.dx, &self.dr[(t + 1) * m..(t + 2) * m]);
             }
             for &state in &effect.states {
                 self.dx[state] += paths.r[t * m + state];
+            }
+            if !effect.loads.is_empty() {
+                let r = &paths.r[t * m..(t + 1) * m];
+                let along: f64 = effect.loads.iter().map(|&(state, load)| load * r[state]).sum();
+                for &(state, load) in &effect.loads {
+                    self.dx[state] += load * along;
+                }
             }
         }
     }

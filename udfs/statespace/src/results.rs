@@ -11,9 +11,10 @@ pub struct State {
 
 /// Smoothed components of one series; every vector has one element per grid point of the history.
 ///
-/// Units: without a transform all are in the data's unit and add up (slope: per step). With a log
-/// transform level, fitted, lower and upper are in the data's unit, slope is growth per step (0.01 = 1 %),
-/// the rest are factors (1.12 = 12 % up) that multiply up.
+/// Units: without a transform all are in the data's unit and add up (slope: per step). With `log` and `log1p`
+/// level, fitted, lower and upper are in the data's unit, slope is growth per step (0.01 = 1 %), the rest are factors
+/// (1.12 = 12 % up) that multiply up (log1p: of one plus the value). With Box-Cox level, fitted, lower and upper are in the
+/// data's unit, the rest on the transformed scale, where they add up.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Components {
     /// Level of the trend, present whenever the structure has a trend.
@@ -24,14 +25,15 @@ pub struct Components {
     pub seasonal: Option<State>,
     /// Stochastic cycle.
     pub cycle: Option<State>,
+    /// Stationary autoregression.
+    pub autoregression: Option<State>,
     /// Effect of each driver, constant ones first, then drifting ones.
     pub effects: Vec<State>,
     /// Coefficient of each driver at each point (same order as `effects`), model scale.
     pub coefficients: Vec<State>,
     /// Observed minus fitted (log: observed over fitted); NaN where missing.
     pub irregular: Vec<f64>,
-    /// The smoothed signal: what the series would show without its irregular. An autoregression, if any, is in it and has
-    /// no component of its own here.
+    /// The smoothed signal: what the series would show without its irregular.
     pub fitted: Vec<f64>,
     /// Interval of the signal at the coverage asked for.
     pub lower: Vec<f64>,

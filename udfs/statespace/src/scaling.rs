@@ -72,6 +72,6 @@ impl Scaling {
 }
 
 /// The power of two nearest to `size` in the logarithm; 1 for zero or what is not finite.
-fn power_of_two(size: f64) -> f64 {
+pub(crate) fn power_of_two(size: f64) -> f64 {
     if size > 0.0 && size.is_finite() { size.log2().round().exp2() } else { 1.0 }
 }

@@ -39,6 +39,8 @@ struct Moments {
     irregular: f64,
     /// Per state: `1/2 sum (r^2 - N)`.
     per_state: Vec<f64>,
+    /// Per parameter: the same along the loads of a shared disturbance.
+    shared: Vec<f64>,
     /// Per parameter: the part that comes through `T`.
     through_transition: Vec<f64>,
     r_after: Vec<f64>,
@@ -66,6 +68,7 @@ impl Score {
         let moments = &mut self.moments;
         moments.irregular = 0.0;
         refill(&mut moments.per_state, m);
+        refill(&mut moments.shared, model.effects.len());
         refill(&mut moments.through_transition, model.effects.len());
         refill(&mut moments.r_after, m * width);
         refill(&mut moments.n_after, m * m);
@@ -86,7 +89,7 @@ impl Score {
         self.paths.r_first.extend(r.iter().step_by(width));
         self.gradient.clear();
         for (index, effect) in model.effects.iter().enumerate() {
-            let mut g = self.moments.through_transition[index];
+            let mut g = self.moments.through_transition[index] + self.moments.shared[index];
             if effect.irregular {
                 g += self.moments.irregular;
             }
@@ -124,6 +127,16 @@ impl Visitor for Collect<'_> {
                 let squares: f64 = row.iter().map(|v| v * v).sum();
                 self.moments.per_state[i] += 0.5 * (squares - n[i * m + i]);
             }
+        }
+        for (index, effect) in self.model.effects.iter().enumerate().filter(|(_, e)| !e.loads.is_empty()) {
+            let mut spread = 0.0;
+            for &(i, a) in &effect.loads {
+                spread += effect.loads.iter().map(|&(j, b)| a * b * n[i * m + j]).sum::<f64>();
+            }
+            let along = (0..width)
+                .map(|c| effect.loads.iter().map(|&(i, a)| a * r[i * width + c]).sum::<f64>().powi(2))
+                .sum::<f64>();
+            self.moments.shared[index] += 0.5 * (along - spread);
         }
         if self.shapes {
             self.moments.r_after[..r.len()].copy_from_slice(r);

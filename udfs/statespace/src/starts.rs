@@ -63,8 +63,11 @@ pub(crate) fn choose(
     }
     found.sort_by(|a, b| b.0.total_cmp(&a.0));
     // A cycle or an autoregression has optima of its own for each period and sign; a damped slope seldom has.
-    let several =
-        objective.model.parameters().iter().any(|p| matches!(p.role, Role::Cycle | Role::Autoregression));
+    let several = objective
+        .model
+        .parameters()
+        .iter()
+        .any(|p| matches!(p.role, Role::Cycle | Role::Autoregression | Role::General));
     let most = if several { 4 } else { 1 };
     let mut starts: Vec<Vec<f64>> = Vec::new();
     let mut groups: Vec<usize> = Vec::new();
@@ -132,6 +135,7 @@ fn point(
                             Role::Slope => ratios[2],
                             Role::Season => ratios[3],
                             Role::Driver(_) => ratios[4],
+                            Role::General => general_ratio(objective, i, ratios),
                             Role::Cycle | Role::Autoregression => 0.5,
                         }
                 }
@@ -140,6 +144,23 @@ fn point(
             given.unwrap_or(value)
         })
         .collect()
+}
+
+/// Ratio of a disturbance of a system given as matrices: a level's, taken to the size that it has on the observation; a slope's where it
+/// does not reach the observation at once.
+fn general_ratio(objective: &Objective<'_>, parameter: usize, ratios: [f64; 5]) -> f64 {
+    let assembly = &objective.model.assembly;
+    let loads =
+        assembly.shared.iter().find(|noise| noise.parameter == Some(parameter)).map(|noise| &noise.loads);
+    let reach: f64 = loads
+        .into_iter()
+        .flatten()
+        .map(|&(state, load)| match assembly.states[state].load {
+            crate::structure::assembly::Load::Fixed(z) => z * load,
+            _ => 0.0,
+        })
+        .sum();
+    if reach == 0.0 { ratios[2] } else { ratios[1] / (reach * reach) }
 }
 
 /// Combinations of values for the parameters that are not variances, each in the order of the parameters.

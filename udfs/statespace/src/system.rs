@@ -1,7 +1,8 @@
 //! The state-space form of one structure at given parameter values.
 //!
 //! Observation `y_t = Z_t a_t + x_t b + e_t`, `e_t ~ N(0, h)`; transition `a_{t+1} = T a_t + n_t`,
-//! `n_t ~ N(0, diag(q))` (DK eq. 3.1 with R = I). `T` is block diagonal and each block is an operation on
+//! `n_t ~ N(0, Q)` (DK eq. 3.1 with R = I): `Q` is diagonal for the named structures, and `diag(q)` plus a sum of
+//! [`SharedNoise`] for systems given as matrices. `T` is block diagonal and each block is an operation on
 //! rows rather than a matrix: a shift, a rotation, an addition. Row operations run over contiguous
 //! memory, so that one routine serves vectors, covariances and the columns of the augmented filter.
 
@@ -34,6 +35,13 @@ pub enum Op {
         /// Coefficients of lags 1, 2, ...
         coefficients: Vec<f64>,
     },
+    /// Any matrix, row-major.
+    Matrix {
+        /// Number of rows and columns.
+        size: usize,
+        /// `size x size` numbers.
+        values: Vec<f64>,
+    },
 }
 
 impl Op {
@@ -44,6 +52,7 @@ impl Op {
             Self::Trend { .. } | Self::Rotate { .. } => 2,
             Self::Season { len } => *len,
             Self::Autoregression { coefficients } => coefficients.len(),
+            Self::Matrix { size, .. } => *size,
         }
     }
 
@@ -90,6 +99,7 @@ impl Op {
                 }
                 x.rotate_right(width);
             }
+            Self::Matrix { size, values } => multiply(x, width, *size, |i, j| values[i * size + j]),
         }
     }
 
@@ -132,8 +142,37 @@ impl Op {
                     x[(order - 1) * width + j] = coefficients[order - 1] * first;
                 }
             }
+            Self::Matrix { size, values } => multiply(x, width, *size, |i, j| values[j * size + i]),
         }
     }
+}
+
+/// `x <- M x` for a `size x width` row-major `x`, column by column.
+fn multiply(x: &mut [f64], width: usize, size: usize, element: impl Fn(usize, usize) -> f64) {
+    let (mut few, mut many) = ([0.0; 16], Vec::new());
+    let column = if size <= few.len() {
+        &mut few[..size]
+    } else {
+        many.resize(size, 0.0);
+        &mut many[..]
+    };
+    for j in 0..width {
+        for (i, c) in column.iter_mut().enumerate() {
+            *c = (0..size).map(|k| element(i, k) * x[k * width + j]).sum();
+        }
+        for (i, c) in column.iter().enumerate() {
+            x[i * width + j] = *c;
+        }
+    }
+}
+
+/// A disturbance that moves several states at once: `variance` times the outer product of its loads.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct SharedNoise {
+    /// State and load.
+    pub loads: Vec<(usize, f64)>,
+    /// Its variance.
+    pub variance: f64,
 }
 
 /// A proper (stationary) start of a block of states: a covariance, row-major `size x size`.
@@ -162,6 +201,8 @@ pub struct System {
     pub h: f64,
     /// Variance of each state's disturbance, length m.
     pub q: Vec<f64>,
+    /// Disturbances that move several states at once; none in the named structures.
+    pub shared: Vec<SharedNoise>,
     /// States with a diffuse start, ascending.
     pub diffuse: Vec<usize>,
     /// Starts of the other states.
@@ -211,11 +252,45 @@ impl System {
         mirror(n, m);
     }
 
+    /// `p <- p + Q`.
+    #[inline]
+    pub(crate) fn disturb(&self, p: &mut [f64]) {
+        let m = self.states;
+        for i in 0..m {
+            p[i * m + i] += self.q[i];
+        }
+        for noise in &self.shared {
+            for &(i, a) in &noise.loads {
+                for &(j, b) in &noise.loads {
+                    p[i * m + j] += noise.variance * (a * b);
+                }
+            }
+        }
+    }
+
+    /// `x <- x + Q r` for a vector.
+    #[inline]
+    pub(crate) fn add_disturbance(&self, x: &mut [f64], r: &[f64]) {
+        for (i, x) in x.iter_mut().enumerate() {
+            *x += self.q[i] * r[i];
+        }
+        for noise in &self.shared {
+            let along: f64 = noise.loads.iter().map(|&(i, a)| a * r[i]).sum();
+            for &(i, a) in &noise.loads {
+                x[i] += noise.variance * a * along;
+            }
+        }
+    }
+
     /// Start covariance of the diffuse states: the largest noise variance. Any value gives the same
     /// results (a flat prior convolved with a proper one is flat); this one is near the size that the
     /// covariance settles at.
     pub fn start_scale(&self) -> f64 {
-        let largest = self.q.iter().fold(self.h, |a, &b| a.max(b));
+        let shared = self
+            .shared
+            .iter()
+            .flat_map(|noise| noise.loads.iter().map(|&(_, load)| noise.variance * load * load));
+        let largest = self.q.iter().copied().chain(shared).fold(self.h, f64::max);
         self.proper.iter().flat_map(|p| p.covariance.iter()).fold(largest, |a, &b| a.max(b))
     }
 
@@ -223,15 +298,15 @@ impl System {
     pub(crate) fn start_covariance(&self, scale: f64, p: &mut [f64]) {
         let m = self.states;
         p.fill(0.0);
-        for &i in &self.diffuse {
-            p[i * m + i] = scale;
-        }
         for start in &self.proper {
             for i in 0..start.size {
                 for j in 0..start.size {
                     p[(start.offset + i) * m + start.offset + j] = start.covariance[i * start.size + j];
                 }
             }
+        }
+        for &i in &self.diffuse {
+            p[i * m + i] = scale;
         }
     }
 
@@ -280,13 +355,14 @@ mod tests {
             Op::Negate,
             Op::Autoregression { coefficients: vec![0.5, -0.3, 0.1] },
             Op::Keep,
+            Op::Matrix { size: 2, values: vec![0.4, -1.5, 2.0, 0.25] },
         ];
         System { states: transition.iter().map(Op::len).sum(), transition, ..System::default() }
     }
 
     /// T as a matrix, written out from the definitions and not from the row operations.
     fn dense() -> DMatrix<f64> {
-        let mut t = DMatrix::zeros(13, 13);
+        let mut t = DMatrix::zeros(15, 15);
         (t[(0, 0)], t[(0, 1)], t[(1, 1)]) = (1.0, 1.0, 0.9);
         for j in 2..6 {
             t[(2, j)] = -1.0;
@@ -298,23 +374,24 @@ mod tests {
         t[(8, 8)] = -1.0;
         (t[(9, 9)], t[(9, 10)], t[(9, 11)], t[(10, 9)], t[(11, 10)]) = (0.5, -0.3, 0.1, 1.0, 1.0);
         t[(12, 12)] = 1.0;
+        (t[(13, 13)], t[(13, 14)], t[(14, 13)], t[(14, 14)]) = (0.4, -1.5, 2.0, 0.25);
         t
     }
 
     proptest! {
         #[test]
-        fn row_operations_equal_the_matrix(values in proptest::collection::vec(-1e3..1e3f64, 13 * 13)) {
+        fn row_operations_equal_the_matrix(values in proptest::collection::vec(-1e3..1e3f64, 15 * 15)) {
             let (s, t) = (system(), dense());
-            let x = DMatrix::from_row_slice(13, 13, &values);
+            let x = DMatrix::from_row_slice(15, 15, &values);
             let close = |a: &[f64], b: &DMatrix<f64>| {
                 let scale = 1.0 + b.amax();
                 a.iter().zip(b.transpose().iter()).all(|(u, v)| (u - v).abs() <= 1e-13 * scale)
             };
             let mut forward = values.clone();
-            s.forward(&mut forward, 13);
+            s.forward(&mut forward, 15);
             prop_assert!(close(&forward, &(&t * &x)));
             let mut backward = values.clone();
-            s.backward(&mut backward, 13);
+            s.backward(&mut backward, 15);
             prop_assert!(close(&backward, &(t.transpose() * &x)));
             let p = &x * x.transpose();
             let mut propagated: Vec<f64> = p.transpose().iter().copied().collect();
@@ -323,7 +400,7 @@ mod tests {
             let mut pulled: Vec<f64> = p.transpose().iter().copied().collect();
             s.pull_back(&mut pulled);
             prop_assert!(close(&pulled, &(t.transpose() * &p * &t)));
-            prop_assert!((0..13).all(|i| (0..13).all(|j| propagated[i * 13 + j] == propagated[j * 13 + i])));
+            prop_assert!((0..15).all(|i| (0..15).all(|j| propagated[i * 15 + j] == propagated[j * 15 + i])));
         }
     }
 }

@@ -350,6 +350,7 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
         Trouble::DriverGap { driver: name(), index: 7 },
         Trouble::NoDriverPlan { driver: name(), step: 7 },
         Trouble::CollinearDrivers { driver: name() },
+        Trouble::UndeterminedState { state: 2 },
         Trouble::ExactFit,
         Trouble::Numerical { what: "a sentence" },
         Trouble::DuplicateTime { at: "2020-02-03".to_owned() },

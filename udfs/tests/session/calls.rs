@@ -25,6 +25,8 @@ async fn components_has_one_row_per_grid_point() {
         "seasonal_se",
         "cycle",
         "cycle_se",
+        "autoregression",
+        "autoregression_se",
         "irregular",
         "fitted",
         "lower",

@@ -10,8 +10,10 @@
 pub enum Scale {
     /// `transform => 'none'`.
     Data,
-    /// `transform => 'log'`.
+    /// `transform => 'log'` or `'log1p'`.
     Log,
+    /// `transform => 'box-cox'` or a power.
+    BoxCox,
     /// `transform => 'auto'`: one or the other, series by series.
     BySeries,
 }
@@ -54,15 +56,19 @@ impl Unit {
             (Self::Time | Self::Words, _) => return None,
             (Self::Data, _) | (Self::Part, Scale::Data) => "data",
             (Self::Part, Scale::Log) => "factor",
+            (Self::Part, Scale::BoxCox) => "transformed",
             (Self::Part, Scale::BySeries) => "data or factor",
             (Self::Slope, Scale::Data) => "data per step",
             (Self::Slope, Scale::Log) => "growth per step",
+            (Self::Slope, Scale::BoxCox) => "transformed per step",
             (Self::Slope, Scale::BySeries) => "data or growth per step",
             (Self::Variance, Scale::Data) => "data squared",
             (Self::Variance, Scale::Log) => "log squared",
+            (Self::Variance, Scale::BoxCox) => "transformed squared",
             (Self::Variance, Scale::BySeries) => "data or log squared",
             (Self::Coefficient, Scale::Data) => "data per unit of the driver",
             (Self::Coefficient, Scale::Log) => "log per unit of the driver",
+            (Self::Coefficient, Scale::BoxCox) => "transformed per unit of the driver",
             (Self::Coefficient, Scale::BySeries) => "data or log per unit of the driver",
             (Self::Steps, _) => "steps",
             (Self::Count, _) => "count",

@@ -125,15 +125,21 @@ impl Values<'_> {
     pub(crate) fn scale(&self) -> Result<Scale> {
         Ok(match self.transform()? {
             TransformRequest::None => Scale::Data,
-            TransformRequest::Log => Scale::Log,
+            TransformRequest::Log | TransformRequest::Log1p => Scale::Log,
+            TransformRequest::BoxCox(_) => Scale::BoxCox,
             TransformRequest::Auto => Scale::BySeries,
         })
     }
 
     fn transform(&self) -> Result<TransformRequest> {
-        Ok(match self.word("transform", &["none", "log", "auto"])? {
+        if let Some(power) = self.value("transform")?.as_ref().and_then(Value::as_number) {
+            return Ok(TransformRequest::BoxCox(Some(power)));
+        }
+        Ok(match self.word("transform", &["none", "log", "log1p", "box-cox", "auto"])? {
             Some(0) => TransformRequest::None,
             Some(1) => TransformRequest::Log,
+            Some(2) => TransformRequest::Log1p,
+            Some(3) => TransformRequest::BoxCox(None),
             _ => TransformRequest::Auto,
         })
     }

@@ -1,7 +1,7 @@
 //! Where the components meet: each appends its states, blocks, parameters and start.
 
 use super::model::{Link, ParameterSpec, Role};
-use crate::system::Op;
+use crate::system::{Op, ProperStart};
 
 /// How a state loads on the observation.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -41,12 +41,24 @@ pub(crate) struct PlacedShape {
     pub(crate) shape: Shape,
 }
 
+/// A disturbance that moves several states at once.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct SharedSpec {
+    /// The parameter that is its variance; without one the variance is 1.
+    pub(crate) parameter: Option<usize>,
+    pub(crate) loads: Vec<(usize, f64)>,
+}
+
 /// The growing model.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub(crate) struct Assembly {
     pub(crate) states: Vec<StateSpec>,
     pub(crate) blocks: Vec<Op>,
     pub(crate) shapes: Vec<PlacedShape>,
+    /// Disturbances of a system given as matrices.
+    pub(crate) shared: Vec<SharedSpec>,
+    /// Proper starts that depend on no parameter.
+    pub(crate) proper: Vec<ProperStart>,
     pub(crate) parameters: Vec<ParameterSpec>,
 }
 

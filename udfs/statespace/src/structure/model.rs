@@ -3,7 +3,7 @@
 
 use super::assembly::{Assembly, Load, Shape, StateSpec};
 use super::{autoregression, cycle, trend};
-use crate::system::{Op, ProperStart, System};
+use crate::system::{Op, ProperStart, SharedNoise, System};
 
 /// Which component a state or parameter belongs to.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -22,6 +22,8 @@ pub enum Role {
     Autoregression,
     /// The coefficient of this drifting driver.
     Driver(usize),
+    /// A state or disturbance of a system given as matrices.
+    General,
 }
 
 /// How a parameter is bounded; estimation works on the unbounded side.
@@ -62,6 +64,8 @@ pub(crate) struct Effect {
     pub(crate) irregular: bool,
     /// States whose disturbance variance it is.
     pub(crate) states: Vec<usize>,
+    /// Loads of the shared disturbance whose variance it is.
+    pub(crate) loads: Vec<(usize, f64)>,
     /// Derivative of `T`: row, column, value.
     pub(crate) transition: Vec<(usize, usize, f64)>,
     /// Derivative of the proper start covariance: row, column, value.
@@ -77,13 +81,18 @@ pub struct Model {
 }
 
 impl Model {
-    pub(super) fn new(assembly: Assembly, drivers: usize) -> Self {
+    pub(crate) fn new(assembly: Assembly, drivers: usize) -> Self {
         let effects = (0..assembly.parameters.len())
             .map(|i| Effect {
                 irregular: assembly.parameters[i].role == Role::Irregular,
                 states: (0..assembly.states.len())
                     .filter(|&s| assembly.states[s].variance == Some(i))
                     .collect(),
+                loads: assembly
+                    .shared
+                    .iter()
+                    .find(|noise| noise.parameter == Some(i))
+                    .map_or_else(Vec::new, |noise| noise.loads.clone()),
                 ..Effect::default()
             })
             .collect();
@@ -136,6 +145,13 @@ impl Model {
             states: states.len(),
             transition: self.assembly.blocks.clone(),
             q: vec![0.0; states.len()],
+            shared: self
+                .assembly
+                .shared
+                .iter()
+                .map(|noise| SharedNoise { loads: noise.loads.clone(), variance: 1.0 })
+                .collect(),
+            proper: self.assembly.proper.clone(),
             ..System::default()
         };
         for (i, state) in states.iter().enumerate() {
@@ -180,6 +196,11 @@ impl Model {
         system.h = values[0];
         for (q, state) in system.q.iter_mut().zip(&self.assembly.states) {
             *q = state.variance.map_or(0.0, |i| values[i]);
+        }
+        for (shared, noise) in system.shared.iter_mut().zip(&self.assembly.shared) {
+            if let Some(parameter) = noise.parameter {
+                shared.variance = values[parameter];
+            }
         }
         for effect in &mut self.effects {
             effect.transition.clear();
