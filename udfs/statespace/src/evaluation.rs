@@ -170,6 +170,10 @@ impl Evaluation {
         forecast::run(&self.system, data_of(&self.series), &self.pass, h, functionals, joint)
     }
 
+    pub(crate) fn pass(&self) -> &Pass {
+        &self.pass
+    }
+
     pub(crate) fn model(&self) -> &Model {
         &self.model
     }

@@ -94,14 +94,35 @@ const SETTLED: f64 = 4.0 * f64::EPSILON;
 /// with identity on them in the state basis:
 /// `l = -1/2 [(n - d) log 2 pi + sum log F_t + 2 sum log |R_ii| + rss]`.
 pub(crate) fn run(system: &System, data: Data<'_>, keep: Keep, pass: &mut Pass) -> Result<(), FilterError> {
-    run_from(system, data, system.start_scale(), keep, pass)
+    run_from(system, data, Start::Scale(system.start_scale()), keep, pass)
 }
 
-/// [`run`] with a start covariance of `scale` on the diffuse states, which changes nothing but rounding.
+/// [`run`] from a state that is known up to its covariance: the prediction `a` of the first point and its covariance `p`. Nothing is diffuse then:
+/// the system must have no diffuse states and the data no constant drivers.
+pub(crate) fn resume(
+    system: &System,
+    data: Data<'_>,
+    (a, p): (&[f64], &[f64]),
+    keep: Keep,
+    pass: &mut Pass,
+) -> Result<(), FilterError> {
+    run_from(system, data, Start::At(a, p), keep, pass)
+}
+
+/// What the filter starts from.
+#[derive(Debug, Clone, Copy)]
+enum Start<'a> {
+    /// The start of the system, with this variance on its diffuse states. Any changes nothing but rounding.
+    Scale(f64),
+    /// A prediction and its covariance.
+    At(&'a [f64], &'a [f64]),
+}
+
+/// [`run`] and [`resume`].
 fn run_from(
     system: &System,
     data: Data<'_>,
-    scale: f64,
+    start: Start<'_>,
     keep: Keep,
     pass: &mut Pass,
 ) -> Result<(), FilterError> {
@@ -110,7 +131,14 @@ fn run_from(
     let stride = d + 1;
     let mut width = stride;
     pass.prepare(n, m, d, keep);
-    system.start_covariance(scale, &mut pass.p);
+    match start {
+        Start::Scale(scale) => system.start_covariance(scale, &mut pass.p),
+        Start::At(a, p) => {
+            debug_assert_eq!(d, 0);
+            pass.a.copy_from_slice(a);
+            pass.p.copy_from_slice(p);
+        }
+    }
     for (j, &state) in system.diffuse.iter().enumerate() {
         pass.a[state * width + 1 + j] = 1.0;
     }
@@ -388,8 +416,8 @@ mod tests {
             let data = Data { observed: &observed, drivers: &[driver], drifting: &[] };
             let (mut a, mut b) = (Pass::default(), Pass::default());
             let scale = system.start_scale();
-            run_from(&system, data, scale, Keep::Everything, &mut a).unwrap();
-            run_from(&system, data, scale * factor, Keep::Everything, &mut b).unwrap();
+            run_from(&system, data, Start::Scale(scale), Keep::Everything, &mut a).unwrap();
+            run_from(&system, data, Start::Scale(scale * factor), Keep::Everything, &mut b).unwrap();
             prop_assert!((a.log_likelihood - b.log_likelihood).abs() < 1e-9);
             a.whiten_rows();
             b.whiten_rows();

@@ -15,7 +15,7 @@ use crate::structure::{Link, Model, Role, Structure, Trend};
 use crate::transform::Transform;
 
 /// Largest magnitude of an observation: its square must stay in range.
-const LARGEST: f64 = 1e150;
+pub(crate) const LARGEST: f64 = 1e150;
 
 /// One fitted series. It keeps the series on its working scale and answers from there.
 #[derive(Debug, Clone)]

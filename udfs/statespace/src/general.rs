@@ -177,7 +177,7 @@ impl GeneralForm {
                 name: format!("state_{}", i + 1),
                 role: Role::General,
                 load: match self.z[i] {
-                    Some(z) if z == 0.0 => Load::None,
+                    Some(0.0) => Load::None,
                     Some(z) => Load::Fixed(z),
                     None => {
                         driver += 1;

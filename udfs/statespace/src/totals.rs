@@ -100,9 +100,9 @@ fn power_normal_ends(mean: f64, relative_variance: f64, power: f64, z: f64) -> (
         let middle = (low * high).sqrt();
         let (mean, sd) = moments(middle);
         if (sd / mean).powi(2) < relative_variance {
-            low = middle
+            low = middle;
         } else {
-            high = middle
+            high = middle;
         }
         if high / low < 1.0 + 1e-12 {
             break;

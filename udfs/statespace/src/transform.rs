@@ -76,8 +76,8 @@ impl Transform {
             Self::None => y,
             Self::Log => y.ln(),
             Self::Log1p => y.ln_1p(),
-            Self::BoxCox(power) if power == 0.0 => y.ln(),
-            Self::BoxCox(power) if power == 1.0 => y - 1.0,
+            Self::BoxCox(0.0) => y.ln(),
+            Self::BoxCox(1.0) => y - 1.0,
             // expm1 keeps the digits of small powers.
             Self::BoxCox(power) if y > 0.0 => (power * y.ln()).exp_m1() / power,
             Self::BoxCox(power) => {
@@ -102,8 +102,8 @@ impl Transform {
                     x.exp_m1()
                 }
             }
-            Self::BoxCox(power) if power == 0.0 => exp(x),
-            Self::BoxCox(power) if power == 1.0 => {
+            Self::BoxCox(0.0) => exp(x),
+            Self::BoxCox(1.0) => {
                 if x < -1.0 {
                     0.0
                 } else {
@@ -138,7 +138,7 @@ impl Transform {
                 let (mean, sd) = lognormal(m, v);
                 (mean - 1.0, sd)
             }
-            Self::BoxCox(power) if power == 0.0 => lognormal(m, v),
+            Self::BoxCox(0.0) => lognormal(m, v),
             Self::BoxCox(_) => normal_law::moments(m, v, self.kink(), |x| self.back(x)),
         }
     }
@@ -157,7 +157,7 @@ impl Transform {
         match self {
             Self::None => true,
             Self::Log | Self::Log1p => !(v > LARGEST || m + (z * s).max(0.5 * v) > LARGEST),
-            Self::BoxCox(power) if power == 0.0 => Self::Log.in_range(m, v, z),
+            Self::BoxCox(0.0) => Self::Log.in_range(m, v, z),
             Self::BoxCox(power) => (power * (m + z.max(9.0) * s)).max(0.0).ln_1p() / power < LARGEST,
         }
     }

@@ -372,10 +372,10 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
     has(&all[6], &["'price'", "grid point 7", "fill it in"]);
     has(&all[7], &["'price'", "step 7", "append rows"]);
     has(&all[8], &["'price'", "leave it out"]);
-    has(&all[11], &["2020-02-03", "aggregate"]);
-    has(&all[12], &["7 row"]);
-    has(&all[13], &["2020-02-03", "weeks", "every =>"]);
-    has(&all[14], &["because", "every =>"]);
+    has(&all[12], &["2020-02-03", "aggregate"]);
+    has(&all[13], &["7 row"]);
+    has(&all[14], &["2020-02-03", "weeks", "every =>"]);
+    has(&all[15], &["because", "every =>"]);
 }
 
 #[test]

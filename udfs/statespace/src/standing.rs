@@ -1,0 +1,381 @@
+//! Where a fitted series stands after its last observation: all that tomorrow needs of its past.
+//!
+//! The filtered state of the last point, its covariance, and the parameters are sufficient for everything that comes later (the Markov
+//! property of DK eq. 3.1): forecasts run on from there, and new observations are filtered without touching the history or the
+//! parameters. Coefficients of constant drivers are states that never move. The log-likelihood adds up, because it is a sum over
+//! one-step predictions.
+//!
+//! Everything here is on the model scale in the data's own size: no shift and no working unit.
+
+use crate::components::ForecastScale;
+use crate::error::Trouble;
+use crate::evaluation::Evaluation;
+use crate::filter::{self, Data, Keep, Pass};
+use crate::fit::Fit;
+use crate::forecast;
+use crate::quantile::normal_quantile;
+use crate::residual_checks as checks;
+use crate::results::{Forecast, Parameter, State};
+use crate::smoother::Smoothed;
+use crate::structure::{Link, Model, Role, Structure};
+use crate::system::{Op, System};
+use crate::transform::{Transform, Unit};
+
+/// What is kept of a fit. All fields are plain, so that it can be written down and read back.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Standing {
+    /// The structure.
+    pub structure: Structure,
+    /// Names of the drivers with constant coefficients.
+    pub drivers: Vec<String>,
+    /// The scale of the model.
+    pub transform: Transform,
+    /// The power of the transform was estimated.
+    pub power_estimated: bool,
+    /// All parameters, model scale.
+    pub parameters: Vec<Parameter>,
+    /// Filtered state of the last point, then the coefficients of the constant drivers.
+    pub state: Vec<f64>,
+    /// Its covariance: rows of the lower triangle, one after another.
+    pub covariance: Vec<f64>,
+    /// Grid points from the first to the last observation.
+    pub points: usize,
+    /// Observed points among them.
+    pub n: usize,
+    /// Diffuse elements.
+    pub diffuse: usize,
+    /// Diffuse log-likelihood of all observations so far, of the transformed data.
+    pub log_likelihood: f64,
+    /// The estimation met its stopping rule.
+    pub converged: bool,
+    /// Likelihood evaluations that took.
+    pub evaluations: usize,
+    /// The drivers after the last point as far as they are planned: constant coefficients first.
+    pub plan: Vec<Vec<f64>>,
+}
+
+/// The components of the last point, units as in [`crate::Components`].
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct LastPoint {
+    /// Level.
+    pub level: Option<(f64, f64)>,
+    /// Slope per step.
+    pub slope: Option<(f64, f64)>,
+    /// Sum of the seasonal patterns.
+    pub seasonal: Option<(f64, f64)>,
+    /// Cycle.
+    pub cycle: Option<(f64, f64)>,
+    /// Autoregression.
+    pub autoregression: Option<(f64, f64)>,
+}
+
+impl Fit {
+    /// Where the series stands after its last observation.
+    pub fn standing(&self) -> Standing {
+        let evaluation = &self.evaluation;
+        let (unit, drivers) = (self.scaling.unit, self.drivers.0.len());
+        let (mut state, mut covariance) = filtered_end(evaluation, drivers);
+        let size = state.len();
+        // To the data's own size: a drifting coefficient belongs to its driver as handed in.
+        let specs = evaluation.model().state_specs();
+        let factors: Vec<f64> = (0..size)
+            .map(|i| match specs.get(i).map(|spec| spec.role) {
+                Some(Role::Driver(driver)) => unit / self.scaling.drivers[driver],
+                _ => unit,
+            })
+            .collect();
+        for i in 0..size {
+            state[i] *= factors[i];
+            if specs.get(i).is_some_and(|spec| spec.role == Role::Level) {
+                state[i] += self.scaling.shift;
+            }
+            for j in 0..size {
+                covariance[i * size + j] *= factors[i] * factors[j];
+            }
+        }
+        let found = self.diagnostics();
+        let n = self.modelled.len();
+        Standing {
+            structure: self.structure.clone(),
+            drivers: self.drivers.0.clone(),
+            transform: self.transform,
+            power_estimated: self.power_estimated,
+            parameters: self.parameters().to_vec(),
+            state,
+            covariance: packed(&covariance, size),
+            points: n,
+            n: found.n,
+            diffuse: found.diffuse,
+            log_likelihood: found.log_likelihood,
+            converged: found.converged,
+            evaluations: found.evaluations,
+            plan: self.plan.iter().map(|column| column.get(n..).unwrap_or_default().to_vec()).collect(),
+        }
+    }
+}
+
+/// Mean and covariance of the last point's state given all observations, coefficients of constant drivers behind the states. The last point is
+/// observed: a history ends with an observation.
+fn filtered_end(evaluation: &Evaluation, drivers: usize) -> (Vec<f64>, Vec<f64>) {
+    let pass = evaluation.pass();
+    let (m, last) = (pass.m, pass.n.saturating_sub(1));
+    let size = m + drivers;
+    let gain = &pass.gains[last * m..(last + 1) * m];
+    // Rows of the pass are whitened already, its columns are not.
+    let innovation = pass.row(last);
+    let mut rows: Vec<Vec<f64>> = Vec::with_capacity(size);
+    for i in 0..m {
+        let mut row = pass.state_columns(last, i).to_vec();
+        pass.whiten(last, &mut row);
+        row.iter_mut().zip(innovation).for_each(|(to, from)| *to += gain[i] * from);
+        rows.push(row);
+    }
+    for driver in 0..drivers {
+        let mut row = vec![0.0; pass.width(pass.n)];
+        row[pass.driver_column(driver, drivers)] = 1.0;
+        pass.whiten(pass.n, &mut row);
+        rows.push(row);
+    }
+    let mut covariance = vec![0.0; size * size];
+    let p = &pass.covariances[last * m * m..(last + 1) * m * m];
+    for i in 0..m {
+        for j in 0..m {
+            covariance[i * size + j] = p[i * m + j] - gain[i] * gain[j] * pass.f[last];
+        }
+    }
+    for i in 0..size {
+        for j in 0..=i {
+            let white: f64 = rows[i][1..].iter().zip(&rows[j][1..]).map(|(a, b)| a * b).sum();
+            let value = covariance[i * size + j] + white;
+            (covariance[i * size + j], covariance[j * size + i]) = (value, value);
+        }
+    }
+    (rows.iter().map(|row| row[0]).collect(), covariance)
+}
+
+impl Standing {
+    /// Forecast of `horizon` steps with intervals of this coverage; `plan` as [`Self::plan`], or that one. Its parts are left empty.
+    ///
+    /// # Errors
+    /// As [`Fit::forecast`].
+    pub fn forecast(
+        &self,
+        horizon: usize,
+        coverage: f64,
+        plan: Option<&[Vec<f64>]>,
+    ) -> Result<Forecast, Trouble> {
+        let plan = plan.unwrap_or(&self.plan);
+        for (name, column) in self.driver_names().zip(plan) {
+            if let Some(step) = (0..horizon).find(|&s| !column.get(s).is_some_and(|v| v.is_finite())) {
+                return Err(Trouble::NoDriverPlan { driver: name.clone(), step: step + 1 });
+            }
+        }
+        let (_, system) = self.model_and_system()?;
+        let pass = self.predicted(&system);
+        let scale = ForecastScale {
+            transform: self.transform,
+            unit: 1.0,
+            shift: 0.0,
+            h: system.h,
+            z: normal_quantile(0.5 + 0.5 * coverage),
+        };
+        let data = Data { observed: &[], drivers: &[], drifting: plan };
+        scale
+            .forecast(horizon, |joint| forecast::run(&system, data, &pass, horizon, &[], joint))
+            .map(|(forecast, _)| forecast)
+    }
+
+    /// The standing after further points: `observed` on the grid from the point after the last one, NaN = missing, `drivers` over the same
+    /// points and on into the plan. Parameters stay. Points after the last new observation only change the plan.
+    ///
+    /// # Errors
+    /// A value that the model does not take, a driver without a value where the series has one.
+    pub fn advance(&self, observed: &[f64], drivers: &[Vec<f64>]) -> Result<Self, Trouble> {
+        let seen = observed.iter().rposition(|v| !v.is_nan()).map_or(0, |last| last + 1);
+        let rest = |from: usize| {
+            let planned = |column: &Vec<f64>| column.get(from..).unwrap_or_default().to_vec();
+            drivers.iter().map(planned).collect::<Vec<_>>()
+        };
+        if seen == 0 {
+            let plan = if drivers.iter().all(Vec::is_empty) { self.plan.clone() } else { rest(0) };
+            return Ok(Self { plan, ..self.clone() });
+        }
+        self.examine(&observed[..seen], drivers)?;
+        let modelled: Vec<f64> = observed[..seen].iter().map(|&y| self.transform.forward(y)).collect();
+        let filled: Vec<Vec<f64>> = drivers
+            .iter()
+            .map(|column| {
+                // No equation uses a driver where the series is missing.
+                (0..seen).map(|t| column.get(t).copied().filter(|v| v.is_finite()).unwrap_or(0.0)).collect()
+            })
+            .collect();
+        let (_, system) = self.model_and_system()?;
+        let start = self.predicted(&system);
+        let data = Data { observed: &modelled, drivers: &[], drifting: &filled };
+        let mut pass = Pass::default();
+        filter::resume(&system, data, (&start.a, &start.p), Keep::Everything, &mut pass).map_err(|_| {
+            Trouble::Numerical {
+                what: "the new observations take the likelihood out of the range of double precision; fit the series again",
+            }
+        })?;
+        let (m, last) = (pass.m, seen - 1);
+        let (gain, error) = (&pass.gains[last * m..], pass.row(last)[0]);
+        let state = (0..m).map(|i| pass.state_columns(last, i)[0] + gain[i] * error).collect();
+        let p = &pass.covariances[last * m * m..];
+        let covariance: Vec<f64> =
+            (0..m * m).map(|ij| p[ij] - gain[ij / m] * gain[ij % m] * pass.f[last]).collect();
+        Ok(Self {
+            state,
+            covariance: packed(&covariance, m),
+            points: self.points + seen,
+            n: self.n + pass.observed,
+            log_likelihood: self.log_likelihood + pass.log_likelihood,
+            plan: rest(seen),
+            ..self.clone()
+        })
+    }
+
+    /// Names of all drivers, constant coefficients first.
+    pub fn driver_names(&self) -> impl Iterator<Item = &String> {
+        self.drivers.iter().chain(&self.structure.drifting_drivers)
+    }
+
+    /// The components of the last point.
+    pub fn last_point(&self) -> LastPoint {
+        let Ok((model, system)) = self.model_and_system() else { return LastPoint::default() };
+        let part = |role: Role, unit: Unit| {
+            let specs = model.state_specs();
+            let is = |i: usize| specs.get(i).is_some_and(|spec| spec.role == role);
+            let weights: Vec<(usize, f64)> = match role {
+                Role::Slope => (0..specs.len()).filter(|&i| is(i)).map(|i| (i, 1.0)).take(1).collect(),
+                _ => system.fixed_loads.iter().copied().filter(|&(i, _)| is(i)).collect(),
+            };
+            if weights.is_empty() {
+                return None;
+            }
+            let mean = weights.iter().map(|&(i, w)| w * self.state[i]).sum::<f64>();
+            let mut variance = 0.0;
+            for &(i, a) in &weights {
+                variance += weights.iter().map(|&(j, b)| a * b * self.covariance_of(i, j)).sum::<f64>();
+            }
+            let smoothed = Smoothed { mean: vec![mean], variance: vec![variance.max(0.0)] };
+            let State { value, std_error } = self.transform.component(&smoothed, unit, 1.0, 0.0);
+            value.first().copied().zip(std_error.first().copied())
+        };
+        LastPoint {
+            level: part(Role::Level, Unit::Data),
+            slope: part(Role::Slope, Unit::Growth),
+            seasonal: part(Role::Season, Unit::Factor),
+            cycle: part(Role::Cycle, Unit::Factor),
+            autoregression: part(Role::Autoregression, Unit::Factor),
+        }
+    }
+
+    /// Coefficient of each driver at the last point with its standard error, model scale, in the order of [`Self::driver_names`].
+    pub fn coefficients(&self) -> Vec<(f64, f64)> {
+        let Ok((model, _)) = self.model_and_system() else { return Vec::new() };
+        let states = model.states();
+        let drifting = |driver: usize| {
+            model.state_specs().iter().position(|spec| spec.role == Role::Driver(driver)).unwrap_or(0)
+        };
+        let constant = (0..self.drivers.len()).map(|driver| states + driver);
+        let at = constant.chain((0..self.structure.drifting_drivers.len()).map(drifting));
+        at.map(|i| (self.state[i], self.covariance_of(i, i).max(0.0).sqrt())).collect()
+    }
+
+    /// AIC and BIC of all observations so far (DK 7.4).
+    pub fn criteria(&self) -> (f64, f64) {
+        let w = self.parameters.iter().filter(|p| !p.known).count() + usize::from(self.power_estimated);
+        let l = self.log_likelihood;
+        (checks::aic(l, w, self.diffuse), checks::bic(l, w, self.diffuse, self.n))
+    }
+
+    /// True when the vectors have the lengths that the structure asks for: what was read back is what was written.
+    pub fn is_consistent(&self) -> bool {
+        let model = self.structure.model();
+        let size = model.states() + self.drivers.len();
+        self.state.len() == size
+            && self.covariance.len() == size * (size + 1) / 2
+            && self.structure.drivers == self.drivers.len()
+            && self.plan.len() == self.drivers.len() + self.structure.drifting_drivers.len()
+            && model.parameters().len() == self.parameters.len()
+            && model.parameters().iter().zip(&self.parameters).all(|(spec, p)| spec.name == p.name)
+            && self.state.iter().chain(&self.covariance).all(|v| v.is_finite())
+    }
+
+    fn covariance_of(&self, i: usize, j: usize) -> f64 {
+        let (row, column) = (i.max(j), i.min(j));
+        self.covariance[row * (row + 1) / 2 + column]
+    }
+
+    /// The system with the coefficients of constant drivers as states, on the data's own size.
+    fn model_and_system(&self) -> Result<(Model, System), Trouble> {
+        let mut model = self.structure.model();
+        let mut system = model.system();
+        let values: Vec<f64> = self
+            .parameters
+            .iter()
+            .zip(model.parameters())
+            .map(|(p, spec)| match spec.link {
+                // A damping or period that shapes nothing: any value gives the same model.
+                Link::Between { low, high } if p.value.is_nan() => 0.5 * (low + high),
+                Link::Free if p.value.is_nan() => 0.0,
+                _ => p.value,
+            })
+            .collect();
+        model.fill(&values, &mut system).map_err(|_| Trouble::Numerical {
+            what: "the stored parameters leave the stationary region; fit the series again",
+        })?;
+        let (states, constant) = (system.states, self.drivers.len());
+        for load in &mut system.driver_loads {
+            load.1 += constant;
+        }
+        for driver in 0..constant {
+            system.transition.push(Op::Keep);
+            system.driver_loads.push((states + driver, driver));
+            system.q.push(0.0);
+        }
+        system.states += constant;
+        (system.diffuse, system.proper) = (Vec::new(), Vec::new());
+        Ok((model, system))
+    }
+
+    /// The prediction of the next point, as the end of a pass over no points.
+    fn predicted(&self, system: &System) -> Pass {
+        let size = self.state.len();
+        let mut pass = Pass::default();
+        pass.m = size;
+        pass.a = self.state.clone();
+        pass.p = (0..size * size).map(|ij| self.covariance_of(ij / size, ij % size)).collect();
+        system.forward(&mut pass.a, 1);
+        system.propagate(&mut pass.p);
+        system.disturb(&mut pass.p);
+        pass
+    }
+
+    /// What is wrong with new observations as such.
+    fn examine(&self, observed: &[f64], drivers: &[Vec<f64>]) -> Result<(), Trouble> {
+        match crate::fit::examine(observed) {
+            Err(Trouble::Constant { .. }) => {}
+            other => other?,
+        }
+        if let Some(index) = self.transform.refuses(observed) {
+            return Err(Trouble::NotPositive { index, value: observed[index], transform: self.transform });
+        }
+        for (name, column) in self.driver_names().zip(drivers) {
+            let lacks = |&t: &usize| {
+                !observed[t].is_nan()
+                    && !column.get(t).is_some_and(|v| v.is_finite() && v.abs() <= crate::fit::LARGEST)
+            };
+            if let Some(index) = (0..observed.len()).find(lacks) {
+                return Err(Trouble::DriverGap { driver: name.clone(), index });
+            }
+        }
+        Ok(())
+    }
+}
+
+/// The lower triangle of a square matrix, row by row.
+fn packed(matrix: &[f64], size: usize) -> Vec<f64> {
+    (0..size).flat_map(|i| matrix[i * size..=i * size + i].to_vec()).collect()
+}
