@@ -3,8 +3,8 @@
 //! - [`numbers`] and [`time`] read the columns, [`every`] the step of the grid,
 //! - [`groups`] finds where one series ends and the next begins,
 //! - [`series`] puts a series on its even grid,
-//! - [`result`] says what result tables look like; [`components_rows`], [`forecast_rows`] and
-//!   [`diagnostics_rows`] write theirs.
+//! - [`result`] says what result tables look like; [`components_rows`], [`forecast_rows`], [`diagnostics_rows`] and
+//!   [`state_space_rows`] write theirs.
 
 pub(crate) mod components_rows;
 pub(crate) mod diagnostics_rows;
@@ -15,6 +15,7 @@ pub(crate) mod groups;
 pub(crate) mod numbers;
 pub(crate) mod result;
 pub(crate) mod series;
+pub(crate) mod state_space_rows;
 pub(crate) mod time;
 mod time_grid;
 mod zone;

@@ -39,6 +39,10 @@ pub enum ColumnScope {
     EachDriver,
     /// Once per driver with a drifting coefficient.
     EachDriftingDriver,
+    /// Once per state of a system given as matrices, `<n>` in the name standing for its number.
+    EachState,
+    /// Once per disturbance of such a system.
+    EachDisturbance,
 }
 
 /// One column of a result.
@@ -93,6 +97,16 @@ impl ColumnSpec {
         self
     }
 
+    pub(crate) const fn each_state(mut self) -> Self {
+        self.scope = ColumnScope::EachState;
+        self
+    }
+
+    pub(crate) const fn each_disturbance(mut self) -> Self {
+        self.scope = ColumnScope::EachDisturbance;
+        self
+    }
+
     pub(crate) const fn part(mut self) -> Self {
         self.part = true;
         self
@@ -112,6 +126,10 @@ pub(crate) struct Layout {
     pub(crate) scale: Scale,
     /// The columns of the parts are wanted.
     pub(crate) parts: bool,
+    /// States and disturbances of a system given as matrices.
+    pub(crate) states: usize,
+    /// See `states`.
+    pub(crate) disturbances: usize,
 }
 
 impl Layout {
@@ -131,6 +149,8 @@ impl Layout {
                         );
                     }
                 }
+                ColumnScope::EachState => self.numbered(run, self.states, &mut columns),
+                ColumnScope::EachDisturbance => self.numbered(run, self.disturbances, &mut columns),
                 ColumnScope::EachDriftingDriver => {
                     for driver in &self.drifting_drivers {
                         columns.extend(
@@ -141,6 +161,12 @@ impl Layout {
             }
         }
         columns
+    }
+
+    fn numbered(&self, run: &[ColumnSpec], count: usize, columns: &mut Vec<(FieldRef, ColumnKind)>) {
+        for number in 1..=count {
+            columns.extend(run.iter().map(|spec| self.column(spec, &with_number(spec.name, number))));
+        }
     }
 
     fn column(&self, spec: &ColumnSpec, name: &str) -> (FieldRef, ColumnKind) {
@@ -182,6 +208,11 @@ impl ResultSchema {
     pub(crate) fn schema(&self) -> &SchemaRef {
         &self.schema
     }
+}
+
+/// The name of a column of one state or disturbance.
+pub(crate) fn with_number(name: &str, number: usize) -> String {
+    name.replace("<n>", &number.to_string())
 }
 
 /// The name of a column of one driver.

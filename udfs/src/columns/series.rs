@@ -19,12 +19,19 @@ pub(crate) struct Placed {
     grid: TimeGrid,
     /// Grid point of the first observation.
     first: usize,
+    /// Grid points after the last observation up to the last row.
+    tail: usize,
 }
 
 impl Placed {
     /// Points of the history: first to last observation, gaps included.
     pub(crate) fn len(&self) -> usize {
         self.series.observed.len()
+    }
+
+    /// Grid points after the last observation up to the last row.
+    pub(crate) fn tail(&self) -> usize {
+        self.tail
     }
 
     /// The grid.
@@ -113,6 +120,7 @@ pub(crate) fn place(
         series: Series { observed: spread(&group.observed, last), drivers, drifting_drivers },
         grid,
         first,
+        tail: final_point - last,
     })
 }
 

@@ -5,11 +5,12 @@
 //!
 //! - [`call`] sorts the arguments of a call as written in SQL,
 //! - [`constant`] evaluates those that are values,
-//! - [`settings`] turns them into what the operator works with,
+//! - [`settings`] turns them into what the operator works with, [`matrices`] those of `state_space`,
 //! - [`suggest`] finds the name that was meant.
 
 pub(crate) mod call;
 pub(crate) mod constant;
+mod matrices;
 pub(crate) mod settings;
 pub(crate) mod suggest;
 
@@ -48,7 +49,10 @@ pub struct Argument {
 }
 
 const ALL: &[Function] = &Function::ALL;
+/// Functions that fit a named structure.
+const NAMED: &[Function] = &[Function::Components, Function::Forecast, Function::Diagnostics];
 const AHEAD: &[Function] = &[Function::Forecast];
+const MATRICES: &[Function] = &[Function::StateSpace];
 
 const fn argument(
     name: &'static str,
@@ -97,78 +101,109 @@ pub const ARGUMENTS: &[Argument] = &[
         "drivers",
         Takes::Columns,
         ("numeric or boolean columns: one, a list in parentheses, or {'name': expression, …}", "none"),
-        "Regressors with constant coefficients, such as a price or a promotion flag.",
+        "Regressors with constant coefficients, such as a price or a promotion flag. In state_space: what stands in the place of the \
+         NULLs of z, in order.",
     ),
-    argument(
-        "drifting_drivers",
-        Takes::Columns,
-        ("like drivers", "none"),
-        "Regressors whose coefficient is a random walk.",
-    ),
-    argument(
-        "trend",
-        Takes::Value,
-        (
-            "'local level', 'local linear', 'smooth', 'damped', 'fixed level', 'fixed line', 'none', 'auto'",
-            "'auto'",
+    only(
+        argument(
+            "drifting_drivers",
+            Takes::Columns,
+            ("like drivers", "none"),
+            "Regressors whose coefficient is a random walk.",
         ),
-        "Form of the trend.",
+        NAMED,
     ),
-    argument(
-        "season",
-        Takes::Value,
-        ("a period in steps, a list of periods, 0 for none, or 'auto'", "'auto'"),
-        "Periods of the seasons. A period given here is in the model; 'auto' keeps what the data speak for. \
+    only(
+        argument(
+            "trend",
+            Takes::Value,
+            (
+                "'local level', 'local linear', 'smooth', 'damped', 'fixed level', 'fixed line', 'none', 'auto'",
+                "'auto'",
+            ),
+            "Form of the trend.",
+        ),
+        NAMED,
+    ),
+    only(
+        argument(
+            "season",
+            Takes::Value,
+            ("a period in steps, a list of periods, 0 for none, or 'auto'", "'auto'"),
+            "Periods of the seasons. A period given here is in the model; 'auto' keeps what the data speak for. \
          Fractional periods (52.18) go with harmonics.",
-    ),
-    argument(
-        "period",
-        Takes::Value,
-        ("a period in steps, or a list of periods", "from the grid"),
-        "What season => 'auto' considers, where the grid does not tell (integer time).",
-    ),
-    argument(
-        "harmonics",
-        Takes::Value,
-        (
-            "a count from 1 to half the period, or one count per season",
-            "dummy form, or a rule for long periods",
         ),
-        "Pairs of sine and cosine that make a seasonal pattern.",
+        NAMED,
     ),
-    argument(
-        "fixed_season",
-        Takes::Value,
-        ("true or false", "false"),
-        "true = the seasonal pattern does not drift.",
+    only(
+        argument(
+            "period",
+            Takes::Value,
+            ("a period in steps, or a list of periods", "from the grid"),
+            "What season => 'auto' considers, where the grid does not tell (integer time).",
+        ),
+        NAMED,
     ),
-    argument(
-        "cycle",
-        Takes::Value,
-        ("true, or (shortest, longest) period in steps", "false"),
-        "A stochastic damped cycle with a stationary start.",
+    only(
+        argument(
+            "harmonics",
+            Takes::Value,
+            (
+                "a count from 1 to half the period, or one count per season",
+                "dummy form, or a rule for long periods",
+            ),
+            "Pairs of sine and cosine that make a seasonal pattern.",
+        ),
+        NAMED,
     ),
-    argument(
-        "autoregression",
-        Takes::Value,
-        ("an order from 0 to 8", "0"),
-        "Order of a stationary autoregression beside the white irregular.",
+    only(
+        argument(
+            "fixed_season",
+            Takes::Value,
+            ("true or false", "false"),
+            "true = the seasonal pattern does not drift.",
+        ),
+        NAMED,
     ),
-    argument(
-        "transform",
-        Takes::Constant,
-        ("'none', 'log', 'log1p', 'box-cox', a power from 0 to 2, 'auto'", "'auto'"),
-        "The scale of the model. On 'log', and on 'log1p' which takes zeros, season and effects are factors and the slope is \
+    only(
+        argument(
+            "cycle",
+            Takes::Value,
+            ("true, or (shortest, longest) period in steps", "false"),
+            "A stochastic damped cycle with a stationary start.",
+        ),
+        NAMED,
+    ),
+    only(
+        argument(
+            "autoregression",
+            Takes::Value,
+            ("an order from 0 to 8", "0"),
+            "Order of a stationary autoregression beside the white irregular.",
+        ),
+        NAMED,
+    ),
+    only(
+        argument(
+            "transform",
+            Takes::Constant,
+            ("'none', 'log', 'log1p', 'box-cox', a power from 0 to 2, 'auto'", "'auto'"),
+            "The scale of the model. On 'log', and on 'log1p' which takes zeros, season and effects are factors and the slope is \
          growth per step. 'box-cox' estimates a power between 0 (the logarithm) and 1 (no transform), a number gives it; level, \
          fitted values and forecasts are then in the data's unit, all other parts on the transformed scale.",
+        ),
+        NAMED,
     ),
-    argument(
-        "known",
-        Takes::Value,
-        ("{'parameter': value, …} or named_struct('parameter', value, …)", "nothing known"),
-        "Parameters that are given and not estimated: the variances irregular, level, slope, season (season_7 and \
+    only(
+        argument(
+            "known",
+            Takes::Value,
+            ("{'parameter': value, …} or named_struct('parameter', value, …)", "nothing known"),
+            "Parameters that are given and not estimated: the variances irregular, level, slope, season (season_7 and \
          so on with several), cycle, autoregression, or the name of a drifting driver; and slope_damping, \
          cycle_damping, cycle_period, ar_1 and so on.",
+        ),
+        NAMED,
     ),
     argument(
         "every",
@@ -176,7 +211,10 @@ pub const ARGUMENTS: &[Argument] = &[
         ("an INTERVAL, or a whole number for integer time", "found from the data"),
         "Step of the grid.",
     ),
-    argument("estimate", Takes::Value, ("'likelihood'", "'likelihood'"), "How parameters are estimated."),
+    only(
+        argument("estimate", Takes::Value, ("'likelihood'", "'likelihood'"), "How parameters are estimated."),
+        NAMED,
+    ),
     argument(
         "on_trouble",
         Takes::Value,
@@ -188,7 +226,7 @@ pub const ARGUMENTS: &[Argument] = &[
         Takes::Value,
         ("a number above 0 and at most 0.999999", "0.9"),
         "Probability that an interval is to cover. No influence on diagnostics, which takes it all the same so \
-         that one list of arguments serves all three.",
+         that one list of arguments serves all of them.",
     ),
     only(
         argument(
@@ -208,6 +246,79 @@ pub const ARGUMENTS: &[Argument] = &[
         ),
         AHEAD,
     ),
+    only(
+        argument(
+            "z",
+            Takes::Constant,
+            ("a list with one number per state; NULL = the value of the next driver", REQUIRED),
+            "Loads of the states on the observation: y = d + z a + e.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "t",
+            Takes::Value,
+            ("a list of rows, one per state", REQUIRED),
+            "Transition: the states of the next step are c + t a + r n.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "r",
+            Takes::Constant,
+            ("a list of rows with one number per disturbance; a flat list is one column", "the identity"),
+            "Which disturbance moves which state.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "h",
+            Takes::Value,
+            ("a number that is not negative, or NULL", "NULL"),
+            "Variance of the irregular e; NULL = estimated.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "q",
+            Takes::Constant,
+            ("a list of rows, or a flat list for a diagonal; NULLs on the diagonal", "NULLs on the diagonal"),
+            "Covariance of the disturbances n; a NULL on its diagonal is a variance to estimate.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "a1",
+            Takes::Value,
+            ("a list with one number per state", "zeros"),
+            "Mean of the first states where they have a proper start.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "p1",
+            Takes::Value,
+            ("a list of rows, or a flat list for a diagonal; NULLs on the diagonal", "NULLs on the diagonal"),
+            "Covariance of the first states; NULL on the diagonal = a diffuse start.",
+        ),
+        MATRICES,
+    ),
+    only(
+        argument(
+            "c",
+            Takes::Value,
+            ("a list with one number per state", "zeros"),
+            "Constant of the transition.",
+        ),
+        MATRICES,
+    ),
+    only(argument("d", Takes::Value, ("a number", "0"), "Constant of the observation."), MATRICES),
 ];
 
 /// The arguments of one function.

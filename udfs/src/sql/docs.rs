@@ -64,6 +64,8 @@ fn column(spec: &'static ColumnSpec) -> ColumnDoc {
         (false, ColumnScope::Always) => None,
         (false, ColumnScope::EachDriver) => Some("one per driver"),
         (false, ColumnScope::EachDriftingDriver) => Some("one per drifting driver"),
+        (false, ColumnScope::EachState) => Some("one per state"),
+        (false, ColumnScope::EachDisturbance) => Some("one per disturbance"),
     };
     ColumnDoc { spec, units: spec.unit.text(Scale::Data).zip(spec.unit.text(Scale::Log)), condition }
 }
@@ -111,6 +113,22 @@ fn words(function: Function) -> (&'static str, &'static str, &'static str) {
                  at       => week,\n    \
                  observed => litres)\n\
              ORDER BY status, region, product",
+        ),
+        Function::StateSpace => (
+            "one point of one series, from its first observation to its last row",
+            "Any linear Gaussian system with one observation per step, given as matrices: y = d + z a + e with variance h, and from \
+             one step to the next a = c + t a + r n with covariance q. Variances left NULL are estimated, the states are smoothed, \
+             and points after the last observation, which are rows with NULL observed, hold their forecasts.",
+            "SELECT region, product, at, state_1 AS level, state_1_se, state_2 AS slope, h, q_1, q_2\n\
+             FROM state_space(\n    \
+                 data     => (SELECT region, product, week, litres FROM sales),\n    \
+                 per      => (region, product),\n    \
+                 at       => week,\n    \
+                 observed => litres,\n    \
+                 z        => [1.0, 0.0],\n    \
+                 t        => [[1.0, 1.0], [0.0, 1.0]],\n    \
+                 q        => [NULL, NULL])\n\
+             ORDER BY region, product, at",
         ),
     }
 }

@@ -1,7 +1,7 @@
 //! The relation functions this crate adds to SQL.
 
 use crate::columns::result::ColumnSpec;
-use crate::columns::{components_rows, diagnostics_rows, forecast_rows};
+use crate::columns::{components_rows, diagnostics_rows, forecast_rows, state_space_rows};
 
 /// A function that stands in FROM and takes a query.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -12,11 +12,13 @@ pub enum Function {
     Forecast,
     /// One row per series: what was fitted and whether to believe it.
     Diagnostics,
+    /// One row per grid point: the states of a system given as matrices.
+    StateSpace,
 }
 
 impl Function {
     /// All of them, in the order of the documentation.
-    pub const ALL: [Self; 3] = [Self::Components, Self::Forecast, Self::Diagnostics];
+    pub const ALL: [Self; 4] = [Self::Components, Self::Forecast, Self::Diagnostics, Self::StateSpace];
 
     /// Its name in SQL.
     pub fn name(self) -> &'static str {
@@ -24,6 +26,7 @@ impl Function {
             Self::Components => "components",
             Self::Forecast => "forecast",
             Self::Diagnostics => "diagnostics",
+            Self::StateSpace => "state_space",
         }
     }
 
@@ -38,6 +41,7 @@ impl Function {
             Self::Components => "Components",
             Self::Forecast => "Forecast",
             Self::Diagnostics => "Diagnostics",
+            Self::StateSpace => "StateSpace",
         }
     }
 
@@ -47,6 +51,7 @@ impl Function {
             Self::Components => "ComponentsExec",
             Self::Forecast => "ForecastExec",
             Self::Diagnostics => "DiagnosticsExec",
+            Self::StateSpace => "StateSpaceExec",
         }
     }
 
@@ -56,6 +61,7 @@ impl Function {
             Self::Components => components_rows::COLUMNS,
             Self::Forecast => forecast_rows::COLUMNS,
             Self::Diagnostics => diagnostics_rows::COLUMNS,
+            Self::StateSpace => state_space_rows::COLUMNS,
         }
     }
 }

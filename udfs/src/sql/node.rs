@@ -87,8 +87,12 @@ impl StructuralNode {
             TimeKind::try_new(&time).map_err(|error| bad_argument(function, "at", error.to_string()))?.axis();
         let values = Values { function, given: &options };
         values.settings(axis, &drivers, &drifting_drivers)?;
-        let layout =
-            Layout { time, drivers, drifting_drivers, scale: values.scale()?, parts: values.parts()? };
+        let (states, disturbances) = match function {
+            Function::StateSpace => values.form_size()?,
+            _ => (0, 0),
+        };
+        let (scale, parts) = (values.scale()?, values.parts()?);
+        let layout = Layout { time, drivers, drifting_drivers, scale, parts, states, disturbances };
 
         let keys = roles
             .keys

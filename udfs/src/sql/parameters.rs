@@ -32,7 +32,7 @@ pub(crate) fn typed(expr: Expr, argument: &Argument) -> Expr {
 fn usual_type(argument: &str) -> Option<DataType> {
     Some(match argument {
         "horizon" | "harmonics" | "autoregression" => DataType::Int64,
-        "season" | "period" | "coverage" => DataType::Float64,
+        "season" | "period" | "coverage" | "h" | "d" => DataType::Float64,
         "trend" | "on_trouble" | "estimate" => DataType::Utf8,
         "fixed_season" | "cycle" => DataType::Boolean,
         "every" => DataType::Interval(IntervalUnit::MonthDayNano),

@@ -131,7 +131,7 @@ impl Reader {
     fn result_bytes(&self, series: usize, rows: usize) -> usize {
         let job = &self.workshop.job;
         let result_rows = match job.function {
-            Function::Components => rows,
+            Function::Components | Function::StateSpace => rows,
             Function::Forecast => series * job.settings.horizon,
             Function::Diagnostics => series,
         };

@@ -12,7 +12,9 @@ use datafusion::error::{DataFusionError, Result};
 use datafusion::execution::memory_pool::MemoryReservation;
 use datafusion::physical_plan::ExecutionPlan;
 use datafusion::physical_plan::sorts::sort::SortExec;
-use stillwell_statespace::{Components, Diagnostics, Fit, Forecast, Trouble, Workspace, fit};
+use stillwell_statespace::{
+    Components, Diagnostics, Fit, Forecast, GeneralFit, GeneralForm, Trouble, Workspace, fit,
+};
 
 use super::arguments::settings::Settings;
 use super::error::failed_series;
@@ -23,7 +25,7 @@ use crate::columns::groups::Group;
 use crate::columns::result::{ResultRows, ResultSchema};
 use crate::columns::series::{Placed, Unplaced, place};
 use crate::columns::time::TimeKind;
-use crate::columns::{components_rows, diagnostics_rows, forecast_rows};
+use crate::columns::{components_rows, diagnostics_rows, forecast_rows, state_space_rows};
 
 /// Bytes that a fit takes per grid point while it lasts, roughly: a packed covariance, gains and smoothed
 /// states of a structure with some ten states.
@@ -59,6 +61,7 @@ enum Answer {
     Components(Components),
     Forecast(Forecast),
     Diagnostics { fit: Box<Fit>, diagnostics: Diagnostics, components: Option<Components> },
+    StateSpace(GeneralFit),
 }
 
 /// How many rows the operator will get, told when they are known.
@@ -160,6 +163,9 @@ impl Workshop {
     /// Fits a series and asks the fit what the function wants to know.
     fn solve(&self, placed: &Placed, workspace: &mut Workspace) -> Result<Answer, Trouble> {
         let settings = &self.job.settings;
+        if let Some(form) = &settings.form {
+            return self.solve_general(form, placed, workspace);
+        }
         let fit = fit(&placed.series, &settings.request_for(placed.grid().grid(), placed.len()), workspace)?;
         self.metrics.likelihood_evaluations.add(fit.evaluations());
         match self.job.function {
@@ -172,7 +178,24 @@ impl Workshop {
                 let components = if has_drivers { Some(fit.components(settings.coverage)?) } else { None };
                 Ok(Answer::Diagnostics { fit: Box::new(fit), diagnostics, components })
             }
+            Function::StateSpace => Err(Trouble::Numerical {
+                what: "the system was not handed to the operator; please report the query",
+            }),
         }
+    }
+
+    /// Fits a system given as matrices, up to the last row: points after the last observation are forecasts.
+    fn solve_general(
+        &self,
+        form: &GeneralForm,
+        placed: &Placed,
+        workspace: &mut Workspace,
+    ) -> Result<Answer, Trouble> {
+        let mut series = placed.series.clone();
+        series.observed.extend(std::iter::repeat_n(f64::NAN, placed.tail()));
+        let fit = form.fit(&series, self.job.settings.coverage, workspace)?;
+        self.metrics.likelihood_evaluations.add(fit.evaluations);
+        Ok(Answer::StateSpace(fit))
     }
 
     fn record(&self, group: &Group, trouble: Option<(&Trouble, &str)>) {
@@ -200,6 +223,7 @@ impl Workshop {
             Answer::Components(components) => {
                 components_rows::write(rows, &group.key, placed, components, &drivers);
             }
+            Answer::StateSpace(fit) => state_space_rows::write(rows, &group.key, placed, fit),
             Answer::Forecast(forecast) => {
                 let parts = (self.job.settings.parts, drivers.as_slice());
                 forecast_rows::write(rows, &group.key, placed, forecast, parts);
@@ -226,7 +250,9 @@ impl Workshop {
         rows: &mut ResultRows,
     ) {
         match self.job.function {
-            Function::Components => components_rows::write_trouble(rows, group, trouble),
+            Function::Components | Function::StateSpace => {
+                components_rows::write_trouble(rows, group, trouble);
+            }
             Function::Forecast => {
                 let grid = match placed {
                     Ok(placed) => Some((placed.grid(), placed.last_point())),

@@ -24,6 +24,8 @@ fn layout(parts: bool) -> Layout {
         drifting_drivers: vec!["promo".to_string()],
         scale: Scale::Log,
         parts,
+        states: 0,
+        disturbances: 0,
     }
 }
 

@@ -33,6 +33,8 @@ pub enum Unit {
     Slope,
     /// A variance on the model's scale.
     Variance,
+    /// Whatever the matrices make of a state.
+    State,
     /// Model's scale per unit of a driver.
     Coefficient,
     /// Steps of the grid.
@@ -70,6 +72,7 @@ impl Unit {
             (Self::Coefficient, Scale::Log) => "log per unit of the driver",
             (Self::Coefficient, Scale::BoxCox) => "transformed per unit of the driver",
             (Self::Coefficient, Scale::BySeries) => "data or log per unit of the driver",
+            (Self::State, _) => "state",
             (Self::Steps, _) => "steps",
             (Self::Count, _) => "count",
             (Self::TValue, _) => "t-value",

@@ -3,7 +3,7 @@
 use datafusion::error::Result;
 use stillwell_statespace::calendar::{Axis, Grid, Step};
 use stillwell_statespace::structure::Trend;
-use stillwell_statespace::{Request, SeasonRequest, TransformRequest};
+use stillwell_statespace::{GeneralForm, Request, SeasonRequest, TransformRequest};
 
 use super::constant::{Given, Value};
 use super::suggest::valid_and_nearest;
@@ -35,6 +35,8 @@ pub(crate) struct Settings {
     pub(crate) parts: bool,
     /// A series in trouble ends the query.
     pub(crate) fail: bool,
+    /// The system of `state_space`.
+    pub(crate) form: Option<GeneralForm>,
 }
 
 impl Settings {
@@ -60,7 +62,7 @@ pub(crate) struct Values<'a> {
 }
 
 impl Values<'_> {
-    fn given(&self, name: &str) -> Option<&Given> {
+    pub(super) fn given(&self, name: &str) -> Option<&Given> {
         self.given.iter().find(|(argument, _)| argument.name == name).map(|(_, given)| given)
     }
 
@@ -80,7 +82,7 @@ impl Values<'_> {
     }
 
     /// The complaint that a value is not what the argument takes.
-    fn wrong(&self, name: &str, value: &Value) -> datafusion::error::DataFusionError {
+    pub(super) fn wrong(&self, name: &str, value: &Value) -> datafusion::error::DataFusionError {
         let takes =
             ARGUMENTS.iter().find(|argument| argument.name == name).map_or("", |argument| argument.values);
         bad_argument(self.function, name, format!("takes {takes}, not {value}"))
@@ -123,6 +125,9 @@ impl Values<'_> {
     /// # Errors
     /// Unknown transforms.
     pub(crate) fn scale(&self) -> Result<Scale> {
+        if self.function == Function::StateSpace {
+            return Ok(Scale::Data);
+        }
         Ok(match self.transform()? {
             TransformRequest::None => Scale::Data,
             TransformRequest::Log | TransformRequest::Log1p => Scale::Log,
@@ -167,6 +172,9 @@ impl Values<'_> {
         drivers: &[String],
         drifting_drivers: &[String],
     ) -> Result<Settings> {
+        if self.function == Function::StateSpace {
+            return self.general(axis, drivers);
+        }
         self.word("estimate", &["likelihood"])?;
         let (season, seasons_from_grid) = self.season()?;
         let (cycle, cycle_from_series) = self.cycle(&season)?;
@@ -194,8 +202,29 @@ impl Values<'_> {
             coverage: self.coverage()?,
             horizon: self.horizon()?,
             parts: self.parts()?,
-            fail: self.word("on_trouble", &["report", "fail"])? == Some(1),
+            fail: self.fail()?,
+            form: None,
         })
+    }
+
+    /// The settings of `state_space`: its drivers stand in `z`, where they load on states.
+    fn general(&self, axis: Axis, drivers: &[String]) -> Result<Settings> {
+        let form = if self.waiting() { None } else { Some(self.form(drivers)?) };
+        Ok(Settings {
+            request: Request { drifting_drivers: drivers.to_vec(), ..Request::default() },
+            seasons_from_grid: false,
+            cycle_from_series: false,
+            every: self.every(axis)?,
+            coverage: self.coverage()?,
+            horizon: 0,
+            parts: false,
+            fail: self.fail()?,
+            form,
+        })
+    }
+
+    fn fail(&self) -> Result<bool> {
+        Ok(self.word("on_trouble", &["report", "fail"])? == Some(1))
     }
 
     fn trend(&self) -> Result<Option<Trend>> {

@@ -19,6 +19,8 @@ fn workshop(function: Function) -> Workshop {
         drifting_drivers: vec![],
         scale: Scale::BySeries,
         parts: false,
+        states: 0,
+        disturbances: 0,
     };
     let result = Arc::new(ResultSchema::new(vec![], layout.columns(function.columns())));
     let input = Arc::new(EmptyExec::new(Arc::clone(result.schema())));
