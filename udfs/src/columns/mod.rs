@@ -1,6 +1,7 @@
 //! Arrow columns in, series out, and result columns back: no SQL, no sessions.
 //!
 //! - [`numbers`] and [`time`] read the columns, [`every`] the step of the grid,
+//! - [`fit_value`] writes a fit down as a struct of plain types and reads it back,
 //! - [`groups`] finds where one series ends and the next begins,
 //! - [`series`] puts a series on its even grid,
 //! - [`result`] says what result tables look like; [`components_rows`], [`forecast_rows`], [`diagnostics_rows`] and
@@ -10,6 +11,7 @@ pub(crate) mod components_rows;
 pub(crate) mod diagnostics_rows;
 mod error;
 pub(crate) mod every;
+pub(crate) mod fit_value;
 pub(crate) mod forecast_rows;
 pub(crate) mod groups;
 pub(crate) mod numbers;
@@ -17,7 +19,7 @@ pub(crate) mod result;
 pub(crate) mod series;
 pub(crate) mod state_space_rows;
 pub(crate) mod time;
-mod time_grid;
+pub(crate) mod time_grid;
 mod zone;
 
 pub(crate) use error::ColumnError;

@@ -43,6 +43,11 @@ impl TimeKind {
         Ok(Self { data_type: data_type.clone(), axis, zone })
     }
 
+    /// The type of the column.
+    pub(crate) fn data_type(&self) -> &DataType {
+        &self.data_type
+    }
+
     /// What the stored integers count; `every` is read on this axis.
     pub(crate) fn axis(&self) -> Axis {
         self.axis

@@ -33,6 +33,17 @@ pub(crate) struct TimeGrid {
     line: Line,
 }
 
+/// A grid without its times.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(crate) struct GridRule {
+    /// Distance between neighbouring points.
+    pub(crate) step: Step,
+    /// Day of the month of a grid of months, 31 for the last one.
+    pub(crate) anchor_day: Option<u32>,
+    /// Shared time of day on the wall clock of the zone, in ticks; absent for other grids.
+    pub(crate) of_day: Option<i64>,
+}
+
 /// From stored times to grid times.
 #[derive(Debug, Clone)]
 enum Line {
@@ -68,6 +79,33 @@ impl TimeGrid {
             }
         };
         Ok(Self { grid, line })
+    }
+
+    /// What a grid is, beside one of its times: enough to go on from there.
+    pub(crate) fn rule(&self) -> GridRule {
+        GridRule {
+            step: self.grid.step(),
+            anchor_day: self.grid.anchor_day(),
+            of_day: match &self.line {
+                Line::Stored => None,
+                Line::Wall(wall) => Some(wall.of_day),
+            },
+        }
+    }
+
+    /// The grid of this rule whose point 0 is `last`; `None` where that time has no place on it.
+    pub(crate) fn resumed(kind: &TimeKind, rule: &GridRule, last: i64) -> Option<Self> {
+        let (axis, line, first) = match (kind.axis(), kind.zone(), rule.of_day) {
+            (axis @ Axis::Ticks { per_second }, Some(zone), Some(of_day)) => {
+                let wall = Wall { zone, per_second, of_day, exceptions: Vec::new() };
+                let first = wall.local(last)?;
+                (axis, Line::Wall(wall), first)
+            }
+            (Axis::Ticks { per_second }, Some(_), None) => (Axis::Instants { per_second }, Line::Stored, last),
+            (axis, ..) => (axis, Line::Stored, last),
+        };
+        let grid = Grid::resumed(axis, rule.step, rule.anchor_day, first);
+        (grid.index_of(first) == Some(0)).then_some(Self { grid, line })
     }
 
     /// The grid itself: its step, name and seasons. Its times are local ones on the wall clock.

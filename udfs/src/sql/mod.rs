@@ -12,6 +12,7 @@
 mod arguments;
 mod docs;
 mod error;
+mod fits;
 mod function;
 mod metrics;
 mod node;

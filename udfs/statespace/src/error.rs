@@ -99,6 +99,13 @@ pub enum Trouble {
         /// The grid in words.
         grid: String,
     },
+    /// A new row of a fit that is advanced does not come after what the fit has seen.
+    NotAfter {
+        /// Its time.
+        at: String,
+        /// The last observation of the fit.
+        last: String,
+    },
     /// No even grid fits the times.
     NoGrid {
         /// What speaks against one.
@@ -125,12 +132,13 @@ impl Trouble {
             Self::DuplicateTime { .. } => "duplicate time",
             Self::MissingTime { .. } => "missing time",
             Self::OffGrid { .. } => "off the grid",
+            Self::NotAfter { .. } => "not after",
             Self::NoGrid { .. } => "no grid",
         }
     }
 
     /// Every status there is, 'ok' first.
-    pub const STATUSES: [&'static str; 17] = [
+    pub const STATUSES: [&'static str; 18] = [
         "ok",
         "all missing",
         "too short",
@@ -147,6 +155,7 @@ impl Trouble {
         "duplicate time",
         "missing time",
         "off the grid",
+        "not after",
         "no grid",
     ];
 }
@@ -217,6 +226,10 @@ impl fmt::Display for Trouble {
             Self::OffGrid { at, grid } => write!(
                 f,
                 "the time {at} is not on the grid ({grid}); mend it, or state the step with every => …"
+            ),
+            Self::NotAfter { at, last } => write!(
+                f,
+                "the time {at} is not after {last}, the last observation of the fit; hand in new rows only, or fit the series again where its past was corrected"
             ),
             Self::NoGrid { why } => {
                 write!(f, "no even grid fits the times: {why}; state the step with every => …")

@@ -356,6 +356,7 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
         Trouble::DuplicateTime { at: "2020-02-03".to_owned() },
         Trouble::MissingTime { rows: 7 },
         Trouble::OffGrid { at: "2020-02-03".to_owned(), grid: "weeks".to_owned() },
+        Trouble::NotAfter { at: "2020-02-03".to_owned(), last: "2020-02-10".to_owned() },
         Trouble::NoGrid { why: "because".to_owned() },
     ];
     let statuses: Vec<&str> = std::iter::once("ok").chain(all.iter().map(Trouble::status)).collect();
@@ -375,7 +376,8 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
     has(&all[12], &["2020-02-03", "aggregate"]);
     has(&all[13], &["7 row"]);
     has(&all[14], &["2020-02-03", "weeks", "every =>"]);
-    has(&all[15], &["because", "every =>"]);
+    has(&all[15], &["2020-02-03", "2020-02-10", "new rows"]);
+    has(&all[16], &["because", "every =>"]);
 }
 
 #[test]

@@ -48,6 +48,24 @@ impl Grid {
         Self { axis, first, rule: Rule::Calendar { months: months.max(1), month, day, of_day } }
     }
 
+    /// The grid that goes on from `first`, one of the times of a grid with this step and [`Self::anchor_day`].
+    pub fn resumed(axis: Axis, step: Step, anchor_day: Option<u32>, first: i64) -> Self {
+        match (step, axis.split(first), anchor_day) {
+            (Step::Months(n), Some((date, of_day)), Some(day)) => {
+                Self::by_calendar(axis, n, first, (date.month_index(), day.clamp(1, MONTH_END), of_day))
+            }
+            _ => Self::with_step(axis, step, first),
+        }
+    }
+
+    /// The day of the month on which a grid of months stands, 31 for the last one; `None` for other grids.
+    pub fn anchor_day(&self) -> Option<u32> {
+        match self.rule {
+            Rule::Calendar { day, .. } => Some(day),
+            Rule::Every(_) => None,
+        }
+    }
+
     /// What the times count.
     pub fn axis(&self) -> Axis {
         self.axis

@@ -1,0 +1,124 @@
+//! A fit as a value: a struct of plain Arrow types that goes to Parquet and comes back bit for bit.
+//!
+//! The layout has a version, and fields are found by name: order, string views and large lists, which readers of files like to change, do not
+//! matter. Everything that tomorrow needs is in there ([`Standing`], the rule of the grid, the last time), and the observations are
+//! not. A series that could not be fitted is a value too, with its status and message and NULL elsewhere.
+
+mod read;
+mod write;
+
+use std::sync::Arc;
+
+use arrow::datatypes::{DataType, Field, FieldRef, Fields};
+use stillwell_statespace::Standing;
+
+use super::time::TimeKind;
+use super::time_grid::{GridRule, TimeGrid};
+
+pub(crate) use read::{FitColumn, ReadError};
+pub(crate) use write::FitBuilder;
+
+/// The version of the layout that is written, and the newest that can be read.
+pub(crate) const LAYOUT_VERSION: i32 = 1;
+
+/// One fit.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct FitValue {
+    /// 'ok', or what is wrong with the series.
+    pub(crate) status: String,
+    /// The sentence about it.
+    pub(crate) message: Option<String>,
+    /// What is known of the series; absent where it could not be fitted.
+    pub(crate) fitted: Option<FittedValue>,
+}
+
+/// What is known of a fitted series.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct FittedValue {
+    pub(crate) standing: Standing,
+    pub(crate) rule: GridRule,
+    /// Step of the grid in words.
+    pub(crate) every: String,
+    /// Stored times of the first and the last observation.
+    pub(crate) first_at: i64,
+    pub(crate) last_at: i64,
+}
+
+impl FittedValue {
+    /// The grid whose point 0 is the last observation.
+    pub(crate) fn grid(&self, time: &TimeKind) -> Option<TimeGrid> {
+        TimeGrid::resumed(time, &self.rule, self.last_at)
+    }
+}
+
+/// The type of a fit over times of this type.
+pub(crate) fn fit_type(time: &DataType) -> DataType {
+    DataType::Struct(fit_fields(time))
+}
+
+/// A nullable field.
+pub(super) fn field(name: &str, data_type: DataType) -> FieldRef {
+    Arc::new(Field::new(name, data_type, true))
+}
+
+/// A list of nullable items.
+pub(crate) fn list_of(data_type: DataType) -> DataType {
+    DataType::List(Arc::new(Field::new_list_field(data_type, true)))
+}
+
+fn season_fields() -> Fields {
+    Fields::from(vec![
+        field("period", DataType::Float64),
+        field("harmonics", DataType::Int32),
+        field("fixed", DataType::Boolean),
+    ])
+}
+
+/// Fields of a parameter, also in summaries.
+pub(crate) fn parameter_fields() -> Fields {
+    Fields::from(vec![
+        field("name", DataType::Utf8),
+        field("value", DataType::Float64),
+        field("std_error", DataType::Float64),
+        field("known", DataType::Boolean),
+    ])
+}
+
+/// The fields of the layout.
+fn fit_fields(time: &DataType) -> Fields {
+    Fields::from(vec![
+        field("layout_version", DataType::Int32),
+        field("status", DataType::Utf8),
+        field("message", DataType::Utf8),
+        field("first_at", time.clone()),
+        field("last_at", time.clone()),
+        field("every", DataType::Utf8),
+        field("step_units", DataType::Int64),
+        field("step_months", DataType::Int32),
+        field("anchor_day", DataType::Int32),
+        field("time_of_day", DataType::Int64),
+        field("points", DataType::Int64),
+        field("n", DataType::Int64),
+        field("diffuse", DataType::Int32),
+        field("trend", DataType::Utf8),
+        field("seasons", list_of(DataType::Struct(season_fields()))),
+        field("cycle_shortest", DataType::Float64),
+        field("cycle_longest", DataType::Float64),
+        field("autoregression", DataType::Int32),
+        field("drivers", list_of(DataType::Utf8)),
+        field("drifting_drivers", list_of(DataType::Utf8)),
+        field("transform", DataType::Utf8),
+        field("transform_power", DataType::Float64),
+        field("power_estimated", DataType::Boolean),
+        field("parameters", list_of(DataType::Struct(parameter_fields()))),
+        field("state", list_of(DataType::Float64)),
+        field("covariance", list_of(DataType::Float64)),
+        field("plan", list_of(list_of(DataType::Float64))),
+        field("log_likelihood", DataType::Float64),
+        field("converged", DataType::Boolean),
+        field("evaluations", DataType::Int64),
+    ])
+}
+
+#[cfg(test)]
+mod tests;

@@ -1,0 +1,335 @@
+//! The rows of each group until it is complete, then its fit.
+
+use std::sync::Arc;
+
+use datafusion::arrow::array::{
+    Array, ArrayRef, AsArray, BooleanArray, Float64Array, Int64Array, Int64Builder, ListArray, ListBuilder,
+};
+use datafusion::arrow::buffer::OffsetBuffer;
+use datafusion::arrow::datatypes::{DataType, Field, FieldRef, Float64Type, Int64Type};
+use datafusion::common::ScalarValue;
+use datafusion::error::{DataFusionError, Result};
+use datafusion::logical_expr::{Accumulator, EmitTo, GroupsAccumulator};
+use stillwell_statespace::{Trouble, Workspace};
+
+use super::structural_fit::{Inputs, NAME};
+use crate::columns::fit_value::{FitBuilder, FitValue, FittedValue};
+use crate::columns::groups::{Group, Groups, Rows};
+use crate::columns::series::{Placed, place};
+use crate::columns::{driver_struct, numbers};
+use crate::sql::arguments::settings::Settings;
+use crate::sql::error::{Caller, bad_argument, failed_series};
+use crate::sql::fitting::{fitted, message};
+
+/// Columns of the state: times, observed values and each driver, as lists of equal lengths.
+pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
+    let list = |what: String, item: DataType| {
+        let item = Arc::new(Field::new_list_field(item, true));
+        Arc::new(Field::new(format!("{name}[{what}]"), DataType::List(item), true))
+    };
+    let mut fields = vec![
+        list("at".to_string(), DataType::Int64),
+        list("observed".to_string(), DataType::Float64),
+    ];
+    fields.extend((0..drivers).map(|driver| list(format!("driver {driver}"), DataType::Float64)));
+    fields
+}
+
+/// Rows of one group, in the order in which they came.
+#[derive(Debug, Default)]
+struct GroupRows {
+    times: Vec<Option<i64>>,
+    observed: Vec<f64>,
+    drivers: Vec<Vec<f64>>,
+}
+
+impl GroupRows {
+    fn bytes(&self) -> usize {
+        let numbers = self.observed.capacity() + self.drivers.iter().map(Vec::capacity).sum::<usize>();
+        size_of::<Self>() + self.times.capacity() * size_of::<Option<i64>>() + numbers * size_of::<f64>()
+    }
+}
+
+/// The groups of one call.
+#[derive(Debug)]
+pub(super) struct FitGroups {
+    inputs: Inputs,
+    settings: Settings,
+    /// Rows that are the same in every column count once.
+    distinct: bool,
+    groups: Vec<GroupRows>,
+    workspace: Workspace,
+}
+
+impl FitGroups {
+    pub(super) fn new(inputs: Inputs, settings: Settings, distinct: bool) -> Self {
+        Self { inputs, settings, distinct, groups: Vec::new(), workspace: Workspace::new() }
+    }
+
+    /// Names of the drivers as the fit knows them: constant coefficients first.
+    fn drivers(&self) -> impl Iterator<Item = &String> {
+        self.settings.request.drivers.iter().chain(&self.settings.request.drifting_drivers)
+    }
+
+    fn grow(&mut self, total: usize) {
+        let drivers = self.inputs.drivers.len();
+        let empty = || GroupRows { drivers: vec![Vec::new(); drivers], ..GroupRows::default() };
+        self.groups.resize_with(total.max(self.groups.len()), empty);
+    }
+
+    fn add(&mut self, group: usize, time: Option<i64>, observed: f64, drivers: impl Iterator<Item = f64>) {
+        if let Some(rows) = self.groups.get_mut(group) {
+            rows.times.push(time);
+            rows.observed.push(observed);
+            rows.drivers.iter_mut().zip(drivers).for_each(|(all, new)| all.push(new));
+        }
+    }
+
+    /// The columns of a batch: times, observed, drivers.
+    fn read(&self, values: &[ArrayRef]) -> Result<(Vec<Option<i64>>, Vec<f64>, Vec<Vec<f64>>)> {
+        let argument = |at: usize| {
+            values.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
+        };
+        let times = self.inputs.time.read(argument(0)?);
+        let times = times.map_err(|error| bad_argument(Caller::Expression(NAME), "at", error.to_string()))?;
+        let observed = numbers::to_f64(argument(1)?)?;
+        let drivers = match values.get(3) {
+            Some(drivers) => driver_struct::values(drivers, self.drivers())?,
+            None => Vec::new(),
+        };
+        Ok((times, observed, drivers))
+    }
+
+    /// The rows in order of time, NULLs last; `None` without rows.
+    fn sorted(&self, rows: GroupRows) -> Result<Option<Group>> {
+        let mut order = (0..rows.times.len()).collect::<Vec<_>>();
+        let bits = |row: usize| {
+            let drivers = rows.drivers.iter().map(move |values| values[row].to_bits());
+            std::iter::once(rows.observed[row].to_bits()).chain(drivers)
+        };
+        let time = |row: usize| rows.times[row].map_or((true, 0), |time| (false, time));
+        order.sort_by(|&a, &b| time(a).cmp(&time(b)).then_with(|| bits(a).cmp(bits(b))));
+        if self.distinct {
+            order.dedup_by(|a, b| time(*a) == time(*b) && bits(*a).eq(bits(*b)));
+        }
+        let pick = |values: &[f64]| order.iter().map(|&row| values[row]).collect();
+        let sorted = Rows {
+            keys: Vec::new(),
+            times: order.iter().map(|&row| rows.times[row]).collect(),
+            observed: pick(&rows.observed),
+            drivers: rows.drivers.iter().map(|values| pick(values)).collect(),
+        };
+        let mut groups = Groups::try_new(&[])?;
+        groups.push(sorted)?;
+        groups.close();
+        Ok(groups.pop())
+    }
+
+    /// The fit of one group.
+    fn fit(&mut self, rows: GroupRows) -> Result<Option<FitValue>> {
+        let Some(group) = self.sorted(rows)? else { return Ok(None) };
+        let settings = &self.settings;
+        let placed = place(&group, &self.inputs.time, settings.every, settings.request.drivers.len());
+        let solved = match &placed {
+            Ok(placed) => fitted(placed, settings, &mut self.workspace, |fit| Ok(fit.standing())),
+            Err(unplaced) => Err(unplaced.trouble.clone()),
+        };
+        match (placed, solved) {
+            (Ok(placed), Ok(standing)) => match ends(&placed) {
+                Some((first_at, last_at)) => Ok(Some(FitValue {
+                    status: "ok".to_string(),
+                    message: None,
+                    fitted: Some(FittedValue {
+                        standing,
+                        rule: placed.grid().rule(),
+                        every: placed.grid().grid().describe(),
+                        first_at,
+                        last_at,
+                    }),
+                })),
+                None => self.trouble(&group, Some(&placed), &Trouble::AllMissing).map(Some),
+            },
+            (Err(unplaced), _) => self.trouble(&group, None, &unplaced.trouble).map(Some),
+            (Ok(placed), Err(trouble)) => self.trouble(&group, Some(&placed), &trouble).map(Some),
+        }
+    }
+
+    fn trouble(&self, group: &Group, placed: Option<&Placed>, trouble: &Trouble) -> Result<FitValue> {
+        let sentence = message(trouble, placed);
+        if self.settings.fail {
+            let format = |time: &i64| self.inputs.time.axis().format(*time);
+            let mut times = group.times.iter().flatten();
+            // An aggregate is not told the key of its group.
+            let words = match (times.next().map(format), times.next_back().map(format)) {
+                (Some(first), Some(last)) => format!("of {} rows from {first} to {last}", group.len()),
+                _ => format!("of {} row(s)", group.len()),
+            };
+            return Err(failed_series(Caller::Expression(NAME), &words, trouble, &sentence));
+        }
+        Ok(FitValue { status: trouble.status().to_string(), message: Some(sentence), fitted: None })
+    }
+
+    fn take(&mut self, emit: EmitTo) -> Vec<GroupRows> {
+        emit.take_needed(&mut self.groups)
+    }
+}
+
+/// Stored times of the first and the last observation.
+fn ends(placed: &Placed) -> Option<(i64, i64)> {
+    placed.time_at(0).zip(placed.len().checked_sub(1).and_then(|last| placed.time_at(last)))
+}
+
+impl GroupsAccumulator for FitGroups {
+    fn update_batch(
+        &mut self,
+        values: &[ArrayRef],
+        groups: &[usize],
+        filter: Option<&BooleanArray>,
+        total: usize,
+    ) -> Result<()> {
+        self.grow(total);
+        let (times, observed, drivers) = self.read(values)?;
+        for (row, &group) in groups.iter().enumerate() {
+            if filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)) {
+                self.add(group, times[row], observed[row], drivers.iter().map(|values| values[row]));
+            }
+        }
+        Ok(())
+    }
+
+    fn evaluate(&mut self, emit: EmitTo) -> Result<ArrayRef> {
+        let mut fits = FitBuilder::new(self.inputs.time.clone());
+        for rows in self.take(emit) {
+            let fit = self.fit(rows)?;
+            fits.push(fit);
+        }
+        Ok(fits.finish()?)
+    }
+
+    fn state(&mut self, emit: EmitTo) -> Result<Vec<ArrayRef>> {
+        let groups = self.take(emit);
+        let mut times = ListBuilder::new(Int64Builder::new());
+        for group in &groups {
+            times.append_value(group.times.iter().copied());
+        }
+        let lists = |of: &dyn Fn(&GroupRows) -> Vec<f64>| -> Result<ArrayRef> {
+            let columns = groups.iter().map(of).collect::<Vec<_>>();
+            let offsets = OffsetBuffer::from_lengths(columns.iter().map(Vec::len));
+            let values = Arc::new(Float64Array::from_iter_values(columns.into_iter().flatten()));
+            let item = Arc::new(Field::new_list_field(DataType::Float64, true));
+            Ok(Arc::new(ListArray::try_new(item, offsets, values, None)?))
+        };
+        let mut state: Vec<ArrayRef> = vec![Arc::new(times.finish()), lists(&|group| group.observed.clone())?];
+        for driver in 0..self.inputs.drivers.len() {
+            state.push(lists(&|group| group.drivers[driver].clone())?);
+        }
+        Ok(state)
+    }
+
+    fn merge_batch(
+        &mut self,
+        values: &[ArrayRef],
+        groups: &[usize],
+        total: usize,
+    ) -> Result<()> {
+        self.grow(total);
+        let Some((times, numbers)) = values.split_first() else { return Ok(()) };
+        let times = times.as_list::<i32>();
+        for (row, &group) in groups.iter().enumerate() {
+            if times.is_null(row) {
+                continue;
+            }
+            let of_row = times.value(row);
+            let of_row = of_row.as_primitive::<Int64Type>();
+            let columns = numbers
+                .iter()
+                .map(|column| column.as_list::<i32>().value(row).as_primitive::<Float64Type>().clone())
+                .collect::<Vec<_>>();
+            let Some((observed, drivers)) = columns.split_first() else { continue };
+            for at in 0..of_row.len() {
+                let time = of_row.is_valid(at).then(|| of_row.value(at));
+                self.add(group, time, observed.value(at), drivers.iter().map(|values| values.value(at)));
+            }
+        }
+        Ok(())
+    }
+
+    fn convert_to_state(&self, values: &[ArrayRef], filter: Option<&BooleanArray>) -> Result<Vec<ArrayRef>> {
+        let (times, observed, drivers) = self.read(values)?;
+        let rows = times.len();
+        let kept: Vec<bool> = (0..rows)
+            .map(|row| filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)))
+            .collect();
+        let one_each = |values: ArrayRef| -> Result<ArrayRef> {
+            let item = Arc::new(Field::new_list_field(values.data_type().clone(), true));
+            let offsets = OffsetBuffer::from_lengths(kept.iter().map(|kept| usize::from(*kept)));
+            Ok(Arc::new(ListArray::try_new(item, offsets, values, None)?))
+        };
+        let pick = |values: &[f64]| -> ArrayRef {
+            let picked = values.iter().zip(&kept).filter(|(_, kept)| **kept).map(|(value, _)| *value);
+            Arc::new(Float64Array::from_iter_values(picked))
+        };
+        let picked = times.iter().zip(&kept).filter(|(_, kept)| **kept).map(|(time, _)| *time);
+        let mut state = vec![one_each(Arc::new(picked.collect::<Int64Array>()))?, one_each(pick(&observed))?];
+        for values in &drivers {
+            state.push(one_each(pick(values))?);
+        }
+        Ok(state)
+    }
+
+    fn supports_convert_to_state(&self) -> bool {
+        true
+    }
+
+    fn size(&self) -> usize {
+        size_of::<Self>() + self.groups.iter().map(GroupRows::bytes).sum::<usize>()
+    }
+}
+
+/// The same for a query without GROUP BY: one group.
+#[derive(Debug)]
+pub(super) struct FitAccumulator {
+    groups: FitGroups,
+}
+
+impl FitAccumulator {
+    pub(super) fn new(groups: FitGroups) -> Self {
+        Self { groups }
+    }
+}
+
+impl Accumulator for FitAccumulator {
+    fn update_batch(&mut self, values: &[ArrayRef]) -> Result<()> {
+        let rows = values.first().map_or(0, |column| column.len());
+        self.groups.update_batch(values, &vec![0; rows], None, 1)
+    }
+
+    fn evaluate(&mut self) -> Result<ScalarValue> {
+        self.groups.grow(1);
+        // Asked again (by a window over a growing frame), the rows must still be there.
+        let rows = self.groups.groups.first().map(|rows| GroupRows {
+            times: rows.times.clone(),
+            observed: rows.observed.clone(),
+            drivers: rows.drivers.clone(),
+        });
+        let mut fits = FitBuilder::new(self.groups.inputs.time.clone());
+        let fit = self.groups.fit(rows.unwrap_or_default())?;
+        fits.push(fit);
+        ScalarValue::try_from_array(&fits.finish()?, 0)
+    }
+
+    fn state(&mut self) -> Result<Vec<ScalarValue>> {
+        self.groups.grow(1);
+        let state = GroupsAccumulator::state(&mut self.groups, EmitTo::All)?;
+        state.iter().map(|column| ScalarValue::try_from_array(column, 0)).collect()
+    }
+
+    fn merge_batch(&mut self, states: &[ArrayRef]) -> Result<()> {
+        let rows = states.first().map_or(0, |column| column.len());
+        GroupsAccumulator::merge_batch(&mut self.groups, states, &vec![0; rows], 1)
+    }
+
+    fn size(&self) -> usize {
+        GroupsAccumulator::size(&self.groups)
+    }
+}
