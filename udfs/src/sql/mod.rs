@@ -7,6 +7,8 @@
 //! 3. an [`operator`] that asks for rows by key and time; its [`stream`] cuts them into series, and
 //! 4. [`work`] fits these on blocking threads and writes the rows of the result.
 //!
+//! Functions for expressions (scalar, aggregate, window) stand in the lists of [`registry`].
+//!
 //! [`session`] puts all this into a session; [`docs`] describes the functions for people.
 
 mod arguments;
@@ -19,6 +21,7 @@ mod operator;
 mod parameters;
 mod planner;
 mod progress;
+mod registry;
 mod relation;
 mod session;
 mod stream;
