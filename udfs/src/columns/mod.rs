@@ -1,6 +1,6 @@
 //! Arrow columns in, series out, and result columns back: no SQL, no sessions.
 //!
-//! - [`numbers`] and [`time`] read the columns, [`every`] the step of the grid,
+//! - [`numbers`], [`driver_struct`] and [`time`] read the columns, [`every`] the step of the grid,
 //! - [`groups`] finds where one series ends and the next begins,
 //! - [`series`] puts a series on its even grid,
 //! - [`result`] says what result tables look like; [`components_rows`], [`forecast_rows`] and
@@ -8,6 +8,7 @@
 
 pub(crate) mod components_rows;
 pub(crate) mod diagnostics_rows;
+pub(crate) mod driver_struct;
 mod error;
 pub(crate) mod every;
 pub(crate) mod forecast_rows;

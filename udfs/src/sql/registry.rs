@@ -8,6 +8,8 @@ use std::sync::Arc;
 use datafusion::logical_expr::{AggregateUDF, ScalarUDF, WindowUDF};
 use datafusion::prelude::SessionContext;
 
+use super::structural_components::StructuralComponents;
+
 /// Scalar functions, one line per folder that has some.
 pub(crate) fn scalars() -> Vec<ScalarUDF> {
     let folders: Vec<Vec<ScalarUDF>> = vec![];
@@ -21,7 +23,7 @@ pub(crate) fn aggregates() -> Vec<AggregateUDF> {
 
 /// Window functions.
 pub(crate) fn windows() -> Vec<WindowUDF> {
-    vec![]
+    vec![WindowUDF::from(StructuralComponents::new())]
 }
 
 /// Puts all of them into a session; those that are there already are replaced by themselves.
@@ -34,4 +36,26 @@ pub(crate) fn register_functions(context: &SessionContext) {
 /// Adds `functions` to a list of a session that is still being built.
 pub(crate) fn add_to<F>(list: &mut Option<Vec<Arc<F>>>, functions: Vec<F>) {
     list.get_or_insert_default().extend(functions.into_iter().map(Arc::new));
+}
+
+#[cfg(test)]
+mod tests {
+    use std::collections::BTreeSet;
+
+    use super::*;
+
+    #[test]
+    fn names_are_ours_alone() {
+        let names = (scalars().iter().map(|function| function.name().to_string()))
+            .chain(aggregates().iter().map(|function| function.name().to_string()))
+            .chain(windows().iter().map(|function| function.name().to_string()))
+            .collect::<Vec<_>>();
+        assert_eq!(names.iter().collect::<BTreeSet<_>>().len(), names.len(), "{names:?}");
+        let state = SessionContext::new().state();
+        for name in names {
+            assert!(!state.scalar_functions().contains_key(&name), "the engine has a scalar {name}");
+            assert!(!state.aggregate_functions().contains_key(&name), "the engine has an aggregate {name}");
+            assert!(!state.window_functions().contains_key(&name), "the engine has a window function {name}");
+        }
+    }
 }
