@@ -1,6 +1,6 @@
 //! Arrow columns in, series out, and result columns back: no SQL, no sessions.
 //!
-//! - [`numbers`] and [`time`] read the columns, [`every`] the step of the grid,
+//! - [`numbers`], [`driver_struct`] and [`time`] read the columns, [`every`] the step of the grid,
 //! - [`fit_value`] writes a fit down as a struct of plain types and reads it back,
 //! - [`groups`] finds where one series ends and the next begins,
 //! - [`series`] puts a series on its even grid,
@@ -9,6 +9,7 @@
 
 pub(crate) mod components_rows;
 pub(crate) mod diagnostics_rows;
+pub(crate) mod driver_struct;
 mod error;
 pub(crate) mod every;
 pub(crate) mod fit_value;

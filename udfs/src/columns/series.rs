@@ -54,6 +54,13 @@ impl Placed {
         self.grid.time_at(self.first.checked_add(index)?)
     }
 
+    /// The point of the history that a stored time is, counted from the first observation; `None` before that, after the
+    /// last one, and off the grid.
+    pub(crate) fn index_of(&self, stored: i64) -> Option<usize> {
+        let index = self.grid.index_of(stored)?.checked_sub(self.first)?;
+        (index < self.len()).then_some(index)
+    }
+
     /// Times of all points of the history.
     pub(crate) fn times(&self) -> impl Iterator<Item = Option<i64>> {
         (0..self.len()).map(|index| self.time_at(index))

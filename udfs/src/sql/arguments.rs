@@ -5,12 +5,14 @@
 //!
 //! - [`call`] sorts the arguments of a call as written in SQL,
 //! - [`constant`] evaluates those that are values,
+//! - [`options`] reads them from the struct that functions in expressions take,
 //! - [`settings`] turns them into what the operator works with, [`matrices`] those of `state_space`,
 //! - [`suggest`] finds the name that was meant.
 
 pub(crate) mod call;
 pub(crate) mod constant;
 mod matrices;
+pub(crate) mod options;
 pub(crate) mod settings;
 pub(crate) mod suggest;
 

@@ -7,11 +7,15 @@
 //! 3. an [`operator`] that asks for rows by key and time; its [`stream`] cuts them into series, and
 //! 4. [`work`] fits these on blocking threads and writes the rows of the result.
 //!
+//! Functions for expressions (scalar, aggregate, window) stand in the lists of [`registry`]:
+//! [`structural_components`]. They share the arguments, the series and [`fitting`] with the operator.
+//!
 //! [`session`] puts all this into a session; [`docs`] describes the functions for people.
 
 mod arguments;
 mod docs;
 mod error;
+mod fitting;
 mod fits;
 mod function;
 mod metrics;
@@ -20,9 +24,11 @@ mod operator;
 mod parameters;
 mod planner;
 mod progress;
+mod registry;
 mod relation;
 mod session;
 mod stream;
+mod structural_components;
 mod work;
 
 pub use arguments::{ARGUMENTS, Argument, Takes, arguments_of};

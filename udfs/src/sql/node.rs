@@ -85,7 +85,7 @@ impl StructuralNode {
         let time = input.schema().qualified_field_from_column(&roles.at)?.1.data_type().clone();
         let axis =
             TimeKind::try_new(&time).map_err(|error| bad_argument(function, "at", error.to_string()))?.axis();
-        let values = Values { function, given: &options };
+        let values = Values { caller: function.into(), given: &options };
         values.settings(axis, &drivers, &drifting_drivers)?;
         let (states, disturbances) = match function {
             Function::StateSpace => values.form_size()?,
@@ -138,7 +138,7 @@ impl StructuralNode {
     /// # Errors
     /// Parameters that have no value, and mistakes in those that have got one.
     pub(crate) fn settings(&self) -> Result<Settings> {
-        let values = Values { function: self.function, given: &self.options };
+        let values = Values { caller: self.function.into(), given: &self.options };
         if let Some((argument, _)) = self.options.iter().find(|(_, given)| given.value().is_none()) {
             let what = "is a parameter without a value; EXECUTE the prepared statement with one";
             return Err(bad_argument(self.function, argument.name, what));

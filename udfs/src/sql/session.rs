@@ -10,12 +10,14 @@ use datafusion::execution::context::QueryPlanner;
 use datafusion::prelude::SessionContext;
 
 use super::planner::StructuralQueryPlanner;
+use super::registry;
 use super::relation::StructuralRelationPlanner;
 
 /// The engine's planner, by the only thing it shows of itself.
 const PLAIN_PLANNER: &str = "DefaultQueryPlanner";
 
-/// Makes `components`, `forecast` and `diagnostics` available in a session. Calling it twice does no harm.
+/// Makes all functions of this crate available in a session: those for FROM and those for expressions. Calling
+/// it twice does no harm.
 ///
 /// Register catalogs and URL tables first: bare table names in `data => …` are looked up in the catalogs
 /// that the session has now.
@@ -27,7 +29,10 @@ const PLAIN_PLANNER: &str = "DefaultQueryPlanner";
 pub fn register(context: &SessionContext) -> Result<()> {
     let state = context.state();
     match kind_of(state.query_planner().as_ref()) {
-        Planner::Ours => return Ok(()),
+        Planner::Ours => {
+            registry::register_functions(context);
+            return Ok(());
+        }
         Planner::Plain => {}
         Planner::Foreign(name) => {
             return Err(DataFusionError::Configuration(format!(
@@ -42,11 +47,13 @@ pub fn register(context: &SessionContext) -> Result<()> {
     register_relations(context)
 }
 
-/// Registers only the SQL side, for sessions with a query planner of their own.
+/// Registers only the SQL side, for sessions with a query planner of their own: the calls in FROM, and the
+/// scalar, aggregate and window functions, which need no planner.
 ///
 /// # Errors
 /// Whatever the session says.
 pub fn register_relations(context: &SessionContext) -> Result<()> {
+    registry::register_functions(context);
     let catalogs = Arc::clone(context.state().catalog_list());
     context.register_relation_planner(Arc::new(StructuralRelationPlanner::new(catalogs)))
 }
@@ -61,6 +68,9 @@ pub fn extend(mut builder: SessionStateBuilder) -> SessionStateBuilder {
         .get_or_insert_with(|| Arc::new(MemoryCatalogProviderList::new()) as Arc<dyn CatalogProviderList>);
     let planner = Arc::new(StructuralRelationPlanner::new(Arc::clone(catalogs)));
     builder.relation_planners().get_or_insert_default().insert(0, planner);
+    registry::add_to(builder.scalar_functions(), registry::scalars());
+    registry::add_to(builder.aggregate_functions(), registry::aggregates());
+    registry::add_to(builder.window_functions(), registry::windows());
     builder.with_query_planner(Arc::new(StructuralQueryPlanner))
 }
 

@@ -3,7 +3,6 @@
 //! Runs on a blocking thread. A series in trouble becomes rows that say so; a panic inside a fit is such a
 //! trouble too, of that series alone. Nothing here depends on which series share a chunk or a thread.
 
-use std::panic::{AssertUnwindSafe, catch_unwind};
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, Mutex, PoisonError};
 
@@ -13,11 +12,12 @@ use datafusion::execution::memory_pool::MemoryReservation;
 use datafusion::physical_plan::ExecutionPlan;
 use datafusion::physical_plan::sorts::sort::SortExec;
 use stillwell_statespace::{
-    Components, Diagnostics, Fit, Forecast, GeneralFit, GeneralForm, Trouble, Workspace, fit,
+    Components, Diagnostics, Fit, Forecast, GeneralFit, GeneralForm, Trouble, Workspace,
 };
 
 use super::arguments::settings::Settings;
 use super::error::failed_series;
+use super::fitting::{fitted, guarded, message};
 use super::function::Function;
 use super::metrics::StructuralMetrics;
 use super::progress::{Progress, TroubledSeries};
@@ -138,7 +138,10 @@ impl Workshop {
                 memory.try_grow(for_fit + for_rows * size_of::<f64>())?;
                 let _held = Held { memory, bytes: for_fit };
                 let _time = self.metrics.time_in_fits.timer();
-                guarded(workspace, |workspace| self.solve(placed, workspace))
+                match &settings.form {
+                    Some(form) => guarded(workspace, |workspace| self.solve_general(form, placed, workspace)),
+                    None => fitted(placed, settings, workspace, |fit| self.solve(fit)),
+                }
             }
             Err(unplaced) => Err(unplaced.trouble.clone()),
         };
@@ -160,13 +163,9 @@ impl Workshop {
         Ok(())
     }
 
-    /// Fits a series and asks the fit what the function wants to know.
-    fn solve(&self, placed: &Placed, workspace: &mut Workspace) -> Result<Answer, Trouble> {
+    /// Asks a fit what the function wants to know.
+    fn solve(&self, fit: Fit) -> Result<Answer, Trouble> {
         let settings = &self.job.settings;
-        if let Some(form) = &settings.form {
-            return self.solve_general(form, placed, workspace);
-        }
-        let fit = fit(&placed.series, &settings.request_for(placed.grid().grid(), placed.len()), workspace)?;
         self.metrics.likelihood_evaluations.add(fit.evaluations());
         match self.job.function {
             Function::Components => fit.components(settings.coverage).map(Answer::Components),
@@ -278,35 +277,6 @@ struct Held<'a> {
 impl Drop for Held<'_> {
     fn drop(&mut self) {
         self.memory.shrink(self.bytes);
-    }
-}
-
-/// Does the work on one series; a panic in it becomes the trouble of that series.
-fn guarded<T>(
-    workspace: &mut Workspace,
-    work: impl FnOnce(&mut Workspace) -> Result<T, Trouble>,
-) -> Result<T, Trouble> {
-    catch_unwind(AssertUnwindSafe(|| work(workspace))).unwrap_or_else(|_| {
-        // Whatever the panic left in the buffers is not to be trusted.
-        *workspace = Workspace::new();
-        Err(Trouble::Numerical { what: "the fit broke off with an internal error; please report the series" })
-    })
-}
-
-/// The sentence about a trouble, with the time of the point it is about.
-fn message(trouble: &Trouble, placed: Option<&Placed>) -> String {
-    let index = match trouble {
-        Trouble::NotFinite { index }
-        | Trouble::TooLarge { index, .. }
-        | Trouble::NotPositive { index, .. }
-        | Trouble::DriverGap { index, .. } => Some(*index),
-        // Steps count from 1, and step 1 follows the last point of the history.
-        Trouble::NoDriverPlan { step, .. } => placed.map(|placed| placed.len() + step.saturating_sub(1)),
-        _ => None,
-    };
-    match (index, index.zip(placed).and_then(|(index, placed)| placed.describe_time(index))) {
-        (Some(_), Some(time)) => format!("{trouble} (time of that point: {time})"),
-        _ => trouble.to_string(),
     }
 }
 

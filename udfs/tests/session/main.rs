@@ -6,6 +6,7 @@ mod calls;
 mod inputs;
 mod operator;
 mod plans;
+mod registration;
 mod reproducible;
 mod support;
 mod troubles;

@@ -27,7 +27,7 @@ impl Values<'_> {
         let m = self.open_vector("z")?.unwrap_or_default().len();
         if m == 0 || m > MOST_STATES {
             let what = format!("needs one number per state, from 1 to {MOST_STATES} of them, but has {m}");
-            return Err(bad_argument(self.function, "z", what));
+            return Err(bad_argument(self.caller, "z", what));
         }
         let g = match self.given("r").and_then(Given::value) {
             None => m,
@@ -44,7 +44,7 @@ impl Values<'_> {
         let (m, g) = self.form_size()?;
         let closed = |name: &str, values: Vec<Option<f64>>| {
             let numbers = values.into_iter().collect::<Option<Vec<f64>>>();
-            numbers.ok_or_else(|| bad_argument(self.function, name, "needs a number in every place, no NULL"))
+            numbers.ok_or_else(|| bad_argument(self.caller, name, "needs a number in every place, no NULL"))
         };
         let identity = |size: usize| {
             let place = move |at: usize| Some(f64::from(u8::from(at / size == at % size)));
@@ -63,7 +63,7 @@ impl Values<'_> {
             d: self.open_number("d")?.unwrap_or(0.0),
             drivers: drivers.to_vec(),
         };
-        form.check().map_err(|bad| bad_request(self.function, &bad))?;
+        form.check().map_err(|bad| bad_request(self.caller, &bad))?;
         Ok(form)
     }
 
@@ -106,7 +106,7 @@ impl Values<'_> {
                 if row.len() != columns {
                     let what =
                         format!("needs rows of {columns} number(s), but one has {}: {value}", row.len());
-                    return Err(bad_argument(self.function, name, what));
+                    return Err(bad_argument(self.caller, name, what));
                 }
                 matrix.extend(row);
             }
@@ -114,7 +114,7 @@ impl Values<'_> {
                 true => Ok(Some(matrix)),
                 false => {
                     let what = format!("needs {rows} row(s), but has {}: {value}", items.len());
-                    Err(bad_argument(self.function, name, what))
+                    Err(bad_argument(self.caller, name, what))
                 }
             };
         }
@@ -132,7 +132,7 @@ impl Values<'_> {
             let what = format!(
                 "needs {rows} row(s) of {columns} number(s), such as [[1.0, 0.0], [0.0, 1.0]]{short}, not {value}"
             );
-            return Err(bad_argument(self.function, name, what));
+            return Err(bad_argument(self.caller, name, what));
         }
         if flat != Flat::Diagonal {
             return Ok(Some(numbers));

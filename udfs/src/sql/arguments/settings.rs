@@ -10,8 +10,7 @@ use super::suggest::valid_and_nearest;
 use super::{ARGUMENTS, Argument, REQUIRED};
 use crate::columns::every;
 use crate::columns::result::Scale;
-use crate::sql::error::{bad_argument, bad_request};
-use crate::sql::function::Function;
+use crate::sql::error::{Caller, bad_argument, bad_request};
 
 /// Longest horizon of a forecast.
 const MAX_HORIZON: usize = stillwell_statespace::LONGEST_HORIZON;
@@ -57,7 +56,8 @@ impl Settings {
 /// The arguments of a call that are values, as far as they are known.
 #[derive(Debug, Clone, Copy)]
 pub(crate) struct Values<'a> {
-    pub(crate) function: Function,
+    /// Whose arguments they are.
+    pub(crate) caller: Caller,
     pub(crate) given: &'a [(&'static Argument, Given)],
 }
 
@@ -75,7 +75,7 @@ impl Values<'_> {
                     Some(argument) => format!("is NULL, but it is required: {}", argument.values),
                     None => "is NULL; leave it out for its default".to_owned(),
                 };
-                Err(bad_argument(self.function, name, remedy))
+                Err(bad_argument(self.caller, name, remedy))
             }
             value => Ok(value),
         }
@@ -85,7 +85,7 @@ impl Values<'_> {
     pub(super) fn wrong(&self, name: &str, value: &Value) -> datafusion::error::DataFusionError {
         let takes =
             ARGUMENTS.iter().find(|argument| argument.name == name).map_or("", |argument| argument.values);
-        bad_argument(self.function, name, format!("takes {takes}, not {value}"))
+        bad_argument(self.caller, name, format!("takes {takes}, not {value}"))
     }
 
     fn flag(&self, name: &str) -> Result<bool> {
@@ -104,7 +104,7 @@ impl Values<'_> {
                 Some(at) => Ok(Some(at)),
                 None => {
                     let valid = valid_and_nearest(&text, words);
-                    Err(bad_argument(self.function, name, format!("does not know '{text}'; {valid}")))
+                    Err(bad_argument(self.caller, name, format!("does not know '{text}'; {valid}")))
                 }
             },
             Some(other) => Err(self.wrong(name, &other)),
@@ -192,7 +192,7 @@ impl Values<'_> {
         };
         self.contradictions(&request)?;
         if !self.waiting() {
-            stillwell_statespace::check(&request).map_err(|bad| bad_request(self.function, &bad))?;
+            stillwell_statespace::check(&request).map_err(|bad| bad_request(self.caller, &bad))?;
         }
         Ok(Settings {
             request,
@@ -248,9 +248,11 @@ impl Values<'_> {
             _ => {}
         }
         if period.is_some() {
-            let what =
-                format!("is what season => 'auto' considers, but season is {season}; leave one of them out");
-            return Err(bad_argument(self.function, "period", what));
+            let what = format!(
+                "is what {} considers, but season is {season}; leave one of them out",
+                self.caller.written("season", "'auto'")
+            );
+            return Err(bad_argument(self.caller, "period", what));
         }
         if season.as_number() == Some(0.0) {
             return Ok((SeasonRequest::Given(Vec::new()), false));
@@ -301,7 +303,7 @@ impl Values<'_> {
             Some(number) if number.is_finite() => Ok((name.clone(), number)),
             _ => {
                 let what = format!("gives '{name}' the value {item}, but needs a finite number");
-                Err(bad_argument(self.function, "known", what))
+                Err(bad_argument(self.caller, "known", what))
             }
         };
         fields.iter().map(field).collect()
@@ -311,7 +313,7 @@ impl Values<'_> {
         let wrong = |value: &Value| self.wrong("every", value);
         let parse = |step: Result<Step, crate::columns::ColumnError>| {
             step.map(Some)
-                .map_err(|error| bad_argument(self.function, "every", format!("does not fit: {error}")))
+                .map_err(|error| bad_argument(self.caller, "every", format!("does not fit: {error}")))
         };
         match self.value("every")? {
             None => Ok(None),
@@ -348,8 +350,9 @@ impl Values<'_> {
         for name in ["harmonics", "fixed_season"] {
             let asked = if name == "harmonics" { request.harmonics.is_some() } else { request.fixed_season };
             if no_season && asked {
-                let what = "describes a season, but season => 0 leaves it out; drop one of the two";
-                return Err(bad_argument(self.function, name, what));
+                let none = self.caller.written("season", "0");
+                let what = format!("describes a season, but {none} leaves it out; drop one of the two");
+                return Err(bad_argument(self.caller, name, what));
             }
         }
         Ok(())

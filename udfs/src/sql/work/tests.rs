@@ -1,4 +1,4 @@
-//! A fit that breaks off, and cancellation.
+//! Cancellation, and what is counted.
 
 use datafusion::arrow::datatypes::DataType;
 use datafusion::execution::memory_pool::{MemoryConsumer, MemoryPool, UnboundedMemoryPool};
@@ -12,7 +12,7 @@ use crate::columns::result::{Layout, Scale};
 
 fn workshop(function: Function) -> Workshop {
     let time = TimeKind::try_new(&DataType::Int64).unwrap();
-    let settings = Values { function, given: &[] }.settings(time.axis(), &[], &[]).unwrap();
+    let settings = Values { caller: function.into(), given: &[] }.settings(time.axis(), &[], &[]).unwrap();
     let layout = Layout {
         time: DataType::Int64,
         drivers: vec![],
@@ -47,15 +47,6 @@ fn group() -> Group {
 fn memory() -> MemoryReservation {
     let pool: Arc<dyn MemoryPool> = Arc::new(UnboundedMemoryPool::default());
     MemoryConsumer::new("test").register(&pool)
-}
-
-#[test]
-fn a_panic_is_the_trouble_of_its_series_alone() {
-    let mut workspace = Workspace::new();
-    let none: [f64; 0] = [];
-    let trouble = guarded(&mut workspace, |_| Ok(none[none.len()])).unwrap_err();
-    assert_eq!(trouble.status(), "numerical trouble");
-    assert_eq!(guarded(&mut workspace, |_| Ok(7)), Ok(7), "the next series goes on with new buffers");
 }
 
 #[test]

@@ -1,0 +1,67 @@
+//! Fitting one series, whoever asks for it: an operator, a window, an aggregate.
+
+use std::panic::{AssertUnwindSafe, catch_unwind};
+
+use stillwell_statespace::{Fit, Trouble, Workspace, fit};
+
+use super::arguments::settings::Settings;
+use crate::columns::series::Placed;
+
+/// Fits a series and asks the fit; a panic in either becomes the trouble of this series.
+///
+/// # Errors
+/// What is wrong with the series.
+pub(crate) fn fitted<T>(
+    placed: &Placed,
+    settings: &Settings,
+    workspace: &mut Workspace,
+    ask: impl FnOnce(Fit) -> Result<T, Trouble>,
+) -> Result<T, Trouble> {
+    guarded(workspace, |workspace| {
+        let request = settings.request_for(placed.grid().grid(), placed.len());
+        ask(fit(&placed.series, &request, workspace)?)
+    })
+}
+
+/// Does the work on one series; a panic in it becomes the trouble of that series.
+pub(crate) fn guarded<T>(
+    workspace: &mut Workspace,
+    work: impl FnOnce(&mut Workspace) -> Result<T, Trouble>,
+) -> Result<T, Trouble> {
+    catch_unwind(AssertUnwindSafe(|| work(workspace))).unwrap_or_else(|_| {
+        // Whatever the panic left in the buffers is not to be trusted.
+        *workspace = Workspace::new();
+        Err(Trouble::Numerical { what: "the fit broke off with an internal error; please report the series" })
+    })
+}
+
+/// The sentence about a trouble, with the time of the point it is about.
+pub(crate) fn message(trouble: &Trouble, placed: Option<&Placed>) -> String {
+    let index = match trouble {
+        Trouble::NotFinite { index }
+        | Trouble::TooLarge { index, .. }
+        | Trouble::NotPositive { index, .. }
+        | Trouble::DriverGap { index, .. } => Some(*index),
+        // Steps count from 1, and step 1 follows the last point of the history.
+        Trouble::NoDriverPlan { step, .. } => placed.map(|placed| placed.len() + step.saturating_sub(1)),
+        _ => None,
+    };
+    match (index, index.zip(placed).and_then(|(index, placed)| placed.describe_time(index))) {
+        (Some(_), Some(time)) => format!("{trouble} (time of that point: {time})"),
+        _ => trouble.to_string(),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_panic_is_the_trouble_of_its_series_alone() {
+        let mut workspace = Workspace::new();
+        let none: [f64; 0] = [];
+        let trouble = guarded(&mut workspace, |_| Ok(none[none.len()])).unwrap_err();
+        assert_eq!(trouble.status(), "numerical trouble");
+        assert_eq!(guarded(&mut workspace, |_| Ok(7)), Ok(7), "the next series goes on with new buffers");
+    }
+}
