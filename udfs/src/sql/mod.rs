@@ -7,9 +7,12 @@
 //! 3. an [`operator`] that asks for rows by key and time; its [`stream`] cuts them into series, and
 //! 4. [`work`] fits these on blocking threads and writes the rows of the result.
 //!
+//! Beside them stand the scalar functions of the [`calendar`], from which a query makes drivers.
+//!
 //! [`session`] puts all this into a session; [`docs`] describes the functions for people.
 
 mod arguments;
+mod calendar;
 mod docs;
 mod error;
 mod function;

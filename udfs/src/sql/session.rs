@@ -9,13 +9,14 @@ use datafusion::execution::SessionStateBuilder;
 use datafusion::execution::context::QueryPlanner;
 use datafusion::prelude::SessionContext;
 
+use super::calendar;
 use super::planner::StructuralQueryPlanner;
 use super::relation::StructuralRelationPlanner;
 
 /// The engine's planner, by the only thing it shows of itself.
 const PLAIN_PLANNER: &str = "DefaultQueryPlanner";
 
-/// Makes `components`, `forecast` and `diagnostics` available in a session. Calling it twice does no harm.
+/// Makes `components`, `forecast`, `diagnostics` and the functions of the calendar available in a session. Calling it twice does no harm.
 ///
 /// Register catalogs and URL tables first: bare table names in `data => …` are looked up in the catalogs
 /// that the session has now.
@@ -47,6 +48,9 @@ pub fn register(context: &SessionContext) -> Result<()> {
 /// # Errors
 /// Whatever the session says.
 pub fn register_relations(context: &SessionContext) -> Result<()> {
+    for function in calendar::functions() {
+        context.register_udf(function);
+    }
     let catalogs = Arc::clone(context.state().catalog_list());
     context.register_relation_planner(Arc::new(StructuralRelationPlanner::new(catalogs)))
 }
@@ -61,6 +65,10 @@ pub fn extend(mut builder: SessionStateBuilder) -> SessionStateBuilder {
         .get_or_insert_with(|| Arc::new(MemoryCatalogProviderList::new()) as Arc<dyn CatalogProviderList>);
     let planner = Arc::new(StructuralRelationPlanner::new(Arc::clone(catalogs)));
     builder.relation_planners().get_or_insert_default().insert(0, planner);
+    builder
+        .scalar_functions()
+        .get_or_insert_default()
+        .extend(calendar::functions().into_iter().map(Arc::new));
     builder.with_query_planner(Arc::new(StructuralQueryPlanner))
 }
 
