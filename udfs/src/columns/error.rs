@@ -13,6 +13,8 @@ pub(crate) enum ColumnError {
     UnknownZone { zone: String },
     /// A time beyond a signed 64-bit integer; `what` is arrow's own sentence with the value.
     BeyondRange { what: String },
+    /// An instant so far away that no time zone has a wall clock for it.
+    NoWallClock { instant: String },
     /// A grid step that does not go with the time column.
     WrongStep { given: String, why: &'static str, accepted: &'static str },
 }
@@ -33,6 +35,10 @@ impl fmt::Display for ColumnError {
             Self::BeyondRange { what } => {
                 write!(f, "must fit in a signed 64-bit integer ({what}); filter such rows out")
             }
+            Self::NoWallClock { instant } => write!(
+                f,
+                "holds {instant}, which is beyond the years that time zones are known for; filter such rows out"
+            ),
             Self::WrongStep { given, why, accepted } => write!(f, "{given} {why}; {accepted}"),
         }
     }

@@ -21,20 +21,41 @@ const FOR_TIMESTAMPS: &str = "a TIMESTAMP column takes months, quarters or years
 /// What an integer column takes.
 const FOR_INTEGERS: &str = "an integer time column takes an integer of at least 1, such as every => 1";
 
+/// What the length of a period takes.
+const FOR_PERIODS: &str = "a period lasts whole days, weeks, months, quarters or years, such as INTERVAL '7 days' or INTERVAL '1 month'";
+
 /// The step of an interval on a time axis. Other interval types convert to this one without loss.
 ///
 /// # Errors
 /// [`ColumnError::WrongStep`]: zero or negative, months mixed with days or hours, not a whole number of the
 /// axis' units (hours on dates, microseconds on a column of seconds), too long, or an integer axis.
 pub(crate) fn from_interval(axis: Axis, interval: IntervalMonthDayNano) -> Result<Step, ColumnError> {
-    let IntervalMonthDayNano { months, days, nanoseconds } = interval;
-    let (unit, accepted) = match axis {
-        Axis::Days => (DAY_NANOS, FOR_DATES),
+    let fraction = "is not a whole number of the column's units";
+    match axis {
+        Axis::Days => whole(interval, DAY_NANOS, fraction, FOR_DATES),
         Axis::Ticks { per_second } | Axis::Instants { per_second } => {
-            (1_000_000_000 / i128::from(per_second.max(1)), FOR_TIMESTAMPS)
+            whole(interval, 1_000_000_000 / i128::from(per_second.max(1)), fraction, FOR_TIMESTAMPS)
         }
-        Axis::Integer => return Err(wrong(&interval, "has no length in plain numbers", FOR_INTEGERS)),
-    };
+        Axis::Integer => Err(wrong(&interval, "has no length in plain numbers", FOR_INTEGERS)),
+    }
+}
+
+/// The length of a period of whole days or months, wherever its first day comes from.
+///
+/// # Errors
+/// [`ColumnError::WrongStep`]: zero or negative, months mixed with days or hours, or no whole number of days.
+pub(crate) fn of_period(interval: IntervalMonthDayNano) -> Result<Step, ColumnError> {
+    whole(interval, DAY_NANOS, "is not a whole number of days", FOR_PERIODS)
+}
+
+/// The step of an interval in months, or else in units of so many nanoseconds.
+fn whole(
+    interval: IntervalMonthDayNano,
+    unit: i128,
+    fraction: &'static str,
+    accepted: &'static str,
+) -> Result<Step, ColumnError> {
+    let IntervalMonthDayNano { months, days, nanoseconds } = interval;
     let span = i128::from(days) * DAY_NANOS + i128::from(nanoseconds);
     if months != 0 && (days != 0 || nanoseconds != 0) {
         return Err(wrong(&interval, "mixes months with days or hours, so it has no even length", accepted));
@@ -46,7 +67,7 @@ pub(crate) fn from_interval(axis: Axis, interval: IntervalMonthDayNano) -> Resul
         return Ok(Step::Months(months));
     }
     if span % unit.max(1) != 0 {
-        return Err(wrong(&interval, "is not a whole number of the column's units", accepted));
+        return Err(wrong(&interval, fraction, accepted));
     }
     let too_long = |_| wrong(&interval, "is longer than the column's type can say", accepted);
     i64::try_from(span / unit.max(1)).map(Step::Every).map_err(too_long)

@@ -16,7 +16,7 @@ use super::time::TimeKind;
 use super::time_grid::{GridRule, TimeGrid};
 
 pub(crate) use read::{FitColumn, ReadError};
-pub(crate) use write::FitBuilder;
+pub(crate) use write::{FitBuilder, parameter_columns};
 
 /// The version of the layout that is written, and the newest that can be read.
 pub(crate) const LAYOUT_VERSION: i32 = 1;

@@ -2,12 +2,14 @@
 //!
 //! - [`numbers`], [`driver_struct`] and [`time`] read the columns, [`every`] the step of the grid,
 //! - [`fit_value`] writes a fit down as a struct of plain types and reads it back,
+//! - [`days`] reads times as the dates on the wall clock, for functions of the calendar,
 //! - [`groups`] finds where one series ends and the next begins,
 //! - [`series`] puts a series on its even grid,
 //! - [`result`] says what result tables look like; [`components_rows`], [`forecast_rows`], [`diagnostics_rows`] and
 //!   [`state_space_rows`] write theirs.
 
 pub(crate) mod components_rows;
+pub(crate) mod days;
 pub(crate) mod diagnostics_rows;
 pub(crate) mod driver_struct;
 mod error;

@@ -101,7 +101,9 @@ impl TimeGrid {
                 let first = wall.local(last)?;
                 (axis, Line::Wall(wall), first)
             }
-            (Axis::Ticks { per_second }, Some(_), None) => (Axis::Instants { per_second }, Line::Stored, last),
+            (Axis::Ticks { per_second }, Some(_), None) => {
+                (Axis::Instants { per_second }, Line::Stored, last)
+            }
             (axis, ..) => (axis, Line::Stored, last),
         };
         let grid = Grid::resumed(axis, rule.step, rule.anchor_day, first);

@@ -82,3 +82,13 @@ pub(crate) fn failed_series(
     let series = if key.is_empty() { "the series".to_string() } else { format!("series {key}") };
     DataFusionError::Execution(format!("{}: {series}: {}: {message}", caller.into().name(), trouble.status()))
 }
+
+/// A call of a scalar function with arguments of a number or type it does not take.
+pub(crate) fn wrong_call(function: &str, what: impl AsRef<str>) -> DataFusionError {
+    DataFusionError::Plan(format!("{function}: {}", what.as_ref()))
+}
+
+/// A value that a scalar function cannot work with. `what` continues the sentence "argument 'x' …".
+pub(crate) fn wrong_value(function: &str, argument: &str, what: impl AsRef<str>) -> DataFusionError {
+    DataFusionError::Execution(format!("{function}: argument '{argument}' {}", what.as_ref()))
+}

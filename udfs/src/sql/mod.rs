@@ -7,16 +7,18 @@
 //! 3. an [`operator`] that asks for rows by key and time; its [`stream`] cuts them into series, and
 //! 4. [`work`] fits these on blocking threads and writes the rows of the result.
 //!
-//! Functions for expressions (scalar, aggregate, window) stand in the lists of [`registry`]:
-//! [`structural_components`]. They share the arguments, the series and [`fitting`] with the operator.
+//! Functions for expressions (scalar, aggregate, window) stand in the lists of [`registry`]: those of the [`calendar`],
+//! from which a query makes drivers, [`fits`] as values, and [`structural_components`]. The last two share the arguments,
+//! the series and [`fitting`] with the operator.
 //!
 //! [`session`] puts all this into a session; [`docs`] describes the functions for people.
 
 mod arguments;
+mod calendar;
 mod docs;
 mod error;
-mod fitting;
 mod fits;
+mod fitting;
 mod function;
 mod metrics;
 mod node;

@@ -9,16 +9,17 @@ use datafusion::logical_expr::{AggregateUDF, ScalarUDF, WindowUDF};
 use datafusion::prelude::SessionContext;
 
 use super::structural_components::StructuralComponents;
+use super::{calendar, fits};
 
 /// Scalar functions, one line per folder that has some.
 pub(crate) fn scalars() -> Vec<ScalarUDF> {
-    let folders: Vec<Vec<ScalarUDF>> = vec![super::fits::scalars()];
+    let folders: Vec<Vec<ScalarUDF>> = vec![fits::scalars(), calendar::functions()];
     folders.into_iter().flatten().collect()
 }
 
 /// Aggregate functions.
 pub(crate) fn aggregates() -> Vec<AggregateUDF> {
-    super::fits::aggregates()
+    fits::aggregates()
 }
 
 /// Window functions.

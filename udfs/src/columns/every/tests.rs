@@ -64,3 +64,24 @@ fn refusals_say_the_value_the_rule_and_the_remedy() {
         assert!(said.starts_with(expected), "{said}");
     }
 }
+
+#[test]
+fn a_period_is_whole_days_or_months() {
+    let period = |months, days, nanoseconds| {
+        of_period(IntervalMonthDayNano { months, days, nanoseconds }).map_err(|error| error.to_string())
+    };
+    assert_eq!(period(1, 0, 0), Ok(Step::Months(1)));
+    assert_eq!(period(0, 7, 0), Ok(Step::Every(7)));
+    assert_eq!(period(0, 0, 24 * HOUR), Ok(Step::Every(1)));
+    for (months, days, nanoseconds, why) in [
+        (0, 0, HOUR, "INTERVAL '3600 seconds' is not a whole number of days; a period lasts whole days"),
+        (0, 1, HOUR, "INTERVAL '1 days 3600 seconds' is not a whole number of days"),
+        (0, 0, 0, "INTERVAL '0 days' does not lead forward; a period lasts"),
+        (-1, 0, 0, "INTERVAL '-1 months' does not lead forward"),
+        (0, -7, 0, "INTERVAL '-7 days' does not lead forward"),
+        (1, 1, 0, "INTERVAL '1 months 1 days' mixes months with days or hours"),
+    ] {
+        let said = period(months, days, nanoseconds).unwrap_err();
+        assert!(said.starts_with(why), "{said}");
+    }
+}

@@ -1,9 +1,10 @@
 //! Fits from a struct array.
 
 use std::fmt;
-use std::sync::Arc;
 
-use arrow::array::{Array, ArrayRef, AsArray, BooleanArray, Float64Array, Int32Array, Int64Array, StructArray};
+use arrow::array::{
+    Array, ArrayRef, AsArray, BooleanArray, Float64Array, Int32Array, Int64Array, StructArray,
+};
 use arrow::compute::cast;
 use arrow::datatypes::{DataType, Float64Type, Int32Type, Int64Type};
 use arrow::error::ArrowError;

@@ -40,10 +40,8 @@ impl FitBuilder {
     /// None that a value could cause; arrow's own signature.
     pub(crate) fn finish(self) -> Result<ArrayRef, ArrowError> {
         let fields = fit_fields(self.time.data_type());
-        let columns = fields
-            .iter()
-            .map(|field| self.column(field.name()))
-            .collect::<Result<Vec<_>, ArrowError>>()?;
+        let columns =
+            fields.iter().map(|field| self.column(field.name())).collect::<Result<Vec<_>, ArrowError>>()?;
         let valid = NullBuffer::from(self.rows.iter().map(Option::is_some).collect::<Vec<_>>());
         Ok(Arc::new(StructArray::try_new(fields, columns, Some(valid))?))
     }
@@ -133,7 +131,8 @@ impl FitBuilder {
 
     fn seasons(&self) -> Result<ArrayRef, ArrowError> {
         let none: &[Season] = &[];
-        let of = || self.fitted().map(|fit| fit.map_or(none, |fit| fit.standing.structure.seasons.as_slice()));
+        let of =
+            || self.fitted().map(|fit| fit.map_or(none, |fit| fit.standing.structure.seasons.as_slice()));
         let all = || of().flatten();
         let harmonics = |season: &Season| season.harmonics.and_then(|count| i32::try_from(count).ok());
         let columns: Vec<ArrayRef> = vec![
@@ -154,8 +153,12 @@ impl FitBuilder {
     fn column(&self, name: &str) -> Result<ArrayRef, ArrowError> {
         let structure = |fit: &FittedValue| fit.standing.structure.clone();
         Ok(match name {
-            "layout_version" => Arc::new(self.fits().map(|fit| fit.map(|_| LAYOUT_VERSION)).collect::<Int32Array>()),
-            "status" => Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>()),
+            "layout_version" => {
+                Arc::new(self.fits().map(|fit| fit.map(|_| LAYOUT_VERSION)).collect::<Int32Array>())
+            }
+            "status" => {
+                Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>())
+            }
             "message" => Arc::new(
                 self.fits().map(|fit| fit.and_then(|fit| fit.message.as_deref())).collect::<StringArray>(),
             ),

@@ -11,6 +11,7 @@ use super::{ARGUMENTS, Argument, REQUIRED};
 use crate::columns::every;
 use crate::columns::result::Scale;
 use crate::sql::error::{Caller, bad_argument, bad_request};
+use crate::sql::function::Function;
 
 /// Longest horizon of a forecast.
 const MAX_HORIZON: usize = stillwell_statespace::LONGEST_HORIZON;
@@ -125,7 +126,7 @@ impl Values<'_> {
     /// # Errors
     /// Unknown transforms.
     pub(crate) fn scale(&self) -> Result<Scale> {
-        if self.function == Function::StateSpace {
+        if self.caller == Caller::Relation(Function::StateSpace) {
             return Ok(Scale::Data);
         }
         Ok(match self.transform()? {
@@ -172,7 +173,7 @@ impl Values<'_> {
         drivers: &[String],
         drifting_drivers: &[String],
     ) -> Result<Settings> {
-        if self.function == Function::StateSpace {
+        if self.caller == Caller::Relation(Function::StateSpace) {
             return self.general(axis, drivers);
         }
         self.word("estimate", &["likelihood"])?;

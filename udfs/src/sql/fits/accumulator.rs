@@ -27,10 +27,8 @@ pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
         let item = Arc::new(Field::new_list_field(item, true));
         Arc::new(Field::new(format!("{name}[{what}]"), DataType::List(item), true))
     };
-    let mut fields = vec![
-        list("at".to_string(), DataType::Int64),
-        list("observed".to_string(), DataType::Float64),
-    ];
+    let mut fields =
+        vec![list("at".to_string(), DataType::Int64), list("observed".to_string(), DataType::Float64)];
     fields.extend((0..drivers).map(|driver| list(format!("driver {driver}"), DataType::Float64)));
     fields
 }
@@ -88,7 +86,9 @@ impl FitGroups {
     /// The columns of a batch: times, observed, drivers.
     fn read(&self, values: &[ArrayRef]) -> Result<(Vec<Option<i64>>, Vec<f64>, Vec<Vec<f64>>)> {
         let argument = |at: usize| {
-            values.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
+            values
+                .get(at)
+                .ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
         };
         let times = self.inputs.time.read(argument(0)?);
         let times = times.map_err(|error| bad_argument(Caller::Expression(NAME), "at", error.to_string()))?;
@@ -219,19 +219,15 @@ impl GroupsAccumulator for FitGroups {
             let item = Arc::new(Field::new_list_field(DataType::Float64, true));
             Ok(Arc::new(ListArray::try_new(item, offsets, values, None)?))
         };
-        let mut state: Vec<ArrayRef> = vec![Arc::new(times.finish()), lists(&|group| group.observed.clone())?];
+        let mut state: Vec<ArrayRef> =
+            vec![Arc::new(times.finish()), lists(&|group| group.observed.clone())?];
         for driver in 0..self.inputs.drivers.len() {
             state.push(lists(&|group| group.drivers[driver].clone())?);
         }
         Ok(state)
     }
 
-    fn merge_batch(
-        &mut self,
-        values: &[ArrayRef],
-        groups: &[usize],
-        total: usize,
-    ) -> Result<()> {
+    fn merge_batch(&mut self, values: &[ArrayRef], groups: &[usize], total: usize) -> Result<()> {
         self.grow(total);
         let Some((times, numbers)) = values.split_first() else { return Ok(()) };
         let times = times.as_list::<i32>();
@@ -275,10 +271,6 @@ impl GroupsAccumulator for FitGroups {
             state.push(one_each(pick(values))?);
         }
         Ok(state)
-    }
-
-    fn supports_convert_to_state(&self) -> bool {
-        true
     }
 
     fn size(&self) -> usize {

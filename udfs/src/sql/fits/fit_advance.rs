@@ -68,9 +68,11 @@ impl ScalarUDFImpl for FitAdvance {
         }
         match data_type(2) {
             DataType::Null => {}
-            list if item_type(list).is_some_and(|item| numbers::is_number(item) || *item == DataType::Null) => {}
+            list if item_type(list)
+                .is_some_and(|item| numbers::is_number(item) || *item == DataType::Null) => {}
             other => {
-                let what = format!("takes a list of numbers, such as array_agg(litres), but has type {other}");
+                let what =
+                    format!("takes a list of numbers, such as array_agg(litres), but has type {other}");
                 return Err(bad_argument(caller, "observed_list", what));
             }
         }
@@ -166,7 +168,8 @@ fn new_rows(
         if length == stored.len() {
             return Ok(());
         }
-        let what = format!("has {length} item(s), but at_list has {}; they go together one by one", stored.len());
+        let what =
+            format!("has {length} item(s), but at_list has {}; they go together one by one", stored.len());
         Err(bad_argument(caller, name, what))
     };
     same("observed_list", observed.len())?;
@@ -196,7 +199,11 @@ fn new_rows(
 }
 
 /// The fit after these rows.
-fn advanced(time: &TimeKind, fitted: &FittedValue, rows: &NewRows) -> std::result::Result<FittedValue, Refusal> {
+fn advanced(
+    time: &TimeKind,
+    fitted: &FittedValue,
+    rows: &NewRows,
+) -> std::result::Result<FittedValue, Refusal> {
     let Some(grid) = fitted.grid(time) else {
         let why = "the last time of the stored fit is not on its own grid".to_string();
         return Err((Trouble::NoGrid { why }, None));

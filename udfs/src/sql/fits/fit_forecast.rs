@@ -2,11 +2,11 @@
 
 use std::sync::{Arc, LazyLock};
 
+use datafusion::arrow::array::AsArray;
 use datafusion::arrow::array::{ArrayRef, Float64Array, Int64Array, ListArray, StringArray, StructArray};
 use datafusion::arrow::buffer::{NullBuffer, OffsetBuffer};
 use datafusion::arrow::compute::cast;
 use datafusion::arrow::datatypes::{DataType, Field, Fields, Float64Type, Int64Type};
-use datafusion::arrow::array::AsArray;
 use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::{
     ColumnarValue, Documentation, ScalarFunctionArgs, ScalarUDFImpl, Signature, TypeSignature, Volatility,
@@ -31,7 +31,8 @@ impl FitForecast {
     pub(crate) fn new() -> Self {
         let counts = (2..=4).map(TypeSignature::Any).collect();
         let mut signature = Signature::one_of(counts, Volatility::Immutable);
-        signature.parameter_names = Some(["fit", "horizon", "coverage", "drivers"].map(str::to_string).to_vec());
+        signature.parameter_names =
+            Some(["fit", "horizon", "coverage", "drivers"].map(str::to_string).to_vec());
         Self { signature }
     }
 }
@@ -42,10 +43,8 @@ const NUMBERS: [&str; 7] =
 
 /// Fields of one step.
 fn step_fields(time: &TimeKind) -> Fields {
-    let mut fields = vec![
-        Field::new("at", time.data_type().clone(), true),
-        Field::new("step", DataType::Int64, true),
-    ];
+    let mut fields =
+        vec![Field::new("at", time.data_type().clone(), true), Field::new("step", DataType::Int64, true)];
     fields.extend(NUMBERS.map(|name| Field::new(name, DataType::Float64, true)));
     fields.push(Field::new("status", DataType::Utf8, true));
     Fields::from(fields)
@@ -141,7 +140,8 @@ impl Steps {
 
     fn finish(self, lengths: Vec<usize>, valid: Vec<bool>) -> Result<ArrayRef> {
         let fields = step_fields(&self.time);
-        let mut columns: Vec<ArrayRef> = vec![self.time.array(&self.at)?, Arc::new(Int64Array::from(self.step))];
+        let mut columns: Vec<ArrayRef> =
+            vec![self.time.array(&self.at)?, Arc::new(Int64Array::from(self.step))];
         for numbers in self.numbers {
             columns.push(Arc::new(Float64Array::from(numbers)));
         }
@@ -158,7 +158,8 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
     let argument = |at: usize| {
         columns.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
     };
-    let bad_fit = |error: crate::columns::fit_value::ReadError| bad_argument(caller, "fit", error.to_string());
+    let bad_fit =
+        |error: crate::columns::fit_value::ReadError| bad_argument(caller, "fit", error.to_string());
     let fits = FitColumn::try_new(argument(0)?).map_err(bad_fit)?;
     let horizons = cast(argument(1)?, &DataType::Int64)?;
     let coverages = columns.get(2).map(|column| cast(column, &DataType::Float64)).transpose()?;
@@ -168,7 +169,9 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
     };
     let mut plans = Vec::with_capacity(names.len());
     for name in &names {
-        if let Some(values) = columns.get(3).map(|drivers| driver_values(drivers, name)).transpose()?.flatten() {
+        if let Some(values) =
+            columns.get(3).map(|drivers| driver_values(drivers, name)).transpose()?.flatten()
+        {
             plans.push((name, values));
         }
     }
@@ -185,14 +188,22 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
         let horizon = usize::try_from(horizon).ok().filter(|steps| (1..=LONGEST_HORIZON).contains(steps));
         let Some(horizon) = horizon else {
             let given = horizons[row].unwrap_or_default();
-            return Err(bad_argument(caller, "horizon", format!("takes a whole number from 1 to {LONGEST_HORIZON}, not {given}")));
+            return Err(bad_argument(
+                caller,
+                "horizon",
+                format!("takes a whole number from 1 to {LONGEST_HORIZON}, not {given}"),
+            ));
         };
         let coverage = match &coverages {
             Some(column) => column.as_primitive::<Float64Type>().iter().nth(row).flatten().unwrap_or(0.9),
             None => 0.9,
         };
         if !(coverage > 0.0 && coverage <= 0.999_999) {
-            return Err(bad_argument(caller, "coverage", format!("takes a number above 0 and at most 0.999999, not {coverage}")));
+            return Err(bad_argument(
+                caller,
+                "coverage",
+                format!("takes a number above 0 and at most 0.999999, not {coverage}"),
+            ));
         }
         lengths.push(horizon);
         valid.push(true);
@@ -212,9 +223,13 @@ fn forecast(
     plans: &[(&String, Vec<Vec<f64>>)],
     row: usize,
 ) -> Result<std::result::Result<Forecast, String>> {
-    let Some(fitted) = fit.fitted.as_ref().filter(|_| fit.status == "ok") else { return Ok(Err(fit.status.clone())) };
+    let Some(fitted) = fit.fitted.as_ref().filter(|_| fit.status == "ok") else {
+        return Ok(Err(fit.status.clone()));
+    };
     let standing = &fitted.standing;
-    if let Some((name, _)) = plans.iter().find(|(name, _)| !standing.driver_names().any(|driver| driver == *name)) {
+    if let Some((name, _)) =
+        plans.iter().find(|(name, _)| !standing.driver_names().any(|driver| driver == *name))
+    {
         let what = format!("names '{name}', which is no driver of the fit");
         return Err(bad_argument(Caller::Expression(NAME), "drivers", what));
     }

@@ -3,7 +3,7 @@
 use std::sync::{Arc, LazyLock};
 
 use datafusion::arrow::array::{
-    Array, ArrayRef, BooleanArray, Float64Array, Int64Array, ListArray, StringArray, StructArray,
+    ArrayRef, BooleanArray, Float64Array, Int64Array, ListArray, StringArray, StructArray,
 };
 use datafusion::arrow::buffer::{NullBuffer, OffsetBuffer};
 use datafusion::arrow::datatypes::{DataType, Field, Fields};
@@ -211,25 +211,32 @@ impl Table<'_> {
     }
 
     fn column(&self, name: &str) -> Result<ArrayRef> {
-        if let Some((state, of)) = STATES.iter().find(|(state, _)| name.strip_suffix("_se").unwrap_or(name) == *state) {
+        if let Some((state, of)) =
+            STATES.iter().find(|(state, _)| name.strip_suffix("_se").unwrap_or(name) == *state)
+        {
             let error = name != *state;
             return Ok(self.state(|last| of(last).map(|(value, se)| if error { se } else { value })));
         }
         let seasons = |fit: &FittedValue| fit.standing.structure.seasons.clone();
         Ok(match name {
-            "status" => Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>()),
+            "status" => {
+                Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>())
+            }
             "message" => Arc::new(
                 self.fits().map(|fit| fit.and_then(|fit| fit.message.as_deref())).collect::<StringArray>(),
             ),
             "trend" => self.words(|fit| Some(fit.standing.structure.trend.name().to_string())),
             "season" => self.words(|fit| {
-                let periods = seasons(fit).iter().map(|season| period_label(season.period)).collect::<Vec<_>>();
+                let periods =
+                    seasons(fit).iter().map(|season| period_label(season.period)).collect::<Vec<_>>();
                 Some(if periods.is_empty() { "none".to_string() } else { periods.join(", ") })
             }),
             "harmonics" => self.words(|fit| {
                 let counts = seasons(fit)
                     .iter()
-                    .map(|season| season.harmonics.map_or_else(|| "dummy".to_string(), |count| count.to_string()))
+                    .map(|season| {
+                        season.harmonics.map_or_else(|| "dummy".to_string(), |count| count.to_string())
+                    })
                     .collect::<Vec<_>>();
                 (!counts.is_empty()).then(|| counts.join(", "))
             }),
@@ -245,9 +252,9 @@ impl Table<'_> {
             "log_likelihood" => self.numbers(|fit| Some(fit.standing.log_likelihood)),
             "aic" => self.numbers(|fit| Some(fit.standing.criteria().0)),
             "bic" => self.numbers(|fit| Some(fit.standing.criteria().1)),
-            "converged" => {
-                Arc::new(self.fitted().map(|fit| fit.map(|fit| fit.standing.converged)).collect::<BooleanArray>())
-            }
+            "converged" => Arc::new(
+                self.fitted().map(|fit| fit.map(|fit| fit.standing.converged)).collect::<BooleanArray>(),
+            ),
             "evaluations" => self.counts(|fit| fit.standing.evaluations),
             other => {
                 return Err(DataFusionError::Internal(format!("{NAME}: the summary has no field '{other}'")));

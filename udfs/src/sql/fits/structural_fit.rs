@@ -1,6 +1,6 @@
 //! `structural_fit(at, observed [, options [, drivers]])`: the fit of a group of rows, as a value.
 
-use std::sync::{Arc, LazyLock};
+use std::sync::LazyLock;
 
 use datafusion::arrow::datatypes::{DataType, FieldRef};
 use datafusion::common::ScalarValue;

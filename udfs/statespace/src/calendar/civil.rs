@@ -43,7 +43,7 @@ impl Civil {
     pub(super) fn in_month(month_index: i64, day: u32) -> Self {
         let year = month_index.div_euclid(12);
         let month = month_index.rem_euclid(12) as u32 + 1;
-        Self { year, month, day: day.min(days_in_month(year, month)) }
+        Self { year, month, day: day.min(month_length(year, month)) }
     }
 
     /// Days since 1970-01-01; `None` beyond `i64`.
@@ -65,12 +65,18 @@ impl Civil {
 
     /// True on the last day of a month.
     pub(super) fn is_month_end(self) -> bool {
-        self.day == days_in_month(self.year, self.month)
+        self.day == month_length(self.year, self.month)
     }
 }
 
+/// Length in days of the month that a day (days since 1970-01-01) lies in: 28 to 31.
+pub fn days_in_month(day: i64) -> u32 {
+    let Civil { year, month, .. } = Civil::from_days(day);
+    month_length(year, month)
+}
+
 /// Length of a month (Gregorian leap rule: every fourth year, but of the centuries only every fourth).
-fn days_in_month(year: i64, month: u32) -> u32 {
+fn month_length(year: i64, month: u32) -> u32 {
     match month {
         2 if year % 4 == 0 && (year % 100 != 0 || year % 400 == 0) => 29,
         2 => 28,

@@ -1,12 +1,14 @@
 //! Tests of the calendar. Dates are those of ISO 8601 (proleptic Gregorian calendar).
 
 mod civil;
+mod easter;
 mod finding;
+mod periods;
 mod properties;
 mod stepping;
 
 use super::civil::Civil;
-use super::{Axis, Grid, Step};
+use super::{Axis, Dates, EASTER_YEARS, Grid, Period, Step, days_in_month, easter_sunday};
 use crate::Trouble;
 
 /// Seconds since 1970-01-01T00:00:00.
