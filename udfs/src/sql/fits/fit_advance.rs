@@ -307,9 +307,9 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     .with_sql_example(
         "SELECT region, product, fit_advance(fit, weeks, litres)['last_at'] AS last_at\n\
          FROM (SELECT region, product, structural_fit(week, litres, {'trend': 'local level'}) AS fit\n      \
-               FROM sales WHERE week < DATE '2024-01-01' GROUP BY region, product)\n\
+               FROM sales WHERE week < DATE '2024-01-01' GROUP BY region, product) AS old\n\
          JOIN (SELECT region, product, array_agg(week) AS weeks, array_agg(litres) AS litres\n      \
-               FROM sales WHERE week >= DATE '2024-01-01' GROUP BY region, product) USING (region, product)\n\
+               FROM sales WHERE week >= DATE '2024-01-01' GROUP BY region, product) AS new USING (region, product)\n\
          ORDER BY region, product",
     )
     .build()
