@@ -168,9 +168,10 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
         "A struct of numeric or boolean columns; the names of its fields are the names of the drivers.",
     )
     .with_sql_example(
-        "SELECT region, product, week, litres, round(s['level'], 1) AS level, s['effect_of_price'] AS effect_of_price\n\
-         FROM (SELECT *, structural_components(week, litres, {'trend': 'local linear', 'season': 4}, {'price': price})\n          \
-               OVER (PARTITION BY region, product) AS s FROM sales)\n\
+        "SELECT region, product, week, litres, round(s['level'], 1) AS level, round(s['effect_of_price'], 1) AS effect_of_price\n\
+         FROM (SELECT *, structural_components(week, litres, {'trend': 'local linear'}, {'price': price})\n              \
+                         OVER (PARTITION BY region, product) AS s\n      \
+               FROM sales)\n\
          ORDER BY region, product, week",
     )
     .build()
