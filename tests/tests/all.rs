@@ -4,10 +4,12 @@
 //! - [`published`] holds figures of the literature against the answers of queries;
 //! - [`outlook`] runs the demo job once; [`truth`] holds its answers against what the demo was drawn from, and
 //!   [`demo_output`] looks at the files it wrote;
-//! - [`readme`] runs the SQL of the documents and holds what the README shows against it;
+//! - [`examples`] runs the example of every function;
+//! - [`readme`] runs the SQL of the README and holds what it shows against it;
 //! - [`memory`] fits under a small memory limit.
 
 mod demo_output;
+mod examples;
 mod jobs;
 mod memory;
 mod outlook;

@@ -1,5 +1,5 @@
 //! Structural time series in SQL: level, slope, season, forecasts and checks of every series in a table,
-//! as relation functions of a [DataFusion](https://datafusion.apache.org) session.
+//! as functions of a [DataFusion](https://datafusion.apache.org) session.
 //!
 //! ```
 //! use datafusion::prelude::SessionContext;
@@ -29,7 +29,8 @@
 //!
 //! [`register`] adds the functions to a session, [`extend`] to one that is still being built. A host with a
 //! query planner of its own adds [`StructuralExtensionPlanner`] to it. [`Progress`] lets a host watch.
-//! [`functions`] describes every function, argument and column.
+//! [`functions`] describes every function that stands in FROM, with its arguments and columns,
+//! [`value_functions`] those that stand in expressions.
 
 mod columns;
 mod sql;
@@ -37,6 +38,7 @@ mod sql;
 pub use columns::result::{ColumnKind, ColumnScope, ColumnSpec, Scale, Unit};
 pub use sql::{
     ARGUMENTS, Argument, ColumnDoc, Function, FunctionDoc, Progress, StructuralExtensionPlanner,
-    StructuralQueryPlanner, StructuralRelationPlanner, Takes, TroubledSeries, arguments_of, extend,
-    functions, register, register_relations, statuses,
+    StructuralQueryPlanner, StructuralRelationPlanner, Takes, TroubledSeries, ValueFunctionDoc,
+    ValueFunctionKind, arguments_of, extend, functions, register, register_relations, statuses,
+    value_functions,
 };

@@ -2,27 +2,62 @@
 
 use std::fmt::Write;
 
-use stillwell::{ARGUMENTS, Argument, ColumnDoc, ColumnKind, Function, FunctionDoc};
+use stillwell::{ARGUMENTS, Argument, ColumnDoc, ColumnKind, Function, FunctionDoc, ValueFunctionDoc};
 
 /// The whole page.
-pub(super) fn page(all: &[FunctionDoc]) -> String {
+pub(super) fn page(relations: &[FunctionDoc], values: &[ValueFunctionDoc]) -> String {
     let mut page = String::from(
         "<!-- Printed by `stillwell functions --markdown`; to change it, change the tables it is made from. -->\n\n\
          # SQL reference\n\n\
-         The functions stand in FROM and take a query. Arguments are named (`=>`) and may stand in any order. An \
-         unknown argument or value is an error that lists the valid ones.\n\n\
+         Some functions stand in FROM and take a query. Their [arguments](#arguments) are named (`=>`) and may stand \
+         in any order. An unknown argument or value is an error that lists the valid ones.\n\n\
          | function | one row is |\n|---|---|\n",
     );
-    for doc in all {
+    for doc in relations {
         let name = doc.function.name();
         row(&mut page, &[&format!("[`{name}`](#{name})"), doc.one_row_is]);
     }
+    page.push_str(
+        "\nOthers stand in expressions. Their arguments go by position, or by name (`=>`) as long as none before them is \
+         left out.\n\n| function | kind | what it gives |\n|---|---|---|\n",
+    );
+    for doc in values {
+        row(&mut page, &[&format!("[`{0}`](#{0})", doc.name), doc.kind.name(), doc.summary()]);
+    }
     arguments(&mut page);
-    for doc in all {
+    for doc in relations {
         function(&mut page, doc);
     }
     trouble(&mut page);
+    for section in values.chunk_by(|a, b| a.section == b.section) {
+        if let Some(first) = section.first() {
+            let _ = write!(page, "\n## {}\n", first.section);
+            if let Some(description) = first.section_description {
+                let _ = write!(page, "\n{description}\n");
+            }
+        }
+        section.iter().for_each(|doc| value_function(&mut page, doc));
+    }
     page
+}
+
+fn value_function(page: &mut String, doc: &ValueFunctionDoc) {
+    let _ = write!(
+        page,
+        "\n### {}\n\n```text\n{}\n```\n\n{}\n\n",
+        doc.name,
+        doc.syntax.join("\n"),
+        doc.description
+    );
+    page.push_str("| argument | takes |\n|---|---|\n");
+    for (name, meaning) in &doc.arguments {
+        row(page, &[&format!("`{name}`"), meaning]);
+    }
+    let _ = write!(page, "\n```sql\n{}\n```\n", doc.example);
+    if !doc.related.is_empty() {
+        let related = doc.related.iter().map(|name| format!("[`{name}`](#{name})")).collect::<Vec<_>>();
+        let _ = write!(page, "\nSee also {}.\n", related.join(", "));
+    }
 }
 
 fn arguments(page: &mut String) {
@@ -103,7 +138,11 @@ mod tests {
 
     #[test]
     fn the_page_has_a_section_for_every_function_and_a_row_for_every_argument() {
-        let page = page(&stillwell::functions());
+        let values = stillwell::value_functions();
+        let page = page(&stillwell::functions(), &values);
+        for doc in values {
+            assert!(page.contains(&format!("\n### {}\n", doc.name)));
+        }
         for function in Function::ALL {
             assert!(page.contains(&format!("\n## {}\n", function.name())));
         }
@@ -113,8 +152,23 @@ mod tests {
     }
 
     #[test]
+    fn every_link_has_a_place() {
+        let page = page(&stillwell::functions(), &stillwell::value_functions());
+        // A heading's place is its words in small letters, joined by dashes.
+        let places = page
+            .lines()
+            .filter_map(|line| line.strip_prefix('#'))
+            .map(|heading| heading.trim_start_matches('#').trim().to_lowercase().replace(' ', "-"));
+        let places = places.collect::<Vec<_>>();
+        for link in page.split("](#").skip(1) {
+            let place = link.split(')').next().unwrap_or_default();
+            assert!(places.iter().any(|other| other == place), "there is no {place} in {places:?}");
+        }
+    }
+
+    #[test]
     fn every_row_has_the_cells_of_its_head() {
-        let page = page(&stillwell::functions());
+        let page = page(&stillwell::functions(), &stillwell::value_functions());
         let mut cells = 0;
         for line in page.lines() {
             let bars = line.replace("\\|", "").matches('|').count();

@@ -48,7 +48,7 @@ fn the_reference_lists_and_describes_the_functions() {
     let place = Place::new();
     let list = place.stillwell(&["functions"]).out;
     let page = place.stillwell(&["functions", "--markdown"]).out;
-    for name in ["components", "forecast", "diagnostics"] {
+    for name in ["components", "forecast", "diagnostics", "structural_components"] {
         assert!(list.contains(name) && page.contains(&format!("## {name}\n")), "{name}");
         let one = place.stillwell(&["functions", name]).out;
         assert!(one.starts_with(name) && one.contains("observed") && one.contains("Example:"), "{one}");

@@ -1,13 +1,17 @@
 //! The reference of the functions as data: for a page, a command's help, a completion.
 //!
 //! Everything here is read off the tables that the functions themselves work with, except the words about a
-//! function as a whole and its example, which stand below.
+//! function as a whole and its example, which stand below. [`values`] has the functions for expressions.
+
+mod values;
 
 use super::arguments::{Argument, arguments_of};
 use super::function::Function;
 use crate::columns::result::{ColumnScope, ColumnSpec, Scale};
 
-/// What there is to say about one function.
+pub use values::{ValueFunctionDoc, ValueFunctionKind, value_functions};
+
+/// What there is to say about one relation function.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct FunctionDoc {
     /// The function.
@@ -35,7 +39,7 @@ pub struct ColumnDoc {
     pub condition: Option<&'static str>,
 }
 
-/// The documentation of all functions.
+/// The documentation of all relation functions.
 pub fn functions() -> Vec<FunctionDoc> {
     Function::ALL.into_iter().map(describe).collect()
 }

@@ -34,7 +34,9 @@ mod structural_components;
 mod work;
 
 pub use arguments::{ARGUMENTS, Argument, Takes, arguments_of};
-pub use docs::{ColumnDoc, FunctionDoc, functions, statuses};
+pub use docs::{
+    ColumnDoc, FunctionDoc, ValueFunctionDoc, ValueFunctionKind, functions, statuses, value_functions,
+};
 pub use function::Function;
 pub use planner::{StructuralExtensionPlanner, StructuralQueryPlanner};
 pub use progress::{Progress, TroubledSeries};

@@ -18,11 +18,11 @@ use datafusion::logical_expr::function::{
     PartitionEvaluatorArgs, WindowFunctionSimplification, WindowUDFFieldArgs,
 };
 use datafusion::logical_expr::{
-    DocSection, Documentation, Expr, PartitionEvaluator, Signature, TypeSignature, Volatility, WindowUDFImpl,
+    DocSection, Documentation, Expr, PartitionEvaluator, Signature, Volatility, WindowUDFImpl,
 };
 
 use super::arguments::options::{OptionSet, constant};
-use super::error::{Caller, bad_argument, bad_call};
+use super::error::{Caller, bad_argument, bad_call, counted};
 use crate::columns::components_rows::COLUMNS;
 use crate::columns::result::{Layout, ResultSchema, Scale};
 use crate::columns::time::TimeKind;
@@ -30,6 +30,7 @@ use crate::columns::{driver_struct, numbers};
 use evaluator::Evaluator;
 
 const NAME: &str = "structural_components";
+const WRITTEN: &str = "structural_components(at, observed [, options [, drivers]]) OVER (PARTITION BY …)";
 const OPTIONS: OptionSet = OptionSet { function: NAME, without: &[] };
 
 /// The window function.
@@ -40,8 +41,7 @@ pub(crate) struct StructuralComponents {
 
 impl StructuralComponents {
     pub(crate) fn new() -> Self {
-        let counts = (2..=4).map(TypeSignature::Any).collect();
-        let mut signature = Signature::one_of(counts, Volatility::Immutable);
+        let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
         Self { signature }
@@ -104,6 +104,10 @@ impl WindowUDFImpl for StructuralComponents {
         &self.signature
     }
 
+    fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
+        counted(NAME, WRITTEN, 2..=4, given)
+    }
+
     fn field(&self, args: WindowUDFFieldArgs<'_>) -> Result<FieldRef> {
         let fields = Inputs::of(args.input_fields())?.result.schema().fields().clone();
         Ok(Arc::new(Field::new_struct(args.name(), fields, true)))
@@ -153,7 +157,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
          series in trouble. Effects stand in the order of the struct of drivers. Points of the grid that have no row \
          get none here. The rows of a partition are fitted on one thread and held in memory: for the whole of a \
          large table `components` is the better choice.",
-        "structural_components(at, observed [, options [, drivers]]) OVER (PARTITION BY …)",
+        WRITTEN,
     )
     .with_argument("at", "The time of a row: DATE, TIMESTAMP (any unit, with or without zone) or integer.")
     .with_argument("observed", "The value of a row, any numeric type; NULL and NaN = missing.")
@@ -170,9 +174,10 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
         "A struct of numeric or boolean columns; the names of its fields are the names of the drivers.",
     )
     .with_sql_example(
-        "SELECT region, product, week, litres, round(s['level'], 1) AS level, s['effect_of_price'] AS effect_of_price\n\
-         FROM (SELECT *, structural_components(week, litres, {'trend': 'local linear', 'season': 4}, {'price': price})\n          \
-               OVER (PARTITION BY region, product) AS s FROM sales)\n\
+        "SELECT region, product, week, litres, round(s['level'], 1) AS level, round(s['effect_of_price'], 1) AS effect_of_price\n\
+         FROM (SELECT *, structural_components(week, litres, {'trend': 'local linear'}, {'price': price})\n              \
+                         OVER (PARTITION BY region, product) AS s\n      \
+               FROM sales)\n\
          ORDER BY region, product, week",
     )
     .build()

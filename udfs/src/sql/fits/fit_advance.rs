@@ -8,7 +8,7 @@ use datafusion::arrow::datatypes::DataType;
 use datafusion::common::ScalarValue;
 use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::{
-    ColumnarValue, Documentation, ScalarFunctionArgs, ScalarUDFImpl, Signature, TypeSignature, Volatility,
+    ColumnarValue, Documentation, ScalarFunctionArgs, ScalarUDFImpl, Signature, Volatility,
 };
 use stillwell_statespace::Trouble;
 
@@ -18,9 +18,10 @@ use crate::columns::fit_value::{FitBuilder, FitColumn, FitValue, FittedValue, Re
 use crate::columns::numbers;
 use crate::columns::time::TimeKind;
 use crate::columns::time_grid::TimeGrid;
-use crate::sql::error::{Caller, bad_argument};
+use crate::sql::error::{Caller, bad_argument, counted};
 
 const NAME: &str = "fit_advance";
+const WRITTEN: &str = "fit_advance(fit, at_list, observed_list [, drivers])";
 
 /// The function.
 #[derive(Debug, PartialEq, Eq, Hash)]
@@ -30,8 +31,7 @@ pub(crate) struct FitAdvance {
 
 impl FitAdvance {
     pub(crate) fn new() -> Self {
-        let mut signature =
-            Signature::one_of(vec![TypeSignature::Any(3), TypeSignature::Any(4)], Volatility::Immutable);
+        let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["fit", "at_list", "observed_list", "drivers"].map(str::to_string).to_vec());
         Self { signature }
@@ -49,6 +49,10 @@ impl ScalarUDFImpl for FitAdvance {
 
     fn signature(&self) -> &Signature {
         &self.signature
+    }
+
+    fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
+        counted(NAME, WRITTEN, 3..=4, given)
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
@@ -294,7 +298,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
          cannot be taken (a time twice, off the grid, not after the last observation) leave the fit as it was, with their \
          status and message in it. Fit again when the structure of the series changes, and in any case from time to time: parameters \
          do not learn here.",
-        "fit_advance(fit, at_list, observed_list [, drivers])",
+        WRITTEN,
     )
     .with_argument("fit", "What structural_fit or fit_advance gave; NULL in, NULL out.")
     .with_argument("at_list", "The times of the new rows, a list of the type of `at`, such as array_agg(week).")

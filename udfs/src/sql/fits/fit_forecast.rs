@@ -9,7 +9,7 @@ use datafusion::arrow::compute::cast;
 use datafusion::arrow::datatypes::{DataType, Field, Fields, Float64Type, Int64Type};
 use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::{
-    ColumnarValue, Documentation, ScalarFunctionArgs, ScalarUDFImpl, Signature, TypeSignature, Volatility,
+    ColumnarValue, Documentation, ScalarFunctionArgs, ScalarUDFImpl, Signature, Volatility,
 };
 use stillwell_statespace::{Forecast, LONGEST_HORIZON, Trouble};
 
@@ -17,9 +17,10 @@ use super::SECTION;
 use super::lists::{driver_names, driver_values};
 use crate::columns::fit_value::{FitColumn, FitValue};
 use crate::columns::time::TimeKind;
-use crate::sql::error::{Caller, bad_argument};
+use crate::sql::error::{Caller, bad_argument, counted};
 
 const NAME: &str = "fit_forecast";
+const WRITTEN: &str = "fit_forecast(fit, horizon [, coverage [, drivers]])";
 
 /// The function.
 #[derive(Debug, PartialEq, Eq, Hash)]
@@ -29,8 +30,7 @@ pub(crate) struct FitForecast {
 
 impl FitForecast {
     pub(crate) fn new() -> Self {
-        let counts = (2..=4).map(TypeSignature::Any).collect();
-        let mut signature = Signature::one_of(counts, Volatility::Immutable);
+        let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["fit", "horizon", "coverage", "drivers"].map(str::to_string).to_vec());
         Self { signature }
@@ -67,6 +67,10 @@ impl ScalarUDFImpl for FitForecast {
 
     fn signature(&self) -> &Signature {
         &self.signature
+    }
+
+    fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
+        counted(NAME, WRITTEN, 2..=4, given)
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
@@ -252,7 +256,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
         "The forecast of a fit, without its history: a list with one struct per step, with the columns of \
          [`forecast`](#forecast). Drivers that are not handed in keep the plan that the fit carries. The steps of a fit that is in trouble \
          hold its status and NULLs. `unnest(unnest(fit_forecast(…)))` makes rows and columns of it.",
-        "fit_forecast(fit, horizon [, coverage [, drivers]])",
+        WRITTEN,
     )
     .with_argument("fit", "What structural_fit or fit_advance gave; NULL in, NULL out.")
     .with_argument("horizon", "Steps after the last observation, from 1 to 10000.")

@@ -20,9 +20,10 @@ use crate::columns::fit_value::{
     FitColumn, FitValue, FittedValue, ReadError, list_of, parameter_columns, parameter_fields,
 };
 use crate::columns::time::TimeKind;
-use crate::sql::error::{Caller, bad_argument};
+use crate::sql::error::{Caller, bad_argument, counted};
 
 const NAME: &str = "fit_summary";
+const WRITTEN: &str = "fit_summary(fit)";
 
 /// The function.
 #[derive(Debug, PartialEq, Eq, Hash)]
@@ -32,8 +33,8 @@ pub(crate) struct FitSummary {
 
 impl FitSummary {
     pub(crate) fn new() -> Self {
-        let mut signature = Signature::any(1, Volatility::Immutable);
-        signature.parameter_names = Some(vec!["fit".to_string()]);
+        let mut signature = Signature::user_defined(Volatility::Immutable);
+        signature.parameter_names = Some(["fit"].map(str::to_string).to_vec());
         Self { signature }
     }
 }
@@ -99,6 +100,10 @@ impl ScalarUDFImpl for FitSummary {
 
     fn signature(&self) -> &Signature {
         &self.signature
+    }
+
+    fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
+        counted(NAME, WRITTEN, 1..=1, given)
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
@@ -271,7 +276,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
          (`level`, `slope`, `seasonal`, `cycle`, `autoregression`, each with its standard error, in the units of \
          [`components`](#components)), `parameters` as a list of name, value, std_error and known, `coefficients` of the drivers, \
          `log_likelihood`, `aic` and `bic` of all observations so far, `converged` and `evaluations` of the estimation.",
-        "fit_summary(fit)",
+        WRITTEN,
     )
     .with_argument("fit", "What structural_fit or fit_advance gave; NULL in, NULL out.")
     .with_sql_example(

@@ -8,8 +8,7 @@ use datafusion::error::Result;
 use datafusion::logical_expr::function::{AccumulatorArgs, StateFieldsArgs};
 use datafusion::logical_expr::utils::AggregateOrderSensitivity;
 use datafusion::logical_expr::{
-    Accumulator, AggregateUDFImpl, DocSection, Documentation, GroupsAccumulator, Signature, TypeSignature,
-    Volatility,
+    Accumulator, AggregateUDFImpl, DocSection, Documentation, GroupsAccumulator, Signature, Volatility,
 };
 
 use super::accumulator::{FitAccumulator, FitGroups, state_fields};
@@ -18,9 +17,10 @@ use crate::columns::time::TimeKind;
 use crate::columns::{driver_struct, numbers};
 use crate::sql::arguments::options::{OptionSet, constant};
 use crate::sql::arguments::settings::Settings;
-use crate::sql::error::{Caller, bad_argument, bad_call};
+use crate::sql::error::{Caller, bad_argument, bad_call, counted};
 
 pub(super) const NAME: &str = "structural_fit";
+const WRITTEN: &str = "structural_fit(at, observed [, options [, drivers]])";
 const OPTIONS: OptionSet = OptionSet { function: NAME, without: &["coverage"] };
 
 /// The aggregate.
@@ -31,8 +31,7 @@ pub(crate) struct StructuralFit {
 
 impl StructuralFit {
     pub(crate) fn new() -> Self {
-        let counts = (2..=4).map(TypeSignature::Any).collect();
-        let mut signature = Signature::one_of(counts, Volatility::Immutable);
+        let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
         Self { signature }
@@ -91,6 +90,10 @@ impl AggregateUDFImpl for StructuralFit {
         &self.signature
     }
 
+    fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
+        counted(NAME, WRITTEN, 2..=4, given)
+    }
+
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
         Ok(fit_type(Inputs::of(types)?.time.data_type()))
     }
@@ -140,7 +143,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
          covariance, and the plan. It goes to Parquet and comes back bit for bit. A series in trouble is a value with its \
          `status` and `message`; a group without rows is NULL. All rows of all groups are held until they are complete: for a \
          single pass over a large table `forecast` in FROM takes less memory.",
-        "structural_fit(at, observed [, options [, drivers]])",
+        WRITTEN,
     )
     .with_argument("at", "The time of a row: DATE, TIMESTAMP (any unit, with or without zone) or integer.")
     .with_argument("observed", "The value of a row, any numeric type; NULL and NaN = missing.")
