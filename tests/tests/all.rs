@@ -5,6 +5,7 @@
 //! - [`outlook`] runs the demo job once; [`truth`] holds its answers against what the demo was drawn from, and
 //!   [`demo_output`] looks at the files it wrote;
 //! - [`examples`] runs the example of every function;
+//! - [`nightly`] runs the jobs that keep fits and advance them;
 //! - [`readme`] runs the SQL of the README and holds what it shows against it;
 //! - [`memory`] fits under a small memory limit.
 
@@ -12,6 +13,7 @@ mod demo_output;
 mod examples;
 mod jobs;
 mod memory;
+mod nightly;
 mod outlook;
 mod published;
 mod readme;

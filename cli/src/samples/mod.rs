@@ -2,7 +2,7 @@
 //!
 //! The demo is 4 regions, 12 products and 208 weeks with a [`story`], drawn by the [`generator`] from the
 //! equations of a structural model, laid out by the [`writer`] as `sales/region=.../*.parquet`, with the truth
-//! it was drawn from in `truth/` beside it and the job `weekly_outlook.sql` to run on it. With
+//! it was drawn from in `truth/` beside it and the jobs `weekly_outlook.sql`, `sunday_fits.sql` and `monday_outlook.sql` to run on it. With
 //! [`SampleOptions::series`] it is instead a warehouse of that many series without a story or a truth, for
 //! load tests. The same options give the same bytes.
 
@@ -45,10 +45,14 @@ const MOST_SERIES: usize = 10_000_000;
 const NEVER_SOLD_EVERY: usize = 1_000;
 
 /// The main job, as it stands in the committed demo.
-const JOB: &str = include_str!("../../../parquet-samples/weekly_outlook.sql");
+const JOBS: [(&str, &str); 3] = [
+    ("weekly_outlook.sql", include_str!("../../../parquet-samples/weekly_outlook.sql")),
+    ("sunday_fits.sql", include_str!("../../../parquet-samples/sunday_fits.sql")),
+    ("monday_outlook.sql", include_str!("../../../parquet-samples/monday_outlook.sql")),
+];
 /// The description of the committed demo.
 const README: &str = include_str!("../../../parquet-samples/README.md");
-/// The folder that [`JOB`] speaks of.
+/// The folder that the jobs speak of.
 const JOB_FOLDER: &str = "parquet-samples/";
 
 /// What to write.
@@ -104,7 +108,7 @@ impl fmt::Display for SampleSummary {
 
 /// Writes the warehouse into `dir`, which may be new, empty, or of an earlier run.
 ///
-/// An earlier run's Parquet files are replaced; `weekly_outlook.sql` and `README.md` are written only where no
+/// An earlier run's Parquet files are replaced; the jobs and `README.md` are written only where no
 /// file of that name stands, so that edits stay. Every Parquet file appears whole or not at all.
 ///
 /// # Errors
@@ -158,7 +162,9 @@ pub(crate) fn write(dir: &Path, options: &SampleOptions) -> Result<SampleSummary
     if let Some((states, parameters)) = truth {
         bytes += states.finish()?.1 + parameters.finish()?.1;
     }
-    write_if_absent(&dir.join("weekly_outlook.sql"), &job_for(dir))?;
+    for (name, job) in JOBS {
+        write_if_absent(&dir.join(name), &job_for(job, dir))?;
+    }
     if with_truth {
         write_if_absent(&dir.join("README.md"), README)?;
     }
@@ -225,10 +231,10 @@ impl<'a> Catalogue<'a> {
     }
 }
 
-/// The main job, speaking of `dir`.
-fn job_for(dir: &Path) -> String {
+/// A job, speaking of `dir`.
+fn job_for(job: &str, dir: &Path) -> String {
     let place = dir.display().to_string().replace('\'', "''");
-    JOB.replace(JOB_FOLDER, &format!("{}/", place.trim_end_matches('/')))
+    job.replace(JOB_FOLDER, &format!("{}/", place.trim_end_matches('/')))
 }
 
 /// Writes a text unless a file of that name is there already.

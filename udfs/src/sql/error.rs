@@ -3,7 +3,6 @@
 //! Mistakes in a query are planning errors and begin with the name of the function. Troubles of single
 //! series are not errors at all unless `on_trouble => 'fail'` asks for that; then the error names the series.
 
-use datafusion::arrow::datatypes::DataType;
 use datafusion::error::DataFusionError;
 use stillwell_statespace::{BadRequest, Trouble};
 
@@ -89,26 +88,23 @@ pub(crate) fn wrong_call(function: &str, what: impl AsRef<str>) -> DataFusionErr
     DataFusionError::Plan(format!("{function}: {}", what.as_ref()))
 }
 
-/// The types of the arguments as they are, if there are as many as the function takes. `written` is a call of it.
+/// Checks the number of arguments of a call. `written` is how a call of the function is written.
 ///
-/// Signatures are left to the functions (`Signature::user_defined`), which say a mistake in our words; the engine would list its
-/// candidates.
+/// # Errors
+/// Any number that is not in `takes`.
 pub(crate) fn counted(
     function: &str,
     written: &str,
     takes: std::ops::RangeInclusive<usize>,
-    given: &[DataType],
-) -> Result<Vec<DataType>, DataFusionError> {
-    if takes.contains(&given.len()) {
-        return Ok(given.to_vec());
+    given: usize,
+) -> Result<(), DataFusionError> {
+    if takes.contains(&given) {
+        return Ok(());
     }
     let (fewest, most) = (takes.start(), takes.end());
     let count = if fewest == most { most.to_string() } else { format!("{fewest} to {most}") };
     let plural = if *most == 1 { "" } else { "s" };
-    Err(wrong_call(
-        function,
-        format!("takes {count} argument{plural}, not {}; it is written {written}", given.len()),
-    ))
+    Err(wrong_call(function, format!("takes {count} argument{plural}, not {given}; it is written {written}")))
 }
 
 /// A value that a scalar function cannot work with. `what` continues the sentence "argument 'x' …".

@@ -104,11 +104,13 @@ impl WindowUDFImpl for StructuralComponents {
         &self.signature
     }
 
+    // Types and counts are checked with the type of the result, where a mistake is said in our words.
     fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
-        counted(NAME, WRITTEN, 2..=4, given)
+        Ok(given.to_vec())
     }
 
     fn field(&self, args: WindowUDFFieldArgs<'_>) -> Result<FieldRef> {
+        counted(NAME, WRITTEN, 2..=4, args.input_fields().len())?;
         let fields = Inputs::of(args.input_fields())?.result.schema().fields().clone();
         Ok(Arc::new(Field::new_struct(args.name(), fields, true)))
     }

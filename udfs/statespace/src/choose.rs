@@ -7,7 +7,8 @@
 //!   spread-versus-level plot, Tukey 1977, *Exploratory Data Analysis*, ch. 5; slope b suggests the power 1 - b).
 //! * **season**: a candidate period stays when at least three full periods are observed and, once the moving average over a
 //!   period is taken off, the autocorrelation at that lag is above its one-sided 95 % bound under no season (Bartlett 1946,
-//!   *JRSS Suppl.* 8), and every step of the period is observed at least twice.
+//!   *JRSS Suppl.* 8), and every step of the period is observed at least twice. Of several candidates (7 and 365.25, 24 and 168) each is tested
+//!   on what the average pattern of the ones before it leaves.
 //! * **harmonics**: the dummy form for whole periods up to 13; longer or fractional ones as harmonics, a quarter of the period
 //!   (rounded up) of them up to a period of 24, otherwise 3 (common practice: the first few carry a yearly pattern).
 //! * **trend**: `damped` from 16 observed points on (the safe default of the trade, common practice), else `local level`.
@@ -286,9 +287,7 @@ pub(crate) fn choose(request: &Request, observed: &[f64]) -> Result<Choice, Trou
     let scaled: Vec<f64> = observed.iter().map(|&v| transform.forward(v)).collect();
     let periods = match &request.season {
         SeasonRequest::Given(periods) => periods.clone(),
-        SeasonRequest::Auto(candidates) => {
-            candidates.iter().copied().find(|&p| season_speaks(&scaled, p)).into_iter().collect()
-        }
+        SeasonRequest::Auto(candidates) => speaking(&scaled, candidates),
     };
     let count = observed.iter().filter(|v| !v.is_nan()).count();
     let trend = request.trend.unwrap_or(if count >= SLOPE_FROM { Trend::Damped } else { Trend::LocalLevel });
@@ -358,6 +357,36 @@ fn spread_follows_level(observed: &[f64], period: Option<f64>) -> bool {
     let (sxx, sxy) =
         points.iter().fold((0.0, 0.0), |(a, b), (x, y)| (a + (x - mx).powi(2), b + (x - mx) * (y - my)));
     sxx > 0.0 && sxy / sxx > 0.5
+}
+
+/// The candidates that the data speak for, each tested on what the ones before it leave: a weekly pattern in hourly data must show beside the
+/// daily one, which comes round after a week too.
+fn speaking(values: &[f64], candidates: &[f64]) -> Vec<f64> {
+    let mut rest = values.to_vec();
+    let mut kept = Vec::new();
+    for &period in candidates {
+        if season_speaks(&rest, period) {
+            kept.push(period);
+            rest = without_pattern(&rest, period.round() as usize);
+        }
+    }
+    kept
+}
+
+/// The series less its average pattern over a period: for each step of the period the mean of what the moving average leaves
+/// (classical decomposition, common practice).
+fn without_pattern(values: &[f64], period: usize) -> Vec<f64> {
+    let rest = without_moving_average(values, period);
+    let (mut sums, mut counts) = (vec![0.0; period], vec![0.0; period]);
+    for (t, v) in rest.iter().enumerate().filter(|(_, v)| !v.is_nan()) {
+        sums[t % period] += v;
+        counts[t % period] += 1.0;
+    }
+    values
+        .iter()
+        .enumerate()
+        .map(|(t, v)| if counts[t % period] > 0.0 { v - sums[t % period] / counts[t % period] } else { *v })
+        .collect()
 }
 
 /// What is left of the series after its moving average over a period is autocorrelated at the period.

@@ -38,8 +38,8 @@ mistakes! {
     a_value_without_quotes: "components" "observed => units, trend => damped" =>
         "components: argument 'trend' takes a value, not a column: trend => 'damped' with quotes, if that text is meant \
          (it takes 'local level', 'local linear', 'smooth', 'damped', 'fixed level', 'fixed line', 'none', 'auto')";
-    a_transform_of_another_day: "components" "observed => units, transform => 'box-cox'" =>
-        "components: argument 'transform' does not know 'box-cox'; valid are 'none', 'log', 'auto'";
+    a_transform_of_another_day: "components" "observed => units, transform => 'root'" =>
+        "components: argument 'transform' does not know 'root'; valid are 'none', 'log', 'log1p', 'box-cox', 'auto'";
     a_horizon_of_nothing: "forecast" "observed => units, horizon => 0" =>
         "forecast: argument 'horizon' takes a whole number from 1 to 10000, not 0";
     a_horizon_with_a_fraction: "forecast" "observed => units, horizon => 2.5" =>

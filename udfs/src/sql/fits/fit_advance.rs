@@ -51,11 +51,13 @@ impl ScalarUDFImpl for FitAdvance {
         &self.signature
     }
 
+    // Types and counts are checked with the type of the result, where a mistake is said in our words.
     fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
-        counted(NAME, WRITTEN, 3..=4, given)
+        Ok(given.to_vec())
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
+        counted(NAME, WRITTEN, 3..=4, types.len())?;
         let caller = Caller::Expression(NAME);
         let data_type = |at: usize| types.get(at).unwrap_or(&DataType::Null);
         let time = FitColumn::time_of(data_type(0)).map_err(bad_fit)?;

@@ -69,11 +69,13 @@ impl ScalarUDFImpl for FitForecast {
         &self.signature
     }
 
+    // Types and counts are checked with the type of the result, where a mistake is said in our words.
     fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
-        counted(NAME, WRITTEN, 2..=4, given)
+        Ok(given.to_vec())
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
+        counted(NAME, WRITTEN, 2..=4, types.len())?;
         let caller = Caller::Expression(NAME);
         let time = time_of(types)?;
         let number = |at: usize, name: &str, ok: fn(&DataType) -> bool, takes: &str| match types.get(at) {

@@ -102,11 +102,13 @@ impl ScalarUDFImpl for FitSummary {
         &self.signature
     }
 
+    // Types and counts are checked with the type of the result, where a mistake is said in our words.
     fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
-        counted(NAME, WRITTEN, 1..=1, given)
+        Ok(given.to_vec())
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
+        counted(NAME, WRITTEN, 1..=1, types.len())?;
         let time = FitColumn::time_of(types.first().unwrap_or(&DataType::Null)).map_err(bad_fit)?;
         Ok(DataType::Struct(summary_fields(&time)))
     }

@@ -90,11 +90,13 @@ impl AggregateUDFImpl for StructuralFit {
         &self.signature
     }
 
+    // Types and counts are checked with the type of the result, where a mistake is said in our words.
     fn coerce_types(&self, given: &[DataType]) -> Result<Vec<DataType>> {
-        counted(NAME, WRITTEN, 2..=4, given)
+        Ok(given.to_vec())
     }
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
+        counted(NAME, WRITTEN, 2..=4, types.len())?;
         Ok(fit_type(Inputs::of(types)?.time.data_type()))
     }
 

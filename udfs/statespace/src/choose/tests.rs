@@ -101,3 +101,25 @@ fn every_default_can_be_named() {
         (Some(6), Some(3), None)
     );
 }
+
+#[test]
+fn each_of_two_patterns_is_found_and_none_that_the_first_one_makes() {
+    let mut rng = ChaCha8Rng::seed_from_u64(21);
+    // Hourly for four weeks; daily for four years.
+    for (n, short, long) in [(672, 24.0, 168.0), (1461, 7.0, 365.25)] {
+        let (mut both, mut one) = (0, 0);
+        for _ in 0..40 {
+            let daily = series(&mut rng, n, short, 2.0, 0.1);
+            let weekly: Vec<f64> = daily
+                .iter()
+                .enumerate()
+                .map(|(t, v)| v + 1.5 * (std::f64::consts::TAU * t as f64 / long).sin())
+                .collect();
+            both += usize::from(speaking(&weekly, &[short, long]) == [short, long]);
+            one += usize::from(speaking(&daily, &[short, long]) == [short]);
+        }
+        assert!(both >= 36, "{short} and {long}: found both in {both} of 40");
+        // The level of the test is 5 %.
+        assert!(one >= 34, "{short} alone: found in {one} of 40");
+    }
+}
