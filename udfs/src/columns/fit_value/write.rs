@@ -103,7 +103,7 @@ impl FitBuilder {
             inner.append_value(column.iter().map(|v| (!v.is_nan()).then_some(*v)));
         }
         let values = Arc::new(inner.finish());
-        Ok(self.list(list_of(DataType::Float64), values, plans().map(<[_]>::len))?)
+        self.list(list_of(DataType::Float64), values, plans().map(<[_]>::len))
     }
 
     /// A list over `values` with these lengths; NULL where there is no fit.

@@ -33,7 +33,7 @@ pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
     fields
 }
 
-/// Rows of one group, in the order in which they came.
+/// Rows of one group or one batch, in the order in which they came.
 #[derive(Debug, Default)]
 struct GroupRows {
     times: Vec<Option<i64>>,
@@ -84,7 +84,7 @@ impl FitGroups {
     }
 
     /// The columns of a batch: times, observed, drivers.
-    fn read(&self, values: &[ArrayRef]) -> Result<(Vec<Option<i64>>, Vec<f64>, Vec<Vec<f64>>)> {
+    fn read(&self, values: &[ArrayRef]) -> Result<GroupRows> {
         let argument = |at: usize| {
             values
                 .get(at)
@@ -97,11 +97,11 @@ impl FitGroups {
             Some(drivers) => driver_struct::values(drivers, self.drivers())?,
             None => Vec::new(),
         };
-        Ok((times, observed, drivers))
+        Ok(GroupRows { times, observed, drivers })
     }
 
     /// The rows in order of time, NULLs last; `None` without rows.
-    fn sorted(&self, rows: GroupRows) -> Result<Option<Group>> {
+    fn sorted(&self, rows: &GroupRows) -> Result<Option<Group>> {
         let mut order = (0..rows.times.len()).collect::<Vec<_>>();
         let bits = |row: usize| {
             let drivers = rows.drivers.iter().map(move |values| values[row].to_bits());
@@ -126,7 +126,7 @@ impl FitGroups {
     }
 
     /// The fit of one group.
-    fn fit(&mut self, rows: GroupRows) -> Result<Option<FitValue>> {
+    fn fit(&mut self, rows: &GroupRows) -> Result<Option<FitValue>> {
         let Some(group) = self.sorted(rows)? else { return Ok(None) };
         let settings = &self.settings;
         let placed = place(&group, &self.inputs.time, settings.every, settings.request.drivers.len());
@@ -188,7 +188,7 @@ impl GroupsAccumulator for FitGroups {
         total: usize,
     ) -> Result<()> {
         self.grow(total);
-        let (times, observed, drivers) = self.read(values)?;
+        let GroupRows { times, observed, drivers } = self.read(values)?;
         for (row, &group) in groups.iter().enumerate() {
             if filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)) {
                 self.add(group, times[row], observed[row], drivers.iter().map(|values| values[row]));
@@ -200,7 +200,7 @@ impl GroupsAccumulator for FitGroups {
     fn evaluate(&mut self, emit: EmitTo) -> Result<ArrayRef> {
         let mut fits = FitBuilder::new(self.inputs.time.clone());
         for rows in self.take(emit) {
-            let fit = self.fit(rows)?;
+            let fit = self.fit(&rows)?;
             fits.push(fit);
         }
         Ok(fits.finish()?)
@@ -251,7 +251,7 @@ impl GroupsAccumulator for FitGroups {
     }
 
     fn convert_to_state(&self, values: &[ArrayRef], filter: Option<&BooleanArray>) -> Result<Vec<ArrayRef>> {
-        let (times, observed, drivers) = self.read(values)?;
+        let GroupRows { times, observed, drivers } = self.read(values)?;
         let rows = times.len();
         let kept: Vec<bool> = (0..rows)
             .map(|row| filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)))
@@ -305,7 +305,7 @@ impl Accumulator for FitAccumulator {
             drivers: rows.drivers.clone(),
         });
         let mut fits = FitBuilder::new(self.groups.inputs.time.clone());
-        let fit = self.groups.fit(rows.unwrap_or_default())?;
+        let fit = self.groups.fit(&rows.unwrap_or_default())?;
         fits.push(fit);
         ScalarValue::try_from_array(&fits.finish()?, 0)
     }

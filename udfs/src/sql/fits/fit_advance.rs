@@ -38,7 +38,7 @@ impl FitAdvance {
     }
 }
 
-fn bad_fit(error: ReadError) -> DataFusionError {
+fn bad_fit(error: &ReadError) -> DataFusionError {
     bad_argument(Caller::Expression(NAME), "fit", error.to_string())
 }
 
@@ -60,7 +60,7 @@ impl ScalarUDFImpl for FitAdvance {
         counted(NAME, WRITTEN, 3..=4, types.len())?;
         let caller = Caller::Expression(NAME);
         let data_type = |at: usize| types.get(at).unwrap_or(&DataType::Null);
-        let time = FitColumn::time_of(data_type(0)).map_err(bad_fit)?;
+        let time = FitColumn::time_of(data_type(0)).map_err(|error| bad_fit(&error))?;
         match data_type(1) {
             DataType::Null => {}
             list if item_type(list) == Some(time.data_type()) => {}
@@ -114,7 +114,7 @@ fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
     let argument = |at: usize| {
         columns.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
     };
-    let fits = FitColumn::try_new(argument(0)?).map_err(bad_fit)?;
+    let fits = FitColumn::try_new(argument(0)?).map_err(|error| bad_fit(&error))?;
     let (times, observed) = (items(argument(1)?)?, items(argument(2)?)?);
     let mut drivers = HashMap::new();
     if let Some(column) = columns.get(3) {
@@ -126,7 +126,7 @@ fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
     }
     let mut answers = FitBuilder::new(fits.time.clone());
     for row in 0..fits.len() {
-        let Some(fit) = fits.get(row).map_err(bad_fit)? else {
+        let Some(fit) = fits.get(row).map_err(|error| bad_fit(&error))? else {
             answers.push(None);
             continue;
         };

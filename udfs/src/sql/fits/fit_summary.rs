@@ -39,7 +39,7 @@ impl FitSummary {
     }
 }
 
-fn bad_fit(error: ReadError) -> DataFusionError {
+fn bad_fit(error: &ReadError) -> DataFusionError {
     bad_argument(Caller::Expression(NAME), "fit", error.to_string())
 }
 
@@ -52,8 +52,11 @@ fn coefficient_fields() -> Fields {
     ])
 }
 
-/// States of the last point, each with its standard error.
-const STATES: [(&str, fn(&LastPoint) -> Option<(f64, f64)>); 5] = [
+/// One state of the last point and its standard error.
+type StateOf = fn(&LastPoint) -> Option<(f64, f64)>;
+
+/// States of the last point.
+const STATES: [(&str, StateOf); 5] = [
     ("level", |last| last.level),
     ("slope", |last| last.slope),
     ("seasonal", |last| last.seasonal),
@@ -109,7 +112,8 @@ impl ScalarUDFImpl for FitSummary {
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
         counted(NAME, WRITTEN, 1..=1, types.len())?;
-        let time = FitColumn::time_of(types.first().unwrap_or(&DataType::Null)).map_err(bad_fit)?;
+        let time =
+            FitColumn::time_of(types.first().unwrap_or(&DataType::Null)).map_err(|error| bad_fit(&error))?;
         Ok(DataType::Struct(summary_fields(&time)))
     }
 
@@ -131,8 +135,11 @@ impl ScalarUDFImpl for FitSummary {
 }
 
 fn summaries(column: &ArrayRef) -> Result<ArrayRef> {
-    let fits = FitColumn::try_new(column).map_err(bad_fit)?;
-    let rows = (0..fits.len()).map(|row| fits.get(row)).collect::<Result<Vec<_>, _>>().map_err(bad_fit)?;
+    let fits = FitColumn::try_new(column).map_err(|error| bad_fit(&error))?;
+    let rows = (0..fits.len())
+        .map(|row| fits.get(row))
+        .collect::<Result<Vec<_>, _>>()
+        .map_err(|error| bad_fit(&error))?;
     let table = Table { rows: &rows, last: rows.iter().map(last_point).collect(), time: &fits.time };
     let fields = summary_fields(&fits.time);
     let columns = fields.iter().map(|field| table.column(field.name())).collect::<Result<Vec<_>>>()?;
