@@ -22,6 +22,9 @@ use crate::sql::error::{Caller, bad_argument, counted};
 const NAME: &str = "fit_forecast";
 const WRITTEN: &str = "fit_forecast(fit, horizon [, coverage [, drivers]])";
 
+/// Coverage of the intervals where none is given.
+const DEFAULT_COVERAGE: f64 = 0.9;
+
 /// The function.
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct FitForecast {
@@ -169,6 +172,8 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
     let fits = FitColumn::try_new(argument(0)?).map_err(bad_fit)?;
     let horizons = cast(argument(1)?, &DataType::Int64)?;
     let coverages = columns.get(2).map(|column| cast(column, &DataType::Float64)).transpose()?;
+    let coverages: Vec<Option<f64>> =
+        coverages.map_or_else(Vec::new, |column| column.as_primitive::<Float64Type>().iter().collect());
     let names = match columns.get(3) {
         Some(drivers) => driver_names(NAME, drivers.data_type())?,
         None => Vec::new(),
@@ -200,10 +205,7 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
                 format!("takes a whole number from 1 to {LONGEST_HORIZON}, not {given}"),
             ));
         };
-        let coverage = match &coverages {
-            Some(column) => column.as_primitive::<Float64Type>().iter().nth(row).flatten().unwrap_or(0.9),
-            None => 0.9,
-        };
+        let coverage = coverages.get(row).copied().flatten().unwrap_or(DEFAULT_COVERAGE);
         if !(coverage > 0.0 && coverage <= 0.999_999) {
             return Err(bad_argument(
                 caller,

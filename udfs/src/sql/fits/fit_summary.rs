@@ -280,7 +280,7 @@ impl Table<'_> {
 static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     Documentation::builder(
         SECTION,
-        "What a fit holds, as a struct: status and message, the structure chosen (`trend`, `season`, `harmonics`, `transform`, \
+        "What a fit holds, as a struct. Its fields: `status` and `message`, the structure chosen (`trend`, `season`, `harmonics`, `transform`, \
          `transform_power`), the grid (`every`, `first_at`, `last_at`, `n`, `missing`), where the series stands at `last_at` \
          (`level`, `slope`, `seasonal`, `cycle`, `autoregression`, each with its standard error, in the units of \
          [`components`](#components)), `parameters` as a list of name, value, std_error and known, `coefficients` of the drivers, \
