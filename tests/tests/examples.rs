@@ -62,9 +62,12 @@ fn every_function_has_an_example_on_the_page() {
     let shown = shown.collect::<Vec<_>>();
     let examples = examples();
     assert_eq!(shown.len(), examples.len(), "an example that is no function's, or one that is missing");
+    let records = fs::read_to_string(ROOT.join("tests/slt/examples.slt")).expect("the records");
     for (name, example) in examples {
         assert!(example.contains(&format!("{name}(")), "the example of {name} does not call it");
         assert!(shown.contains(&example.as_str()), "the example of {name} is not on the page");
+        let record = format!("statement ok\n{example}\n");
+        assert!(records.contains(&record), "the example of {name} is no record of slt/examples.slt:\n{record}");
     }
 }
 
