@@ -4,6 +4,8 @@
 //! because a shorter history is another series. Values that are still parameters of a prepared statement are
 //! expressions of the node, so that the engine fills them in.
 
+mod conditions;
+
 use std::cmp::Ordering;
 use std::collections::{BTreeSet, HashSet};
 use std::fmt;
@@ -61,6 +63,8 @@ pub(crate) struct StructuralNode {
     input: LogicalPlan,
     roles: Roles,
     options: Vec<(&'static Argument, Given)>,
+    /// Conditions on the result that were pushed and may not be: see [`conditions`].
+    kept: Vec<Expr>,
     schema: DFSchemaRef,
     result: Arc<ResultSchema>,
 }
@@ -118,7 +122,7 @@ impl StructuralNode {
             bad_call(function, format!("two columns of the result would have one name: {error}"))
         })?;
         let result = Arc::new(ResultSchema::new(key_fields, columns));
-        Ok(Self { function, input, roles, options, schema: Arc::new(schema), result })
+        Ok(Self { function, input, roles, options, kept: Vec::new(), schema: Arc::new(schema), result })
     }
 
     pub(crate) fn function(&self) -> Function {
@@ -131,6 +135,11 @@ impl StructuralNode {
 
     pub(crate) fn result(&self) -> &Arc<ResultSchema> {
         &self.result
+    }
+
+    /// Conditions that the rows of the result have to meet.
+    pub(crate) fn kept(&self) -> &[Expr] {
+        &self.kept
     }
 
     /// What the operator works with.
@@ -171,7 +180,7 @@ impl StructuralNode {
         for (argument, given) in &self.options {
             let value = match given.value() {
                 Some(value) => value.to_string().replace('\'', ""),
-                None => given.exprs().iter().map(ToString::to_string).collect::<Vec<_>>().join(", "),
+                None => in_words(given.exprs()),
             };
             parts.push(format!("{}={value}", argument.name));
         }
@@ -194,7 +203,8 @@ impl UserDefinedLogicalNodeCore for StructuralNode {
 
     fn expressions(&self) -> Vec<Expr> {
         let columns = self.roles.columns().cloned().map(Expr::Column);
-        columns.chain(self.options.iter().flat_map(|(_, given)| given.exprs().to_vec())).collect()
+        let options = self.options.iter().flat_map(|(_, given)| given.exprs().to_vec());
+        columns.chain(options).chain(self.kept.iter().cloned()).collect()
     }
 
     fn prevent_predicate_push_down_columns(&self) -> HashSet<String> {
@@ -203,7 +213,11 @@ impl UserDefinedLogicalNodeCore for StructuralNode {
     }
 
     fn fmt_for_explain(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        write!(f, "{}: {}", self.name(), self.describe())
+        write!(f, "{}: {}", self.name(), self.describe())?;
+        match self.kept.is_empty() {
+            true => Ok(()),
+            false => write!(f, ", where=[{}]", in_words(&self.kept)),
+        }
     }
 
     fn with_exprs_and_inputs(&self, exprs: Vec<Expr>, mut inputs: Vec<LogicalPlan>) -> Result<Self> {
@@ -233,9 +247,12 @@ impl UserDefinedLogicalNodeCore for StructuralNode {
             })?;
             options.push((*argument, given));
         }
+        let kept = exprs.take(self.kept.len()).collect::<Vec<_>>();
         let input =
             inputs.pop().ok_or_else(|| bad_call(self.function, "the optimizer took the input away"))?;
-        Self::try_new(self.function, input, roles, options)
+        let (input, more) = conditions::separate(input, &self.input)?;
+        let node = Self::try_new(self.function, input, roles, options)?;
+        Ok(Self { kept: kept.into_iter().chain(more).collect(), ..node })
     }
 
     fn necessary_children_exprs(&self, output_columns: &[usize]) -> Option<Vec<Vec<usize>>> {
@@ -244,6 +261,10 @@ impl UserDefinedLogicalNodeCore for StructuralNode {
         let indices = keys.map(|key| self.input.schema().index_of_column(key)).collect::<Result<Vec<_>>>();
         indices.ok().map(|indices| vec![indices])
     }
+}
+
+fn in_words(exprs: &[Expr]) -> String {
+    exprs.iter().map(ToString::to_string).collect::<Vec<_>>().join(", ")
 }
 
 fn with_columns(
@@ -256,8 +277,8 @@ fn with_columns(
 // The schema follows from the rest, hence these by hand.
 impl PartialEq for StructuralNode {
     fn eq(&self, other: &Self) -> bool {
-        (self.function, &self.roles, &self.options, &self.input)
-            == (other.function, &other.roles, &other.options, &other.input)
+        (self.function, &self.roles, &self.options, &self.kept, &self.input)
+            == (other.function, &other.roles, &other.options, &other.kept, &other.input)
     }
 }
 
@@ -265,16 +286,17 @@ impl Eq for StructuralNode {}
 
 impl Hash for StructuralNode {
     fn hash<H: Hasher>(&self, state: &mut H) {
-        (self.function, &self.roles, &self.options, &self.input).hash(state);
+        (self.function, &self.roles, &self.options, &self.kept, &self.input).hash(state);
     }
 }
 
 impl PartialOrd for StructuralNode {
     fn partial_cmp(&self, other: &Self) -> Option<Ordering> {
-        (self.function, &self.roles, &self.options, &self.input).partial_cmp(&(
+        (self.function, &self.roles, &self.options, &self.kept, &self.input).partial_cmp(&(
             other.function,
             &other.roles,
             &other.options,
+            &other.kept,
             &other.input,
         ))
     }

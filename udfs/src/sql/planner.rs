@@ -10,6 +10,7 @@ use datafusion::execution::context::QueryPlanner;
 use datafusion::logical_expr::physical_planning_context::PhysicalPlanningContext;
 use datafusion::logical_expr::{LogicalPlan, UserDefinedLogicalNode};
 use datafusion::physical_plan::ExecutionPlan;
+use datafusion::physical_plan::filter::FilterExec;
 use datafusion::physical_planner::{DefaultPhysicalPlanner, ExtensionPlanner, PhysicalPlanner};
 
 use super::node::StructuralNode;
@@ -26,12 +27,12 @@ pub struct StructuralExtensionPlanner;
 impl ExtensionPlanner for StructuralExtensionPlanner {
     async fn plan_extension(
         &self,
-        _planner: &dyn PhysicalPlanner,
+        planner: &dyn PhysicalPlanner,
         node: &dyn UserDefinedLogicalNode,
         logical_inputs: &[&LogicalPlan],
         physical_inputs: &[Arc<dyn ExecutionPlan>],
-        _session: &dyn Session,
-        _context: &PhysicalPlanningContext,
+        session: &dyn Session,
+        context: &PhysicalPlanningContext,
     ) -> Result<Option<Arc<dyn ExecutionPlan>>> {
         let Some(node) = node.as_any().downcast_ref::<StructuralNode>() else { return Ok(None) };
         let ([logical], [input]) = (logical_inputs, physical_inputs) else {
@@ -40,7 +41,12 @@ impl ExtensionPlanner for StructuralExtensionPlanner {
                 node.function().name()
             )));
         };
-        Ok(Some(Arc::new(operator(node, logical.schema(), Arc::clone(input))?)))
+        let mut plan: Arc<dyn ExecutionPlan> = Arc::new(operator(node, logical.schema(), Arc::clone(input))?);
+        for condition in node.kept() {
+            let condition = planner.create_physical_expr(condition, node.schema(), session, context)?;
+            plan = Arc::new(FilterExec::try_new(condition, plan)?);
+        }
+        Ok(Some(plan))
     }
 }
 
