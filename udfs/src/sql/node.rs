@@ -118,6 +118,12 @@ impl StructuralNode {
         }
         let key_fields = keys.iter().map(|(_, field)| Arc::clone(field)).collect();
         fields.extend(columns.iter().map(|(field, _)| (None, Arc::clone(field))));
+        let mut names = BTreeSet::new();
+        if let Some((field, _)) = columns.iter().find(|(field, _)| !names.insert(field.name().as_str())) {
+            let what =
+                format!("two columns of the result would have the name '{}'; rename a driver", field.name());
+            return Err(bad_call(function, what));
+        }
         let schema = DFSchema::new_with_metadata(fields, Default::default()).map_err(|error| {
             bad_call(function, format!("two columns of the result would have one name: {error}"))
         })?;

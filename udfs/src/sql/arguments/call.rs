@@ -85,9 +85,14 @@ impl Call {
         for (argument, expr) in self.given {
             if matches!(argument.takes, Takes::Value | Takes::Constant) {
                 if let Expr::Identifier(word) = &expr {
+                    // Quotes help only where the argument knows words.
+                    let quoted = match argument.values.contains('\'') {
+                        true => format!("{} => '{word}' with quotes, if that text is meant; ", argument.name),
+                        false => String::new(),
+                    };
                     let what = format!(
-                        "takes a value, not a column: {} => '{word}' with quotes, if that text is meant (it takes {})",
-                        argument.name, argument.values
+                        "takes a value, not a column such as {word} ({quoted}it takes {})",
+                        argument.values
                     );
                     return Err(bad_argument(self.function, argument.name, what));
                 }

@@ -182,6 +182,29 @@ impl Value {
     }
 }
 
+/// An interval as it may be written again: `1 month`, `7 days`, `15 minutes`.
+fn in_words(interval: IntervalMonthDayNano) -> String {
+    let mut parts = Vec::new();
+    let mut part = |count: i64, unit: &str| {
+        if count != 0 {
+            parts.push(format!("{count} {unit}{}", if count.abs() == 1 { "" } else { "s" }));
+        }
+    };
+    part(interval.months.into(), "month");
+    part(interval.days.into(), "day");
+    let mut rest = interval.nanoseconds;
+    for (nanoseconds, unit) in [
+        (3_600_000_000_000, "hour"),
+        (60_000_000_000, "minute"),
+        (1_000_000_000, "second"),
+        (1, "nanosecond"),
+    ] {
+        part(rest / nanoseconds, unit);
+        rest %= nanoseconds;
+    }
+    if parts.is_empty() { "0 days".to_string() } else { parts.join(" ") }
+}
+
 impl std::fmt::Display for Value {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
         let list = |items: &mut dyn Iterator<Item = String>| items.collect::<Vec<_>>().join(", ");
@@ -191,7 +214,7 @@ impl std::fmt::Display for Value {
             Self::Whole(whole) => write!(f, "{whole}"),
             Self::Number(number) => write!(f, "{number}"),
             Self::Text(text) => write!(f, "'{text}'"),
-            Self::Interval(_) => write!(f, "an interval"),
+            Self::Interval(interval) => write!(f, "{}", in_words(*interval)),
             Self::List(items) => write!(f, "({})", list(&mut items.iter().map(ToString::to_string))),
             Self::Fields(fields) => {
                 write!(
@@ -252,6 +275,17 @@ mod tests {
         assert_eq!(Value::Number(12.0).as_count(), Some(12));
         assert_eq!(Value::Number(12.5).as_count(), None);
         assert_eq!(Value::Whole(-1).as_count(), None);
+    }
+
+    #[test]
+    fn intervals_read_like_sql() {
+        let shown = |months, days, nanoseconds| {
+            Value::Interval(IntervalMonthDayNano::new(months, days, nanoseconds)).to_string()
+        };
+        assert_eq!(shown(1, 0, 0), "1 month");
+        assert_eq!(shown(0, 7, 0), "7 days");
+        assert_eq!(shown(0, 0, 5_400_000_000_000), "1 hour 30 minutes");
+        assert_eq!(shown(0, 0, 0), "0 days");
     }
 
     #[test]

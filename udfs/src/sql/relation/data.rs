@@ -56,6 +56,10 @@ pub(super) fn plan(
                 let what = format!("takes a query: data => (SELECT * FROM '{path}')");
                 Err(bad_argument(function, "data", what))
             }
+            None if other.to_string().trim_start_matches('(').starts_with("VALUES") => {
+                let what = format!("takes a query: data => (SELECT * FROM {other})");
+                Err(bad_argument(function, "data", what))
+            }
             None => Err(not_a_relation(function, &other.to_string())),
         },
     }
