@@ -36,8 +36,8 @@ mistakes! {
         "components: argument 'trend' does not know 'local lineal'; valid are 'local level', 'local linear', 'smooth', \
          'damped', 'fixed level', 'fixed line', 'none', 'auto'; did you mean 'local linear'?";
     a_value_without_quotes: "components" "observed => units, trend => damped" =>
-        "components: argument 'trend' takes a value, not a column: trend => 'damped' with quotes, if that text is meant \
-         (it takes 'local level', 'local linear', 'smooth', 'damped', 'fixed level', 'fixed line', 'none', 'auto')";
+        "components: argument 'trend' takes a value, not a column such as damped (trend => 'damped' with quotes, if that text \
+         is meant; it takes 'local level', 'local linear', 'smooth', 'damped', 'fixed level', 'fixed line', 'none', 'auto')";
     a_transform_of_another_day: "components" "observed => units, transform => 'root'" =>
         "components: argument 'transform' does not know 'root'; valid are 'none', 'log', 'log1p', 'box-cox', 'auto'";
     a_horizon_of_nothing: "forecast" "observed => units, horizon => 0" =>
