@@ -67,7 +67,10 @@ fn every_function_has_an_example_on_the_page() {
         assert!(example.contains(&format!("{name}(")), "the example of {name} does not call it");
         assert!(shown.contains(&example.as_str()), "the example of {name} is not on the page");
         let record = format!("statement ok\n{example}\n");
-        assert!(records.contains(&record), "the example of {name} is no record of slt/examples.slt:\n{record}");
+        assert!(
+            records.contains(&record),
+            "the example of {name} is no record of slt/examples.slt:\n{record}"
+        );
     }
 }
 
