@@ -13,25 +13,41 @@ use crate::streams::Out;
 /// # Errors
 /// For a name that is no function's, with those that are.
 pub(crate) fn functions(args: &FunctionsArgs) -> Outcome<Exit> {
-    let all = stillwell::functions();
-    let width =
-        terminal_size::terminal_size().map_or(100, |(columns, _)| usize::from(columns.0).clamp(60, 120));
     let page = match &args.name {
-        _ if args.markdown => markdown::page(&all),
-        None => text::list(&all, width),
-        Some(name) => match all.iter().find(|doc| doc.function.name().eq_ignore_ascii_case(name)) {
-            Some(doc) => text::reference(doc, width),
-            None => {
-                let names: Vec<&str> = all.iter().map(|doc| doc.function.name()).collect();
-                let near = nearest(name, names.iter().copied());
-                return Err(Failure::usage(format!(
-                    "there is no function '{name}'{}; the functions are {}",
-                    near.map(|name| format!(" (did you mean '{name}'?)")).unwrap_or_default(),
-                    names.join(", ")
-                )));
-            }
-        },
+        _ if args.markdown => markdown::page(&stillwell::functions()),
+        None => format!(
+            "{}\nstillwell functions NAME tells the arguments, the columns and an example of one.\n",
+            list()
+        ),
+        Some(name) => reference(name)?,
     };
     Out::default().say(page)?;
     Ok(Exit::Done)
+}
+
+/// The list of all functions, for a terminal.
+pub(crate) fn list() -> String {
+    text::list(&stillwell::functions(), width())
+}
+
+/// The reference of one function, for a terminal.
+///
+/// # Errors
+/// For a name that is no function's, with those that are.
+pub(crate) fn reference(name: &str) -> Outcome<String> {
+    let all = stillwell::functions();
+    if let Some(doc) = all.iter().find(|doc| doc.function.name().eq_ignore_ascii_case(name)) {
+        return Ok(text::reference(doc, width()));
+    }
+    let names: Vec<&str> = all.iter().map(|doc| doc.function.name()).collect();
+    let near = nearest(name, names.iter().copied());
+    Err(Failure::usage(format!(
+        "there is no function '{name}'{}; the functions are {}",
+        near.map(|name| format!(" (did you mean '{name}'?)")).unwrap_or_default(),
+        names.join(", ")
+    )))
+}
+
+fn width() -> usize {
+    terminal_size::terminal_size().map_or(100, |(columns, _)| usize::from(columns.0).clamp(60, 120))
 }

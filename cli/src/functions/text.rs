@@ -8,7 +8,6 @@ pub(super) fn list(all: &[FunctionDoc], width: usize) -> String {
     for doc in all {
         entry(&mut text, doc.function.name(), &format!("One row is {}.", doc.one_row_is), width);
     }
-    text.push_str("\nstillwell functions NAME tells the arguments, the columns and an example of one.\n");
     text
 }
 
