@@ -9,6 +9,7 @@ use crate::amounts::Bytes;
 use crate::exit::EXIT_CODES;
 use crate::formats::Format;
 use crate::samples;
+use crate::shell::WORDS;
 
 /// Where each series of a Parquet warehouse stands, what comes next and what was odd, in SQL
 ///
@@ -26,6 +27,7 @@ pub(crate) struct Cli {
 pub(crate) enum Verb {
     Run(RunArgs),
     Query(QueryArgs),
+    Shell(ShellArgs),
     Functions(FunctionsArgs),
     Samples(SamplesArgs),
 }
@@ -40,6 +42,11 @@ pub(crate) enum Verb {
 /// What a COPY writes to the local file system appears whole, when its statement has succeeded, or not at all. It
 /// replaces what was at its target, so that a job may run again; a folder is replaced only if it holds nothing but
 /// files of the format that is written. INSERT INTO adds files to a table's folder.
+///
+/// A place may also be a URL: s3://bucket/..., gs://, az://, abfs://, abfss:// to read and to write, http:// and
+/// https:// to read. Keys and endpoints come from the environment variables AWS_..., GOOGLE_... and AZURE_.... What a
+/// COPY writes there appears when its statement has succeeded, object by object; it writes to a folder only while that
+/// is empty.
 ///
 /// Rows of plain SELECT statements go to the standard output; progress, and at the end what was written and which
 /// series were in trouble, to the standard error. If nobody reads the output any more (a closed pipe), it is
@@ -58,9 +65,9 @@ pub(crate) struct RunArgs {
 
 /// Run one statement and give its rows as a table, CSV, JSON or Parquet
 ///
-/// Files can be read directly: FROM 'folder/' or FROM 'folder/*.parquet'; relative paths count from the current
-/// directory. A table is for reading and shows the first rows; the other formats give all rows and take no memory
-/// for them.
+/// Files can be read directly: FROM 'folder/', FROM 'folder/*.parquet' or FROM 's3://bucket/folder/'; relative paths
+/// count from the current directory. A table is for reading and shows the first rows; the other formats give all rows
+/// and take no memory for them.
 #[derive(Debug, Args)]
 #[command(after_long_help = EXIT_CODES)]
 pub(crate) struct QueryArgs {
@@ -73,6 +80,29 @@ pub(crate) struct QueryArgs {
     /// Write to FILE instead of the standard output: whole, once all rows are there, or not at all
     #[arg(long, value_name = "FILE")]
     pub(crate) to: Option<PathBuf>,
+    #[command(flatten)]
+    pub(crate) engine: EngineArgs,
+}
+
+/// Type statements and see their rows
+///
+/// A statement ends with a semicolon and may take several lines. The Tab key completes keywords, tables, columns, the
+/// functions and, inside a call of them, the arguments and their values. Ctrl-C stops the statement that runs, or drops
+/// what has been typed; Ctrl-D ends the shell. Statements mean what they mean in a job: COPY writes whole files or
+/// none, URLs are read and written.
+///
+/// The lines typed are kept in ~/.local/state/stillwell/history (below XDG_STATE_HOME where that is set), readable by
+/// you alone. The environment variable STILLWELL_HISTORY names another file; if it is empty, nothing is kept. A line
+/// that begins with a space is not kept.
+///
+/// When the standard input is no terminal, statements are read from it and run as they come, without a prompt; the
+/// first that fails ends the shell with its exit code.
+#[derive(Debug, Args)]
+#[command(after_long_help = format!("{WORDS}\n{EXIT_CODES}"))]
+pub(crate) struct ShellArgs {
+    /// How rows are written [default: table]
+    #[arg(long, value_enum)]
+    pub(crate) format: Option<Format>,
     #[command(flatten)]
     pub(crate) engine: EngineArgs,
 }
@@ -112,7 +142,7 @@ pub(crate) struct SamplesArgs {
     pub(crate) seed: u64,
 }
 
-/// What `run` and `query` share.
+/// What `run`, `query` and `shell` share.
 #[derive(Debug, Clone, Args)]
 pub(crate) struct EngineArgs {
     /// Memory the engine may use, such as 512MB or 2GB; sorts and groupings beyond it go to temporary files

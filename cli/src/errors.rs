@@ -14,9 +14,7 @@ use datafusion::sql::sqlparser::parser::ParserError;
 use crate::exit::{Exit, Failure};
 use crate::nearest::nearest;
 use crate::panics;
-
-/// How the engine begins when a URL has a scheme that nothing serves.
-const NO_STORE: &str = "No suitable object store found for ";
+use crate::stores;
 
 /// The failure that `error` means: exit code 1, or 70 where a panic of the program is behind it.
 pub(crate) fn failure(error: &DataFusionError) -> Failure {
@@ -55,15 +53,15 @@ pub(crate) fn text(error: &DataFusionError) -> String {
             "out of memory under the limit that was set: {message}. Raise --memory-limit, or lower --threads \
              so that each thread has more of it"
         ),
-        DataFusionError::Internal(message) if message.starts_with(NO_STORE) => {
-            let place = message[NO_STORE.len()..].split(". See").next().unwrap_or_default();
-            format!("cannot reach '{place}': this build reads and writes local files only")
-        }
         DataFusionError::Internal(message) => {
             format!("the engine met a case it did not expect: {}", first_line(message))
         }
         DataFusionError::ExecutionJoin(join) if join.is_panic() => panics::calm_line(),
         DataFusionError::NotImplemented(message) => format!("not supported by the engine: {message}"),
+        DataFusionError::ObjectStore(store) => store_text(store.as_ref()),
+        DataFusionError::ParquetError(parquet) => {
+            stores::told(parquet.as_ref()).unwrap_or_else(|| error.message().into_owned())
+        }
         other => other.message().into_owned(),
     }
 }
@@ -84,13 +82,19 @@ fn foreign(error: &(dyn Error + 'static)) -> String {
     } else if let Some(arrow) = error.downcast_ref::<ArrowError>() {
         arrow_text(arrow)
     } else {
-        error.to_string()
+        store_text(error)
     }
+}
+
+/// The text of an error that a store of files may lie at the bottom of.
+fn store_text(error: &(dyn Error + 'static)) -> String {
+    stores::told(error).unwrap_or_else(|| error.to_string())
 }
 
 fn arrow_text(error: &ArrowError) -> String {
     match error {
         ArrowError::ExternalError(inner) => foreign(inner.as_ref()),
+        ArrowError::IoError(message, _) => stores::told(error).unwrap_or_else(|| message.clone()),
         other => other.to_string(),
     }
 }
@@ -202,13 +206,6 @@ mod tests {
     fn memory_pressure_names_the_options() {
         let told = text(&DataFusionError::ResourcesExhausted("need 3 MB more".into()));
         assert!(told.contains("--memory-limit") && told.contains("--threads"), "{told}");
-    }
-
-    #[test]
-    fn a_url_that_nothing_serves_is_said_plainly() {
-        let message = "No suitable object store found for s3://a/b. See `RuntimeEnv::register_object_store`";
-        let told = text(&DataFusionError::Internal(message.into()));
-        assert_eq!(told, "cannot reach 's3://a/b': this build reads and writes local files only");
     }
 
     #[test]

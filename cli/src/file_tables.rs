@@ -1,7 +1,7 @@
 //! `FROM 'folder/'`, `FROM 'folder/*.parquet'`, `FROM 'file.csv'`: files as tables, without CREATE EXTERNAL TABLE.
 //!
 //! A table name that is not registered and looks like a path is read from the file system, relative to the
-//! current directory. Folders named `column=value` below it become columns. The engine has such a catalog of its
+//! current directory, or from the store that its URL names (`stores`). Folders named `column=value` below it become columns. The engine has such a catalog of its
 //! own; this one differs in what it says (which files it looked for, which endings it can read) and in patterns
 //! that reach into folders (`file_patterns`).
 
@@ -9,7 +9,7 @@ use std::sync::Arc;
 
 use async_trait::async_trait;
 use datafusion::catalog::{DynamicFileCatalog, TableProvider, UrlTableFactory};
-use datafusion::common::{DataFusionError, Result, plan_datafusion_err, plan_err};
+use datafusion::common::{Result, plan_datafusion_err, plan_err};
 use datafusion::datasource::dynamic_file::DynamicListTableFactory;
 use datafusion::datasource::listing::{ListingOptions, ListingTable, ListingTableConfig};
 use datafusion::execution::SessionStateBuilder;
@@ -18,6 +18,7 @@ use datafusion::execution::session_state::SessionState;
 use futures::TryStreamExt;
 
 use crate::file_patterns;
+use crate::stores;
 
 /// Endings of file names and the engine's names of their formats.
 const ENDINGS: [(&str, &str); 6] = [
@@ -76,7 +77,7 @@ fn looks_like_files(name: &str) -> bool {
 }
 
 async fn table(name: &str, state: &SessionState) -> Result<Arc<dyn TableProvider>> {
-    let paths = file_patterns::resolve(name)?;
+    let paths = file_patterns::resolve(name, state).await?;
     let mut found: Vec<String> = Vec::new();
     for path in &paths {
         let store = state.runtime_env().object_store(path)?;
@@ -106,7 +107,11 @@ async fn table(name: &str, state: &SessionState) -> Result<Arc<dyn TableProvider
         .await?
         .infer_schema(state)
         .await
-        .map_err(|error| DataFusionError::Context(format!("cannot read '{name}'"), Box::new(error)))?;
+        .map_err(|error| match stores::told(&error) {
+            // What a store says names the place already.
+            Some(_) => error,
+            None => error.context(format!("cannot read '{name}'")),
+        })?;
     Ok(Arc::new(ListingTable::try_new(config)?))
 }
 
@@ -127,10 +132,7 @@ fn common_ending(name: &str, found: &[String]) -> Result<(&'static str, Option<&
     endings.dedup();
     match endings.as_slice() {
         [one] => Ok(*one),
-        [] if found.is_empty() => plan_err!(
-            "no file matches '{name}'{}: check the path; it counts from the current directory",
-            looked_in(name)
-        ),
+        [] if found.is_empty() => Err(file_patterns::nothing_matches(name)),
         [] => plan_err!(
             "cannot read '{name}': '{}' has none of the endings .parquet, .csv, .json, .ndjson, .jsonl or .arrow \
              (with .gz, .bz2, .xz or .zst after it or not)",
@@ -142,14 +144,6 @@ fn common_ending(name: &str, found: &[String]) -> Result<(&'static str, Option<&
             name.trim_end_matches('/')
         ),
     }
-}
-
-/// Where a relative path was looked for, in brackets.
-fn looked_in(name: &str) -> String {
-    if name.contains("://") || std::path::Path::new(name).is_absolute() {
-        return String::new();
-    }
-    std::env::current_dir().map(|here| format!(" in '{}'", here.display())).unwrap_or_default()
 }
 
 /// Markers such as `_SUCCESS` and `.crc` files that other writers put beside their data.

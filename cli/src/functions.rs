@@ -15,7 +15,10 @@ use crate::streams::Out;
 pub(crate) fn functions(args: &FunctionsArgs) -> Outcome<Exit> {
     let page = match &args.name {
         _ if args.markdown => markdown::page(&stillwell::functions(), &stillwell::value_functions()),
-        None => format!("{}\nstillwell functions NAME tells the arguments and an example of one.\n", list()),
+        None => format!(
+            "{}\nstillwell functions NAME tells the arguments, the columns and an example of one.\n",
+            list()
+        ),
         Some(name) => reference(name)?,
     };
     Out::default().say(page)?;

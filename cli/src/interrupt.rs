@@ -5,6 +5,9 @@
 //! folders, reports what was finished, and ends with 130 (or 143). Should the verb not have ended after
 //! [`PATIENCE`] (a planner that computes without pause), or at a second signal, the thread removes the staging
 //! folders itself and ends the process.
+//!
+//! In a shell ([`Habit::GoOn`]) Ctrl-C stops the statement that runs and nothing else; SIGTERM ends it as it ends the
+//! other verbs.
 
 use std::io;
 use std::thread;
@@ -17,6 +20,7 @@ use tokio::task::JoinSet;
 use crate::copy_staging;
 use crate::exit::{Exit, Failure, Outcome};
 use crate::panics;
+use crate::stores;
 use crate::streams;
 
 /// How long the verb has to end by itself. Together with the clean-up this stays below a second.
@@ -24,6 +28,16 @@ const PATIENCE: Duration = Duration::from_millis(700);
 
 /// How long cancelled work has to let go of what it holds.
 const CANCELLATION: Duration = Duration::from_millis(250);
+
+/// What Ctrl-C means to a verb.
+#[derive(Debug, Clone, Copy)]
+pub(crate) enum Habit {
+    /// The verb ends.
+    End,
+    /// What the verb is doing ends, and the verb goes on. The function is called before the thread of the signals has
+    /// to end the process.
+    GoOn(fn()),
+}
 
 /// Tells a verb that the user wants it to stop. Clones hear the same signal.
 #[derive(Debug, Clone)]
@@ -36,7 +50,7 @@ impl Interrupt {
     ///
     /// # Errors
     /// When the system gives no thread or refuses the signal handlers.
-    pub(crate) fn listen() -> io::Result<Self> {
+    pub(crate) fn listen(habit: Habit) -> io::Result<Self> {
         let (told, signal) = watch::channel(None);
         let runtime = runtime::Builder::new_current_thread().enable_all().build()?;
         let mut signals = {
@@ -45,12 +59,20 @@ impl Interrupt {
         };
         thread::Builder::new().name("signals".to_string()).spawn(move || {
             runtime.block_on(async {
-                let exit = signals.next().await;
-                // A verb that has just ended listens no longer; the process is about to end by itself.
-                let _ = told.send(Some(exit));
+                let exit = loop {
+                    let exit = signals.next().await;
+                    // A verb that has just ended listens no longer; the process is about to end by itself.
+                    let _ = told.send(Some(exit));
+                    if !matches!((habit, exit), (Habit::GoOn(_), Exit::Interrupted)) {
+                        break exit;
+                    }
+                };
                 // A second signal or the end of patience: either way it is time to go.
                 let _ = tokio::time::timeout(PATIENCE, signals.next()).await;
                 copy_staging::remove_all_unfinished();
+                if let Habit::GoOn(before_the_end) = habit {
+                    before_the_end();
+                }
                 streams::tell("stopped; what was not finished is removed");
                 std::process::exit(i32::from(exit.code()));
             });
@@ -58,13 +80,18 @@ impl Interrupt {
         Ok(Self { signal })
     }
 
-    /// Waits until a signal comes; the exit code it asks for.
+    /// Waits until a signal comes that nobody has acted on; the exit code it asks for.
     pub(crate) async fn received(&mut self) -> Exit {
-        match self.signal.wait_for(Option::is_some).await {
-            Ok(exit) => exit.unwrap_or(Exit::Interrupted),
+        match self.signal.changed().await {
+            Ok(()) => self.signal.borrow_and_update().unwrap_or(Exit::Interrupted),
             // The listening thread is gone only while the process ends.
             Err(_) => std::future::pending().await,
         }
+    }
+
+    /// Lets a Ctrl-C pass that came while nothing was running.
+    pub(crate) fn forget(&mut self) {
+        self.signal.mark_unchanged();
     }
 }
 
@@ -78,14 +105,27 @@ impl Interrupt {
         &mut self,
         work: impl Future<Output = Outcome<T>> + Send + 'static,
     ) -> Outcome<T> {
+        self.unless_stopped_on(&runtime::Handle::current(), work).await
+    }
+
+    /// The same on threads of the caller's choice.
+    ///
+    /// # Errors
+    /// Those of the work, or the end that the signal asks for.
+    pub(crate) async fn unless_stopped_on<T: Send + 'static>(
+        &mut self,
+        threads: &runtime::Handle,
+        work: impl Future<Output = Outcome<T>> + Send + 'static,
+    ) -> Outcome<T> {
         let mut tasks = JoinSet::new();
-        tasks.spawn(work);
+        tasks.spawn_on(work, threads);
         tokio::select! {
             biased;
             exit = self.received() => {
                 tasks.abort_all();
                 wait_a_moment(&mut tasks);
                 copy_staging::remove_all_unfinished();
+                stores::let_go(CANCELLATION);
                 Err(Failure::stopped(exit))
             }
             done = tasks.join_next() => match done {

@@ -1,13 +1,15 @@
 //! `stillwell`, the command: SQL jobs and queries over Parquet, with the functions of the `stillwell` library.
 //!
-//! Each verb is a module ([`run`], [`query`], [`functions`], [`demo`]); they share the session ([`session`]),
-//! the staging of output ([`copy_staging`]) and the report at the end ([`summary`]).
+//! Each verb is a module ([`run`], [`query`], [`shell`], [`functions`], [`demo`]); they share the session ([`session`]),
+//! the execution of a statement ([`execute`]), the staging of output ([`copy_staging`]), the stores behind URLs
+//! ([`stores`]) and the report at the end ([`summary`]).
 
 mod amounts;
 mod args;
 mod copy_staging;
 mod demo;
 mod errors;
+mod execute;
 mod exit;
 mod file_patterns;
 mod file_tables;
@@ -19,13 +21,17 @@ mod nearest;
 mod panics;
 mod progress;
 mod query;
+mod rows;
 mod run;
 mod samples;
 mod session;
+mod shell;
 mod statements;
+mod stores;
 mod streams;
 mod summary;
 mod table;
+mod threads;
 
 use std::process::ExitCode;
 
@@ -33,11 +39,7 @@ use clap::Parser;
 
 use crate::args::{Cli, EngineArgs, Verb};
 use crate::exit::{Exit, Failure, Outcome};
-use crate::interrupt::Interrupt;
-
-/// Stack of a worker, in bytes. The engine walks plans and expressions by recursion; a statement with some hundreds
-/// of nested terms needs more than the 2 MiB that a thread has otherwise. It is address space, not memory.
-const STACK: usize = 64 << 20;
+use crate::interrupt::{Habit, Interrupt};
 
 fn main() -> ExitCode {
     panics::note_quietly();
@@ -57,11 +59,16 @@ fn perform(verb: Verb) -> Outcome<Exit> {
     match verb {
         Verb::Run(args) => {
             let engine = args.engine.clone();
-            with_engine(&engine, async |interrupt| run::run(args, interrupt).await)
+            with_engine(&engine, Habit::End, async |interrupt| run::run(args, interrupt).await)
         }
         Verb::Query(args) => {
             let engine = args.engine.clone();
-            with_engine(&engine, async |interrupt| query::query(args, interrupt).await)
+            with_engine(&engine, Habit::End, async |interrupt| query::query(args, interrupt).await)
+        }
+        Verb::Shell(args) => {
+            let engine = args.engine.clone();
+            let habit = shell::habit();
+            with_engine(&engine, habit, async |interrupt| shell::shell(args, interrupt).await)
         }
         Verb::Functions(args) => functions::functions(&args),
         Verb::Samples(args) => demo::samples(&args),
@@ -71,16 +78,12 @@ fn perform(verb: Verb) -> Outcome<Exit> {
 /// Runs `work` on as many threads as asked for, listening for Ctrl-C.
 fn with_engine(
     options: &EngineArgs,
+    habit: Habit,
     work: impl AsyncFnOnce(&mut Interrupt) -> Outcome<Exit>,
 ) -> Outcome<Exit> {
     let refused = |error| Failure { exit: Exit::Internal, message: format!("cannot start: {error}") };
-    let runtime = tokio::runtime::Builder::new_multi_thread()
-        .worker_threads(session::threads(options))
-        .thread_stack_size(STACK)
-        .enable_all()
-        .build()
-        .map_err(refused)?;
-    let mut interrupt = Interrupt::listen().map_err(refused)?;
+    let runtime = threads::runtime(options).map_err(refused)?;
+    let mut interrupt = Interrupt::listen(habit).map_err(refused)?;
     let outcome = runtime.block_on(work(&mut interrupt));
     // Work that was cancelled may still hold a thread; nobody waits for it.
     runtime.shutdown_background();

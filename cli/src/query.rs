@@ -1,29 +1,27 @@
 //! `stillwell query "SELECT …"`: one statement, its rows in one of several formats.
 
 use std::fs::File;
-use std::io::{self, BufWriter, IsTerminal, Write};
+use std::io::{self, BufWriter, IsTerminal};
 use std::path::PathBuf;
 
 use datafusion::common::DataFusionError;
-use datafusion::execution::SendableRecordBatchStream;
 use datafusion::execution::context::SessionContext;
 use datafusion::logical_expr::LogicalPlan;
 use datafusion::sql::parser::Statement;
-use futures::StreamExt;
 
 use crate::args::{EngineArgs, QueryArgs};
 use crate::copy_staging::{Kind, Staging, Target, Written};
 use crate::errors;
 use crate::exit::{Exit, Failure, Outcome};
 use crate::fits::Fits;
-use crate::formats::{Format, RowWriter};
+use crate::formats::Format;
 use crate::interrupt::Interrupt;
 use crate::progress::Bar;
+use crate::rows::{TableSize, write_rows};
 use crate::session;
 use crate::statements;
 use crate::streams::{Out, read_stdin, terminal_width};
 use crate::summary::Report;
-use crate::table::Table;
 
 /// Runs the statement of `args` and writes its rows.
 ///
@@ -123,53 +121,4 @@ async fn execute(
     let files = staging.put_in_place(None)?;
     let target = file.display().to_string();
     Ok(Some(Written { target, kind: Some(Kind::File), rows: Some(rows), files: Some(files) }))
-}
-
-/// How much of a result a table shows.
-#[derive(Debug, Clone, Copy)]
-struct TableSize {
-    /// Rows; 0 = all.
-    rows: usize,
-    /// Columns of the terminal it is shown on.
-    width: Option<usize>,
-}
-
-/// Writes the rows of `stream` to `sink` and returns their number. Ends early once `out` is closed.
-async fn write_rows(
-    mut stream: SendableRecordBatchStream,
-    format: Format,
-    mut sink: impl Write + Send,
-    table: TableSize,
-    out: &Out,
-) -> Outcome<u64> {
-    let schema = stream.schema();
-    let mut rows = 0;
-    let Some(mut writer) = RowWriter::new(format, &mut sink, &schema)? else {
-        return write_table(stream, sink, table).await;
-    };
-    while let Some(batch) = stream.next().await {
-        let batch = batch.map_err(|error| errors::failure(&error))?;
-        rows += batch.num_rows() as u64;
-        writer.write(&batch)?;
-        if out.closed() {
-            break;
-        }
-    }
-    writer.finish()?;
-    Ok(rows)
-}
-
-async fn write_table(
-    mut stream: SendableRecordBatchStream,
-    mut sink: impl Write,
-    size: TableSize,
-) -> Outcome<u64> {
-    let mut table = Table::new(stream.schema(), size.rows);
-    while let Some(batch) = stream.next().await {
-        table.push(&batch.map_err(|error| errors::failure(&error))?);
-    }
-    sink.write_all(table.render(size.width)?.as_bytes())
-        .and_then(|()| sink.flush())
-        .map_err(|error| Failure::failed(format!("cannot write the rows: {error}")))?;
-    Ok(table.rows())
 }

@@ -1,7 +1,6 @@
 //! The engine's session for one run of the command.
 
 use std::sync::Arc;
-use std::thread;
 
 use datafusion::execution::SessionStateBuilder;
 use datafusion::execution::cache::cache_manager::CacheManagerConfig;
@@ -17,16 +16,11 @@ use crate::errors;
 use crate::exit::{Failure, Outcome};
 use crate::file_tables;
 use crate::nearest::nearest;
+use crate::stores::Stores;
+use crate::threads;
 
 /// How many consumers of memory an out-of-memory message names.
 const CONSUMERS_NAMED: std::num::NonZeroUsize = std::num::NonZeroUsize::new(3).unwrap();
-
-/// The threads to work with: as asked for, or one per processor.
-pub(crate) fn threads(options: &EngineArgs) -> usize {
-    options
-        .threads
-        .map_or_else(|| thread::available_parallelism().map_or(1, std::num::NonZeroUsize::get), Into::into)
-}
 
 /// A session with stillwell's functions, files as tables, and the limits and settings of the command line.
 ///
@@ -35,10 +29,11 @@ pub(crate) fn threads(options: &EngineArgs) -> usize {
 pub(crate) async fn open(options: &EngineArgs, config: SessionConfig) -> Outcome<SessionContext> {
     // One file per folder, or per value of PARTITIONED BY, keeps the rows in the order of the statement.
     let config = config
-        .with_target_partitions(threads(options))
+        .with_target_partitions(threads::number(options))
         .with_information_schema(true)
         .set_usize("datafusion.execution.minimum_parallel_output_files", 1);
     let mut runtime = RuntimeEnvBuilder::new()
+        .with_object_store_registry(Arc::new(Stores::default()))
         // A job reads folders that it has just replaced: a remembered list of files would be the old one.
         .with_cache_manager(CacheManagerConfig::default().with_list_files_cache_limit(0));
     if let Some(limit) = options.memory_limit {

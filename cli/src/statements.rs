@@ -41,27 +41,36 @@ impl fmt::Display for Place {
 impl JobStatement {
     /// The COPY this statement runs, be it under EXPLAIN ANALYZE.
     pub(crate) fn copy(&self) -> Option<&CopyToStatement> {
-        match &self.statement {
-            Statement::CopyTo(copy) => Some(copy),
-            Statement::Explain(explain) if explain.options.analyze => match explain.statement.as_ref() {
-                Statement::CopyTo(copy) => Some(copy),
-                _ => None,
-            },
-            _ => None,
-        }
+        copy_of(&self.statement)
     }
 
-    /// A few words for the progress line: the beginning of the statement on one line.
+    /// A few words for the progress line.
     pub(crate) fn label(&self) -> String {
-        if let Some(copy) = self.copy() {
-            return format!("COPY to '{}'", copy.target);
-        }
-        const LONGEST: usize = 40;
-        let words = self.statement.to_string().split_whitespace().collect::<Vec<_>>().join(" ");
-        match words.char_indices().nth(LONGEST) {
-            Some((end, _)) => format!("{}…", &words[..end]),
-            None => words,
-        }
+        label(&self.statement)
+    }
+}
+
+fn copy_of(statement: &Statement) -> Option<&CopyToStatement> {
+    match statement {
+        Statement::CopyTo(copy) => Some(copy),
+        Statement::Explain(explain) if explain.options.analyze => match explain.statement.as_ref() {
+            Statement::CopyTo(copy) => Some(copy),
+            _ => None,
+        },
+        _ => None,
+    }
+}
+
+/// A few words for the progress line: the beginning of the statement on one line.
+pub(crate) fn label(statement: &Statement) -> String {
+    if let Some(copy) = copy_of(statement) {
+        return format!("COPY to '{}'", copy.target);
+    }
+    const LONGEST: usize = 40;
+    let words = statement.to_string().split_whitespace().collect::<Vec<_>>().join(" ");
+    match words.char_indices().nth(LONGEST) {
+        Some((end, _)) => format!("{}…", &words[..end]),
+        None => words,
     }
 }
 
@@ -95,6 +104,24 @@ pub(crate) fn parse(sql: &str) -> Outcome<Vec<JobStatement>> {
         statements.push(JobStatement { place, statement });
         delimited = false;
     }
+}
+
+/// The one statement that `sql` is, with or without its semicolon.
+///
+/// # Errors
+/// For a syntax error, or when `sql` is not one statement.
+pub(crate) fn parse_one(sql: &str) -> Outcome<Statement> {
+    let broken = |error| errors::failure(&error);
+    let mut parser =
+        DFParserBuilder::new(sql).with_recursion_limit(RECURSION_LIMIT).build().map_err(broken)?;
+    let statement = parser.parse_statement().map_err(broken)?;
+    let _ = parser.parser.consume_token(&Token::SemiColon);
+    let next = parser.parser.peek_token();
+    if next.token != Token::EOF {
+        let message = format!("syntax error: expected ';' or the end of the statement, found '{next}'");
+        return Err(Failure::failed(format!("{message} at line {}", next.span.start.line)));
+    }
+    Ok(statement)
 }
 
 #[cfg(test)]
@@ -140,6 +167,16 @@ mod tests {
                 .expect("parses");
         let targets: Vec<_> = statements.iter().map(|s| s.copy().map(|c| c.target.as_str())).collect();
         assert_eq!(targets, [None, Some("b.csv"), Some("c.csv")]);
+    }
+
+    #[test]
+    fn one_statement_is_one() {
+        assert!(parse_one("SELECT 1 -- the only one").is_ok());
+        assert!(parse_one("SELECT 1;").is_ok() && parse_one("SELECT 1; SELECT 2").is_err());
+        assert!(parse_one("SELECT 1 COPY").is_ok(), "an alias");
+        let told = parse_one("SELECT 1\nCOPY t TO 'x.parquet'").expect_err("two").message;
+        assert!(told.contains("found 't'") || told.contains("found 'TO'"), "{told}");
+        assert!(parse_one("SELECT 1 +").expect_err("bad").message.starts_with("syntax error: "));
     }
 
     #[test]

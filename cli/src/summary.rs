@@ -65,11 +65,17 @@ impl Report {
         let _ = io::stderr().write_all(self.text().as_bytes());
     }
 
-    /// The report as text, some lines.
-    pub(crate) fn text(&self) -> String {
+    /// What was written and which series were in trouble, without the line about the time.
+    pub(crate) fn notes(&self) -> String {
         let mut text = String::new();
         self.tell_written(&mut text);
         self.tell_fits(&mut text);
+        text
+    }
+
+    /// The report as text, some lines.
+    pub(crate) fn text(&self) -> String {
+        let mut text = self.notes();
         let statements = match self.finished == self.statements {
             true => counted(self.statements as u64, "statement"),
             false => format!("{} of {} statements done", self.finished, self.statements),

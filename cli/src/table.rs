@@ -9,6 +9,9 @@ use arrow::util::pretty::pretty_format_batches_with_options;
 use crate::amounts;
 use crate::exit::{Failure, Outcome};
 
+/// How more rows of a table are to be had, on the command line.
+pub(crate) const MORE: &str = "--rows N shows more, --rows 0 all";
+
 /// Collects the first rows of a result and counts the others.
 #[derive(Debug)]
 pub(crate) struct Table {
@@ -41,20 +44,16 @@ impl Table {
         self.rows
     }
 
-    /// Whether there is anything to show: SET and CREATE give a result without columns.
-    pub(crate) fn has_columns(&self) -> bool {
-        !self.schema.fields().is_empty()
-    }
-
-    /// The table as text, ending with a line break. `width`: columns of the terminal, if it is one.
+    /// The table as text, ending with a line break. `width`: columns of the terminal, if it is one. `more`: how the rows
+    /// that are not shown can be had.
     ///
     /// # Errors
     /// When a value cannot be written as text.
-    pub(crate) fn render(&self, width: Option<usize>) -> Outcome<String> {
-        self.text(width).map_err(|error| Failure::failed(format!("cannot show the rows: {error}")))
+    pub(crate) fn render(&self, width: Option<usize>, more: &str) -> Outcome<String> {
+        self.text(width, more).map_err(|error| Failure::failed(format!("cannot show the rows: {error}")))
     }
 
-    fn text(&self, width: Option<usize>) -> Result<String, ArrowError> {
+    fn text(&self, width: Option<usize>, more: &str) -> Result<String, ArrowError> {
         let mut shown = self.schema.fields().len();
         let mut text = self.draw(shown)?;
         while let Some(width) = width
@@ -67,7 +66,7 @@ impl Table {
         text.push('\n');
         if (self.kept as u64) < self.rows {
             text.push_str(&format!(
-                "{} of {} rows; --rows N shows more, --rows 0 all\n",
+                "{} of {} rows; {more}\n",
                 amounts::count(self.kept as u64),
                 amounts::count(self.rows)
             ));
@@ -113,27 +112,27 @@ mod tests {
 
     #[test]
     fn the_first_rows_are_shown_and_the_others_counted() {
-        let text = table(4).render(None).expect("rendered");
+        let text = table(4).render(None, MORE).expect("rendered");
         assert_eq!(text.matches("NULL").count(), 4);
         assert!(text.ends_with("4 of 6 rows; --rows N shows more, --rows 0 all\n"), "{text}");
     }
 
     #[test]
     fn zero_shows_all_rows() {
-        let text = table(0).render(None).expect("rendered");
+        let text = table(0).render(None, MORE).expect("rendered");
         assert_eq!((text.matches("NULL").count(), text.contains("--rows")), (6, false));
     }
 
     #[test]
     fn columns_that_do_not_fit_are_named() {
-        let text = table(1).render(Some(10)).expect("rendered");
+        let text = table(1).render(Some(10), MORE).expect("rendered");
         assert!(text.starts_with("+------+\n"), "{text}");
         assert!(text.ends_with("not shown: litres\n"), "{text}");
     }
 
     #[test]
     fn an_empty_result_still_shows_its_columns() {
-        let text = Table::new(batch(0).schema(), 5).render(None).expect("rendered");
+        let text = Table::new(batch(0).schema(), 5).render(None, MORE).expect("rendered");
         assert!(text.contains("| week | litres |"), "{text}");
     }
 }

@@ -14,21 +14,30 @@
 //!    a panic. A process that is killed outright leaves it behind; it is recognised (nobody holds its lock) and
 //!    cleared by the next job that writes to the same target (`staging`).
 //!
-//! Targets with a scheme other than `file://` are left to the engine.
+//! In an object store a set of objects has no rename. A COPY to a URL is checked to add to nothing and to replace nothing
+//! it reads, and its objects are held back until the statement has succeeded (`remote`).
 
 mod conflicts;
 mod contents;
 mod disk;
 mod part_names;
 mod plain_columns;
+mod remote;
 mod sources;
 mod staging;
 mod swap;
 mod target;
 
+use std::sync::Arc;
+
+use arrow::datatypes::SchemaRef;
+use datafusion::common::DataFusionError;
+use datafusion::execution::context::SessionContext;
 use datafusion::logical_expr::dml::CopyTo;
 use datafusion::logical_expr::{Analyze, LogicalPlan};
-use std::sync::Arc;
+
+use parquet::arrow::ArrowWriter;
+use parquet::errors::ParquetError;
 
 pub(crate) use conflicts::refuse_conflicts;
 pub(crate) use plain_columns::plain_type;
@@ -37,6 +46,7 @@ pub(crate) use target::{Kind, Target};
 
 use crate::errors;
 use crate::exit::{Failure, Outcome};
+use crate::stores::Held;
 
 /// What a statement has written.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -68,24 +78,30 @@ pub(crate) struct Prepared {
 #[derive(Debug)]
 struct Copy {
     target: String,
-    staging: Option<Staging>,
+    output: Output,
 }
 
-/// Points the COPY of `plan` (itself a COPY, or EXPLAIN ANALYZE of one) at a staging folder. Other plans, and
-/// targets that are not local, pass unchanged. `keeps_keys`: whether the session keeps the columns of PARTITIONED BY
-/// in the files too.
+/// What waits for the end of a statement.
+#[derive(Debug)]
+enum Output {
+    Local(Staging),
+    Remote(Held),
+}
+
+/// Points the COPY of `plan` (itself a COPY, or EXPLAIN ANALYZE of one) at a staging folder, or looks at its target
+/// in an object store. Other plans pass unchanged.
 ///
 /// # Errors
 /// When the target cannot or must not be replaced; nothing has been touched then.
-pub(crate) fn prepare(plan: LogicalPlan, keeps_keys: bool) -> Outcome<Prepared> {
+pub(crate) async fn prepare(plan: LogicalPlan, context: &SessionContext) -> Outcome<Prepared> {
     match plan {
         LogicalPlan::Copy(copy) => {
-            let (copy, staged) = stage(copy, keeps_keys)?;
+            let (copy, staged) = stage(copy, context).await?;
             Ok(Prepared { plan: LogicalPlan::Copy(copy), copy: Some(staged) })
         }
         LogicalPlan::Analyze(analyze) => match analyze.input.as_ref() {
             LogicalPlan::Copy(copy) => {
-                let (copy, staged) = stage(copy.clone(), keeps_keys)?;
+                let (copy, staged) = stage(copy.clone(), context).await?;
                 let analyze = Analyze { input: Arc::new(LogicalPlan::Copy(copy)), ..analyze };
                 Ok(Prepared { plan: LogicalPlan::Analyze(analyze), copy: Some(staged) })
             }
@@ -95,16 +111,22 @@ pub(crate) fn prepare(plan: LogicalPlan, keeps_keys: bool) -> Outcome<Prepared> 
     }
 }
 
-fn stage(copy: CopyTo, keeps_keys: bool) -> Outcome<(CopyTo, Copy)> {
+async fn stage(copy: CopyTo, context: &SessionContext) -> Outcome<(CopyTo, Copy)> {
     let shown = copy.output_url.clone();
-    let Some(target) = Target::of_copy(&copy)? else {
-        return Ok((copy, Copy { target: shown, staging: None }));
+    let output = match Target::of_copy(&copy)? {
+        Some(target) => {
+            sources::refuse(&copy.input, &target)?;
+            Output::Local(Staging::open(target)?)
+        }
+        None => Output::Remote(remote::open(&copy, context).await?),
     };
-    sources::refuse(&copy.input, &target)?;
+    let keeps_keys = context.state().config_options().execution.keep_partition_by_columns;
     let mut copy = plain_columns::simplify(copy, keeps_keys).map_err(|error| errors::failure(&error))?;
-    let staging = Staging::open(target)?;
-    copy.output_url = staging.url()?;
-    Ok((copy, Copy { target: shown, staging: Some(staging) }))
+    copy.output_url = match &output {
+        Output::Local(staging) => staging.url()?,
+        Output::Remote(held) => held.url().to_string(),
+    };
+    Ok((copy, Copy { target: shown, output }))
 }
 
 impl Prepared {
@@ -116,11 +138,22 @@ impl Prepared {
     /// Puts the finished output of a successful statement in its place. `rows`: as counted by the engine.
     ///
     /// # Errors
-    /// When the file system refuses; the old content is in its place then.
-    pub(crate) fn finish(self, rows: Option<u64>) -> Outcome<Option<Written>> {
-        let Some(Copy { target, staging }) = self.copy else { return Ok(None) };
-        let Some(staging) = staging else {
-            return Ok(Some(Written { target, kind: None, rows, files: None }));
+    /// When the file system refuses, and the old content is in its place then; when a store refuses.
+    pub(crate) async fn finish(self, rows: Option<u64>) -> Outcome<Option<Written>> {
+        let Some(Copy { target, output }) = self.copy else { return Ok(None) };
+        let staging = match output {
+            Output::Local(staging) => staging,
+            Output::Remote(held) => {
+                let engine = |error: DataFusionError| errors::failure(&error);
+                if let Some(schema) = copied_schema(&self.plan)
+                    && held.is_empty()
+                {
+                    let bytes = without_rows(&schema).map_err(|error| engine(error.into()))?;
+                    held.add("part-0.parquet", bytes).map_err(engine)?;
+                }
+                held.release().await.map_err(engine)?;
+                return Ok(Some(Written { target, kind: None, rows, files: None }));
+            }
         };
         let kind = staging.kind();
         let schema = copied_schema(&self.plan);
@@ -135,9 +168,23 @@ impl Prepared {
     }
 }
 
+impl Prepared {
+    /// Drops the output of a statement that has failed.
+    pub(crate) async fn discard(self) {
+        if let Some(Copy { output: Output::Remote(held), .. }) = self.copy {
+            held.discard().await;
+        }
+    }
+}
+
+/// A Parquet file with columns and without rows.
+fn without_rows(schema: &SchemaRef) -> Result<Vec<u8>, ParquetError> {
+    ArrowWriter::try_new(Vec::new(), Arc::clone(schema), None)?.into_inner()
+}
+
 /// The schema of an unpartitioned Parquet COPY: an empty result still leaves one file that carries it, so that
 /// the next job finds its columns.
-fn copied_schema(plan: &LogicalPlan) -> Option<arrow::datatypes::SchemaRef> {
+fn copied_schema(plan: &LogicalPlan) -> Option<SchemaRef> {
     let copy = match plan {
         LogicalPlan::Copy(copy) => copy,
         LogicalPlan::Analyze(analyze) => match analyze.input.as_ref() {

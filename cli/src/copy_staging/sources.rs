@@ -12,13 +12,12 @@ use super::target::Target;
 use crate::errors;
 use crate::exit::{Failure, Outcome};
 
-/// Refuses a COPY of `input` to `target` when a table of `input` lies in the target, or the target in it.
+/// Refuses a COPY of `input` to the local `target` when a table of `input` lies in the target, or the target in it.
 ///
 /// # Errors
 /// Names the target and what to do.
 pub(super) fn refuse(input: &LogicalPlan, target: &Target) -> Outcome<()> {
-    let mut read = Vec::new();
-    collect(input, &mut read).map_err(|error| errors::failure(&error))?;
+    let read: Vec<_> = read_by(input)?.iter().filter_map(local).collect();
     let overlaps = |(path, whole): &(PathBuf, bool)| {
         let path = path.canonicalize().unwrap_or_else(|_| path.clone());
         path.starts_with(&target.path) || (*whole && target.path.starts_with(&path))
@@ -34,15 +33,20 @@ pub(super) fn refuse(input: &LogicalPlan, target: &Target) -> Outcome<()> {
     }
 }
 
-/// Local places that the tables of a plan lie in, views and subqueries included, and whether everything below is read
-/// (with a pattern it is not).
-fn collect(plan: &LogicalPlan, read: &mut Vec<(PathBuf, bool)>) -> Result<()> {
+/// The places that the tables of a plan lie in, views and subqueries included.
+pub(super) fn read_by(plan: &LogicalPlan) -> Outcome<Vec<ListingTableUrl>> {
+    let mut read = Vec::new();
+    collect(plan, &mut read).map_err(|error| errors::failure(&error))?;
+    Ok(read)
+}
+
+fn collect(plan: &LogicalPlan, read: &mut Vec<ListingTableUrl>) -> Result<()> {
     plan.apply_with_subqueries(|node| {
         if let LogicalPlan::TableScan(scan) = node
             && let Ok(provider) = source_as_provider(&scan.source)
         {
             if let Some(table) = provider.downcast_ref::<ListingTable>() {
-                read.extend(table.table_paths().iter().filter_map(local));
+                read.extend(table.table_paths().iter().cloned());
             } else if let Some(view) = provider.get_logical_plan() {
                 collect(&view, read)?;
             }
@@ -52,6 +56,7 @@ fn collect(plan: &LogicalPlan, read: &mut Vec<(PathBuf, bool)>) -> Result<()> {
     Ok(())
 }
 
+/// A local place and whether everything below it is read (with a pattern it is not).
 fn local(url: &ListingTableUrl) -> Option<(PathBuf, bool)> {
     if url.scheme() != "file" {
         return None;

@@ -15,7 +15,6 @@ use std::thread;
 use std::time::Duration;
 
 use arrow::datatypes::SchemaRef;
-use parquet::arrow::ArrowWriter;
 use url::Url;
 
 use super::disk::{self, Tree};
@@ -135,7 +134,8 @@ impl Staging {
             if let Some(schema) = schema
                 && Tree::at(&self.content)?.files.is_empty()
             {
-                write_empty(&self.content.join("part-0.parquet"), schema)?;
+                let file = self.content.join("part-0.parquet");
+                fs::write(file, super::without_rows(schema).map_err(io::Error::other)?)?;
             }
         }
         let tree = Tree::at(&self.content)?;
@@ -296,13 +296,6 @@ fn remove_made(made: &[PathBuf]) {
             return;
         }
     }
-}
-
-fn write_empty(path: &Path, schema: &SchemaRef) -> io::Result<()> {
-    let file = File::create(path)?;
-    let writer = ArrowWriter::try_new(file, SchemaRef::clone(schema), None).map_err(io::Error::other)?;
-    writer.close().map_err(io::Error::other)?;
-    Ok(())
 }
 
 #[cfg(test)]

@@ -25,6 +25,24 @@ pub(crate) enum Kind {
     Folder,
 }
 
+impl Kind {
+    /// What a COPY writes.
+    ///
+    /// # Errors
+    /// When its target is no place at all.
+    pub(super) fn of_copy(copy: &CopyTo) -> Outcome<Self> {
+        let mode = match copy.options.get("single_file_output").map(|value| value.trim()) {
+            Some("true") => FileOutputMode::SingleFile,
+            Some("false") => FileOutputMode::Directory,
+            // Another value is refused by the engine in its own words.
+            _ => FileOutputMode::Automatic,
+        };
+        let url = ListingTableUrl::parse(&copy.output_url).map_err(|e| errors::failure(&e))?;
+        let one_file = copy.partition_by.is_empty() && mode.single_file_output(&url);
+        Ok(if one_file { Self::File } else { Self::Folder })
+    }
+}
+
 /// A local place that output is to appear at, checked to be replaceable.
 #[derive(Debug, Clone)]
 pub(crate) struct Target {
@@ -43,7 +61,7 @@ impl Target {
     pub(super) fn of_copy(copy: &CopyTo) -> Outcome<Option<Self>> {
         let shown = copy.output_url.clone();
         let Some(path) = local_path(&shown)? else { return Ok(None) };
-        let kind = kind_of(copy)?;
+        let kind = Kind::of_copy(copy)?;
         let target = Self { path: follow_links(&path, &shown)?, shown, kind };
         target.check()?;
         if kind == Kind::Folder {
@@ -58,6 +76,11 @@ impl Target {
     /// When it is a folder or no place to write to.
     pub(crate) fn file(path: &Path) -> Outcome<Self> {
         let shown = path.display().to_string();
+        if shown.contains("://") {
+            return Err(Failure::usage(format!(
+                "--to writes local files, and '{shown}' is a URL; write COPY (…) TO '{shown}' in a job: stillwell run"
+            )));
+        }
         if shown.ends_with(['/', std::path::MAIN_SEPARATOR]) {
             return Err(Failure::usage(format!("'{shown}' is a folder; --to needs the name of a file")));
         }
@@ -116,28 +139,24 @@ pub(super) fn local_path(shown: &str) -> Outcome<Option<PathBuf>> {
             Ok(url) if url.scheme() == "file" => url.to_file_path().map_err(|()| {
                 Failure::failed(format!("cannot write to '{shown}': not a path of this machine"))
             })?,
-            Ok(_) => return Ok(None),
+            Ok(_) => {
+                refuse_pattern(shown)?;
+                return Ok(None);
+            }
             Err(_) => std::path::absolute(shown).map_err(|error| cannot_use(shown, &error))?,
         }
     };
+    refuse_pattern(shown)?;
+    Ok(Some(path))
+}
+
+fn refuse_pattern(shown: &str) -> Outcome<()> {
     if shown.contains(['*', '?', '[']) {
         return Err(Failure::failed(format!(
             "cannot write to '{shown}': a COPY writes to one place, so its name must not contain *, ? or ["
         )));
     }
-    Ok(Some(path))
-}
-
-fn kind_of(copy: &CopyTo) -> Outcome<Kind> {
-    let mode = match copy.options.get("single_file_output").map(|value| value.trim()) {
-        Some("true") => FileOutputMode::SingleFile,
-        Some("false") => FileOutputMode::Directory,
-        // Another value is refused by the engine in its own words.
-        _ => FileOutputMode::Automatic,
-    };
-    let url = ListingTableUrl::parse(&copy.output_url).map_err(|e| errors::failure(&e))?;
-    let one_file = copy.partition_by.is_empty() && mode.single_file_output(&url);
-    Ok(if one_file { Kind::File } else { Kind::Folder })
+    Ok(())
 }
 
 fn follow_links(path: &Path, shown: &str) -> Outcome<PathBuf> {
@@ -172,13 +191,16 @@ mod tests {
 
     #[test]
     fn patterns_are_no_place_to_write_to() {
-        assert!(local_path("out/*.parquet").expect_err("pattern").message.contains("one place"));
+        for pattern in ["out/*.parquet", "s3://warehouse/*.parquet"] {
+            assert!(local_path(pattern).expect_err("pattern").message.contains("one place"), "{pattern}");
+        }
     }
 
     #[test]
     fn a_folder_is_no_file() {
         let folder = tempfile::tempdir().expect("folder");
         assert!(Target::file(folder.path()).expect_err("folder").message.contains("it is a folder"));
+        assert!(Target::file(Path::new("s3://w/a.csv")).expect_err("URL").message.contains("COPY (…) TO"));
     }
 
     #[cfg(unix)]

@@ -7,7 +7,7 @@ fn help_names_the_verbs_and_the_exit_codes() {
     let place = Place::new();
     let ran = place.stillwell(&["--help"]);
     assert_eq!(ran.code, Some(0));
-    for word in ["run", "query", "functions", "samples", "130  stopped by Ctrl-C"] {
+    for word in ["run", "query", "shell", "functions", "samples", "130  stopped by Ctrl-C"] {
         assert!(ran.out.contains(word), "{word} in {}", ran.out);
     }
     let ran = place.stillwell(&["run", "--help"]);

@@ -5,5 +5,7 @@ mod copies;
 mod files;
 mod jobs;
 mod queries;
+mod shell;
 mod signals;
+mod stores;
 mod support;

@@ -1,7 +1,8 @@
 //! Ctrl-C, SIGTERM and SIGKILL: nothing half-written stays.
 #![cfg(unix)]
 
-use std::process::{Child, Command};
+use std::io::Write;
+use std::process::{Child, Command, Stdio};
 use std::thread;
 use std::time::{Duration, Instant};
 
@@ -30,8 +31,12 @@ fn signalled(place: &Place, job: &str, signal: &str) -> Ran {
 }
 
 fn wait_for_staging(place: &Place) {
+    wait_for(place, ".stillwell-");
+}
+
+fn wait_for(place: &Place, staging: &str) {
     let begun = Instant::now();
-    while !place.files().iter().any(|name| name.contains(".stillwell-")) {
+    while !place.files().iter().any(|name| name.contains(staging)) {
         assert!(begun.elapsed() < Duration::from_secs(60), "no staging folder came");
         thread::sleep(Duration::from_millis(20));
     }
@@ -85,6 +90,28 @@ fn what_a_killed_job_leaves_is_cleared_by_the_next() {
     assert!(!place.files().is_empty());
     assert_eq!(place.run("COPY (SELECT 1 AS a) TO 'out/' STORED AS CSV;").code, Some(0));
     assert_eq!(place.files(), ["out/part-0.csv"]);
+}
+
+#[test]
+fn ctrl_c_ends_a_shell_that_reads_a_pipe() {
+    let place = Place::new();
+    let mut command = place.command(&["shell"]);
+    let mut child =
+        command.stdin(Stdio::piped()).stdout(Stdio::piped()).stderr(Stdio::piped()).spawn().expect("starts");
+    // The pipe stays open: more statements could come.
+    let mut input = child.stdin.take().expect("a pipe");
+    write!(input, "COPY (SELECT 1 AS a) TO 'first.csv';\nCOPY ({ENDLESS}) TO 'second/' STORED AS CSV;\n")
+        .expect("fed");
+    wait_for(&place, ".second.stillwell-");
+    send("-INT", &child);
+    let ran: Ran = child.wait_with_output().expect("ends").into();
+    assert_eq!(ran.code, Some(130), "{}", ran.err);
+    assert!(
+        ran.err.contains("wrote    first.csv") && ran.err.contains("statement 2 (line 2): stopped"),
+        "{}",
+        ran.err
+    );
+    assert_eq!(place.files(), ["first.csv"]);
 }
 
 #[test]
