@@ -27,12 +27,19 @@ fn seasons() -> impl Strategy<Value = Vec<Season>> {
     let season = |period: f64, harmonics: Option<usize>| {
         any::<bool>().prop_map(move |fixed| vec![Season { period, harmonics, fixed }])
     };
+    // Two that share no frequency: what they share no series could tell apart.
+    let two = |first: (f64, Option<usize>), second: (f64, Option<usize>)| {
+        (season(first.0, first.1), season(second.0, second.1)).prop_map(|(a, b)| [a, b].concat())
+    };
     prop_oneof![
         Just(Vec::new()),
         season(4.0, None),
         season(7.0, None),
         season(6.0, Some(3)),
         season(12.4, Some(2)),
+        two((4.0, None), (7.0, None)),
+        two((4.0, None), (12.4, Some(2))),
+        two((6.0, Some(3)), (12.4, Some(2))),
     ]
 }
 

@@ -1,12 +1,12 @@
 //! Series drawn from each structure's own equations give its parameters back within their standard errors.
 //!
-//! For every trend and season form and for drifting drivers, series with fixed seeds are fitted through the public function.
-//! Two things are held against the truth: `estimate +- 1.96 standard errors` of each parameter, and the likelihood
+//! For every trend and season form, several seasons, a cycle, autoregressions, and constant and drifting drivers, series with
+//! fixed seeds are fitted through the public function. Two things are held against the truth: `estimate +- 1.96 standard errors` of each parameter, and the likelihood
 //! ratio of estimate and truth against its chi-square law. A correct fit covers the truth in about 95 of 100 series; what
 //! is reached must be compatible with that (binomial, one chance in ten thousand per figure), and all together nearer.
 //!
-//! Intervals are taken where the estimation works: on the logarithm of a variance and the logit of a damping, with the
-//! standard error carried over by the derivative. On the variance itself they are skewed and fall short in small samples.
+//! Intervals are taken where the estimation works: on the logarithm of a variance (and of a period) and the logit of a damping,
+//! with the standard error carried over by the derivative; coefficients as they are. On the variance itself they are skewed and fall short in small samples.
 
 #[path = "support/driver.rs"]
 mod driver;
@@ -19,7 +19,7 @@ use driver::driver;
 use plain::plain;
 use simulate::simulate;
 use stillwell_statespace::quantile::chi_square_upper_tail;
-use stillwell_statespace::structure::{Season, Structure, Trend};
+use stillwell_statespace::structure::{Cycle, Season, Structure, Trend};
 use stillwell_statespace::{Evaluation, Fit, Parameter, Request, SeasonRequest, Series, Workspace, fit};
 
 /// Series per structure.
@@ -33,6 +33,8 @@ const FEWEST: usize = 85;
 struct Truth {
     structure: Structure,
     values: Vec<f64>,
+    /// Coefficients of the constant drivers.
+    coefficients: Vec<f64>,
     points: usize,
     /// First seed: no two structures share a series.
     seed: u64,
@@ -41,11 +43,27 @@ struct Truth {
 impl Truth {
     fn new(seed: u64, trend: Trend, values: &[f64]) -> Self {
         let structure = Structure { trend, ..Structure::default() };
-        Self { structure, values: values.to_vec(), points: 200, seed: 1000 * seed }
+        Self { structure, values: values.to_vec(), coefficients: Vec::new(), points: 200, seed: 1000 * seed }
     }
 
     fn season(mut self, period: f64, harmonics: Option<usize>, fixed: bool) -> Self {
-        self.structure.seasons = vec![Season { period, harmonics, fixed }];
+        self.structure.seasons.push(Season { period, harmonics, fixed });
+        self
+    }
+
+    fn cycle(mut self, shortest: f64, longest: f64) -> Self {
+        self.structure.cycle = Some(Cycle { shortest, longest });
+        self
+    }
+
+    fn autoregression(mut self, order: usize) -> Self {
+        self.structure.autoregression = order;
+        self
+    }
+
+    fn drivers(mut self, coefficients: &[f64]) -> Self {
+        self.structure.drivers = coefficients.len();
+        self.coefficients = coefficients.to_vec();
         self
     }
 
@@ -60,11 +78,19 @@ impl Truth {
     }
 
     fn request(&self) -> Request {
-        let season = self.structure.seasons.first();
+        let seasons = &self.structure.seasons;
         Request {
-            season: SeasonRequest::Given(season.iter().map(|s| s.period).collect()),
-            harmonics: season.and_then(|s| s.harmonics).map(|h| vec![h]),
-            fixed_season: season.is_some_and(|s| s.fixed),
+            season: SeasonRequest::Given(seasons.iter().map(|s| s.period).collect()),
+            // All seasons of a structure have harmonics, or none has.
+            harmonics: seasons
+                .iter()
+                .map(|s| s.harmonics)
+                .collect::<Option<Vec<_>>>()
+                .filter(|h| !h.is_empty()),
+            fixed_season: seasons.iter().any(|s| s.fixed),
+            cycle: self.structure.cycle.map(|c| (c.shortest, c.longest)),
+            autoregression: self.structure.autoregression,
+            drivers: (0..self.structure.drivers).map(|i| format!("promotion_{i}")).collect(),
             drifting_drivers: self.structure.drifting_drivers.clone(),
             ..plain(self.structure.trend)
         }
@@ -78,7 +104,14 @@ impl Truth {
                 let drifting = (0..self.structure.drifting_drivers.len())
                     .map(|i| driver(self.points, 2.0 * i as f64))
                     .collect();
-                let series = simulate(&self.structure, &self.values, self.points, 3.0, drifting, seed);
+                let mut series = simulate(&self.structure, &self.values, self.points, 3.0, drifting, seed);
+                for (i, coefficient) in self.coefficients.iter().enumerate() {
+                    let driver = driver(self.points, 7.0 + i as f64);
+                    for (y, x) in series.observed.iter_mut().zip(&driver) {
+                        *y += coefficient * x;
+                    }
+                    series.drivers.push(driver);
+                }
                 let fit = fit(&series, &request, &mut workspace).expect("a fit");
                 assert!(fit.converged(), "seed {seed} of {:?}", self.structure);
                 (series, fit)
@@ -96,8 +129,11 @@ impl Truth {
 /// True when the interval of this estimate holds the truth; an estimate of zero never does.
 fn covers(parameter: &Parameter, truth: f64) -> bool {
     let value = parameter.value;
+    if parameter.name.starts_with("ar_") {
+        return (value - truth).abs() <= Z * parameter.std_error;
+    }
     let (distance, slope) = match parameter.name.as_str() {
-        "slope_damping" => {
+        "slope_damping" | "cycle_damping" => {
             let logit = |v: f64| (v / (1.0 - v)).ln();
             (logit(value) - logit(truth), 1.0 / (value * (1.0 - value)))
         }
@@ -119,6 +155,16 @@ fn recover(truths: &[Truth]) {
             let name = &fits[0].1.parameters()[i].name;
             println!("    {name:14} {value:5} covered {covered:3}, zero {zeros:2}");
             assert!(covered >= FEWEST, "{name} of {:?}: {covered} of {SERIES}", truth.structure);
+            (hits, tries) = (hits + covered, tries + fits.len());
+        }
+        for (i, &value) in truth.coefficients.iter().enumerate() {
+            let near = |fit: &Fit| {
+                let (coefficient, error) = fit.coefficients()[i];
+                (coefficient - value).abs() <= Z * error
+            };
+            let covered = fits.iter().filter(|(_, fit)| near(fit)).count();
+            println!("    coefficient {i}  {value:5} covered {covered:3}");
+            assert!(covered >= FEWEST, "coefficient {i} of {:?}: {covered} of {SERIES}", truth.structure);
             (hits, tries) = (hits + covered, tries + fits.len());
         }
         let ratios: Vec<f64> = fits
@@ -167,11 +213,47 @@ fn seasons() {
 }
 
 #[test]
+fn several_seasons() {
+    recover(&[
+        Truth::new(18, Trend::LocalLevel, &[1.0, 0.5, 0.03, 0.03]).season(4.0, Some(2), false).season(
+            12.4,
+            Some(2),
+            false,
+        ),
+        Truth::new(19, Trend::FixedLine, &[1.0, 0.3, 0.3]).season(4.0, None, false).season(7.0, None, false),
+    ]);
+}
+
+#[test]
+fn cycle() {
+    recover(&[
+        Truth::new(41, Trend::FixedLevel, &[1.0, 0.5, 0.9, 12.0]).cycle(5.0, 40.0).points(400),
+        Truth::new(42, Trend::LocalLevel, &[1.0, 0.2, 0.5, 0.95, 9.0]).cycle(4.0, 20.0).points(400),
+    ]);
+}
+
+#[test]
+fn autoregression() {
+    recover(&[
+        Truth::new(51, Trend::FixedLevel, &[1.0, 1.0, 0.8]).autoregression(1).points(400),
+        Truth::new(52, Trend::FixedLine, &[1.0, 1.0, 1.2, -0.6]).autoregression(2).points(400),
+    ]);
+}
+
+#[test]
 fn drifting_drivers() {
     recover(&[
         Truth::new(21, Trend::FixedLevel, &[1.0, 0.2]).drifting(1),
         Truth::new(22, Trend::LocalLevel, &[1.0, 0.5, 0.2]).drifting(1),
         Truth::new(23, Trend::LocalLevel, &[1.0, 0.5, 0.2, 0.5]).drifting(2),
+    ]);
+}
+
+#[test]
+fn constant_beside_drifting_drivers() {
+    recover(&[
+        Truth::new(24, Trend::LocalLevel, &[1.0, 0.5]).drivers(&[-2.0, 0.5]),
+        Truth::new(25, Trend::LocalLevel, &[1.0, 0.5, 0.2]).drivers(&[-2.0]).drifting(1),
     ]);
 }
 
