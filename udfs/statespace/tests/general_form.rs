@@ -1,6 +1,10 @@
-//! The named structures, written out as matrices from their definitions, give the numbers of the named structures to 1e-9; and what
-//! only matrices can say (constants, starts, correlated disturbances) against what it must equal.
+//! The named structures, written out as matrices from their definitions, give the numbers of the named structures to 1e-9, and with
+//! open variances the same optimum. `general_systems.rs` has what only matrices can say.
 
+#[path = "support/matrices.rs"]
+mod matrices;
+#[path = "support/plain.rs"]
+mod plain;
 #[path = "support/series.rs"]
 mod series;
 #[path = "support/simulate.rs"]
@@ -8,18 +12,19 @@ mod simulate;
 
 use std::f64::consts::TAU;
 
-use proptest::prelude::*;
+use matrices::{TOLERANCE, close, run};
+use plain::plain;
 use series::column;
 use simulate::simulate;
 use stillwell_statespace::structure::{Cycle, Role, Season, Structure, Trend};
-use stillwell_statespace::{
-    BadRequest, Evaluation, GeneralFit, GeneralForm, Series, State, Trouble, Workspace,
-};
+use stillwell_statespace::{Evaluation, GeneralForm, Request, SeasonRequest, Series, State, Workspace, fit};
 
 /// A block-diagonal system under construction: Durbin & Koopman (2012), 3.2 to 3.5, by the letter.
 #[derive(Default)]
 struct Blocks {
     z: Vec<Option<f64>>,
+    /// The component that each state belongs to; a constant coefficient belongs to none.
+    role: Vec<Option<Role>>,
     t: Vec<(usize, usize, f64)>,
     /// State and variance of each disturbance.
     q: Vec<(usize, f64)>,
@@ -29,17 +34,18 @@ struct Blocks {
 }
 
 impl Blocks {
-    fn states(&mut self, z: &[Option<f64>]) -> usize {
+    fn states(&mut self, role: Option<Role>, z: &[Option<f64>]) -> usize {
         self.z.extend_from_slice(z);
+        self.role.resize(self.z.len(), role);
         self.z.len() - z.len()
     }
 
     fn trend(&mut self, level: Option<f64>, slope: Option<Option<f64>>, damping: Option<f64>) {
-        let at = self.states(&[Some(1.0)]);
+        let at = self.states(Some(Role::Level), &[Some(1.0)]);
         self.t.push((at, at, 1.0));
         self.q.extend(level.map(|v| (at, v)));
         if let Some(slope) = slope {
-            let b = self.states(&[Some(0.0)]);
+            let b = self.states(Some(Role::Slope), &[Some(0.0)]);
             self.t.extend([(at, b, 1.0), (b, b, damping.unwrap_or(1.0))]);
             self.q.extend(slope.map(|v| (b, v)));
             if let (Some(damping), Some(v)) = (damping, slope) {
@@ -51,14 +57,14 @@ impl Blocks {
     fn dummies(&mut self, period: usize, variance: Option<f64>) {
         let mut z = vec![Some(0.0); period - 1];
         z[0] = Some(1.0);
-        let at = self.states(&z);
+        let at = self.states(Some(Role::Season), &z);
         self.t.extend((0..period - 1).map(|j| (at, at + j, -1.0)));
         self.t.extend((1..period - 1).map(|i| (at + i, at + i - 1, 1.0)));
         self.q.extend(variance.map(|v| (at, v)));
     }
 
-    fn rotation(&mut self, period: f64, damping: f64) -> usize {
-        let at = self.states(&[Some(1.0), Some(0.0)]);
+    fn rotation(&mut self, role: Role, period: f64, damping: f64) -> usize {
+        let at = self.states(Some(role), &[Some(1.0), Some(0.0)]);
         let (sin, cos) = (TAU / period).sin_cos();
         self.t.extend([
             (at, at, damping * cos),
@@ -72,18 +78,18 @@ impl Blocks {
     fn harmonics(&mut self, period: f64, count: usize, variance: f64) {
         for j in 1..=count {
             if 2.0 * j as f64 == period {
-                let at = self.states(&[Some(1.0)]);
+                let at = self.states(Some(Role::Season), &[Some(1.0)]);
                 self.t.push((at, at, -1.0));
                 self.q.push((at, variance));
             } else {
-                let at = self.rotation(period / j as f64, 1.0);
+                let at = self.rotation(Role::Season, period / j as f64, 1.0);
                 self.q.extend([(at, variance), (at + 1, variance)]);
             }
         }
     }
 
     fn cycle(&mut self, period: f64, damping: f64, variance: f64) {
-        let at = self.rotation(period, damping);
+        let at = self.rotation(Role::Cycle, period, damping);
         self.q.extend([(at, variance), (at + 1, variance)]);
         let spread = variance / (1.0 - damping * damping);
         self.p1.extend([(at, at, spread), (at + 1, at + 1, spread)]);
@@ -91,7 +97,7 @@ impl Blocks {
 
     /// AR(2) with its stationary start: variance `(1 - b) s / ((1 + b) ((1 - b)^2 - a^2))` (Box & Jenkins 1976, 3.2.4).
     fn autoregression(&mut self, a: f64, b: f64, variance: f64) {
-        let at = self.states(&[Some(1.0), Some(0.0)]);
+        let at = self.states(Some(Role::Autoregression), &[Some(1.0), Some(0.0)]);
         self.t.extend([(at, at, a), (at, at + 1, b), (at + 1, at, 1.0)]);
         self.q.push((at, variance));
         let v = (1.0 - b) * variance / ((1.0 + b) * ((1.0 - b).powi(2) - a * a));
@@ -99,8 +105,10 @@ impl Blocks {
         self.p1.extend([(at, at, v), (at + 1, at + 1, v), (at, at + 1, c), (at + 1, at, c)]);
     }
 
+    /// A drifting coefficient where there is a variance, the first one being `Role::Driver(0)`.
     fn driver(&mut self, name: &str, variance: Option<f64>) {
-        let at = self.states(&[None]);
+        let drifting = self.role.iter().filter(|role| matches!(role, Some(Role::Driver(_)))).count();
+        let at = self.states(variance.map(|_| Role::Driver(drifting)), &[None]);
         self.t.push((at, at, 1.0));
         self.q.extend(variance.map(|v| (at, v)));
         self.drivers.push(name.to_owned());
@@ -135,7 +143,6 @@ impl Blocks {
 }
 
 const N: usize = 60;
-const TOLERANCE: f64 = 1e-9;
 
 fn wave(phase: f64) -> Vec<f64> {
     (0..N).map(|t| 1.0 + (t as f64 * 0.7 + phase).sin()).collect()
@@ -202,6 +209,8 @@ fn cases() -> Vec<(&'static str, Structure, Vec<f64>, Blocks)> {
         b.trend(None, Some(None), None);
         b.autoregression(0.5, -0.3, 0.7);
     });
+    let without = Structure { drivers: 1, ..named(Trend::None) };
+    add("no trend", without, &[1.3], &|b| b.driver("price", None));
     let driven =
         Structure { drivers: 1, drifting_drivers: vec!["promotion".to_owned()], ..named(Trend::LocalLevel) };
     add("drivers", driven, &[1.3, 0.4, 0.06], &|b| {
@@ -228,19 +237,6 @@ fn all_in_z(series: &Series) -> Series {
     Series { observed: series.observed.clone(), drivers: Vec::new(), drifting_drivers: all }
 }
 
-fn run(form: &GeneralForm, series: &Series) -> GeneralFit {
-    form.check().expect("matrices that fit together");
-    form.fit(series, 0.9, &mut Workspace::new()).expect("a fit")
-}
-
-#[track_caller]
-fn close(name: &str, ours: &[f64], other: &[f64], tolerance: f64) {
-    assert_eq!(ours.len(), other.len(), "{name}");
-    for (t, (a, b)) in ours.iter().zip(other).enumerate() {
-        assert!((a - b).abs() <= tolerance * (1.0 + b.abs()), "{name} at {t}: {a} {b}");
-    }
-}
-
 #[test]
 fn named_structures_written_as_matrices_give_the_same_numbers() {
     for (name, structure, values, blocks) in cases() {
@@ -251,19 +247,46 @@ fn named_structures_written_as_matrices_give_the_same_numbers() {
         assert!(difference.abs() < TOLERANCE, "{name}: log-likelihood differs by {difference:e}");
         assert_eq!(general.diffuse, named.diffuse_elements(), "{name}");
         close(name, &general.fitted, &named.signal().value, TOLERANCE);
-        let state = |s: &State, other: &State| {
-            close(name, &s.value, &other.value, TOLERANCE);
-            close(name, &s.std_error, &other.std_error, TOLERANCE);
-        };
-        if let Some(level) = named.component(Role::Level) {
-            state(&general.states[0], &level);
+        let roles = [
+            Role::Level,
+            Role::Slope,
+            Role::Season,
+            Role::Cycle,
+            Role::Autoregression,
+            Role::Driver(0),
+            Role::Driver(1),
+        ];
+        for role in roles {
+            let Some(component) = named.component(role) else {
+                assert!(!blocks.role.contains(&Some(role)), "{name}: {role:?} is in the matrices only");
+                continue;
+            };
+            // What stands in the observation, or, for the slope and a coefficient, the state itself.
+            let shown = (0..blocks.z.len()).filter(|&i| blocks.role[i] == Some(role));
+            let shown: Vec<(f64, &State)> = match role {
+                Role::Slope | Role::Driver(_) => shown.map(|i| (1.0, &general.states[i])).collect(),
+                _ => shown
+                    .filter_map(|i| blocks.z[i].filter(|z| *z != 0.0).map(|z| (z, &general.states[i])))
+                    .collect(),
+            };
+            let sum: Vec<f64> =
+                (0..N).map(|t| shown.iter().map(|(z, state)| z * state.value[t]).sum()).collect();
+            close(&format!("{name}: {role:?}"), &sum, &component.value, TOLERANCE);
+            if let [(_, state)] = shown[..] {
+                close(
+                    &format!("{name}: error of {role:?}"),
+                    &state.std_error,
+                    &component.std_error,
+                    TOLERANCE,
+                );
+            }
         }
-        if let Some(slope) = named.component(Role::Slope) {
-            state(&general.states[1], &slope);
-        }
-        if let Some(price) = (structure.drivers > 0).then(|| named.coefficient(0)) {
-            close(name, &general.states[1].value[30..31], &[price.0], TOLERANCE);
-            close(name, &general.states[1].std_error[30..31], &[price.1], TOLERANCE);
+        let constant = blocks.z.iter().zip(&blocks.role).position(|(z, role)| z.is_none() && role.is_none());
+        assert_eq!(constant.is_some(), structure.drivers > 0, "{name}");
+        if let Some(i) = constant {
+            let (value, error) = named.coefficient(0);
+            close(name, &general.states[i].value, &[value; N], TOLERANCE);
+            close(name, &general.states[i].std_error, &[error; N], TOLERANCE);
         }
         assert!(general.variances.iter().all(|v| v.known), "{name}");
     }
@@ -290,153 +313,61 @@ fn open_variances_reach_the_optimum_of_the_named_structure() {
     assert!(fit.log_likelihood <= reference + 1e-6);
 }
 
-#[test]
-fn constants_move_the_states_and_the_observations() {
-    // A level with the constant c is the fixed line whose slope is known to be c; d lifts the observations.
-    let base = GeneralForm {
-        z: vec![Some(1.0)],
-        t: vec![1.0],
-        r: vec![1.0],
-        h: Some(0.5),
-        q: vec![Some(0.2)],
-        c: vec![0.75],
-        d: -40.0,
-        ..GeneralForm::default()
-    };
-    let observed: Vec<f64> = (0..N).map(|t| 60.0 + 0.75 * t as f64 + (t as f64 * 1.7).sin()).collect();
-    let plain: Vec<f64> = (0..N).map(|t| observed[t] + 40.0 - 0.75 * t as f64).collect();
-    let series = |observed: &[f64]| Series { observed: observed.to_vec(), ..Series::default() };
-    let ours = run(&base, &series(&observed));
-    let without = run(&GeneralForm { c: Vec::new(), d: 0.0, ..base.clone() }, &series(&plain));
-    assert!((ours.log_likelihood - without.log_likelihood).abs() < TOLERANCE);
-    let expected: Vec<f64> =
-        without.states[0].value.iter().enumerate().map(|(t, v)| v + 0.75 * t as f64).collect();
-    close("state", &ours.states[0].value, &expected, TOLERANCE);
-    close("error", &ours.states[0].std_error, &without.states[0].std_error, TOLERANCE);
-    let fitted: Vec<f64> = expected.iter().map(|v| v - 40.0).collect();
-    close("fitted", &ours.fitted, &fitted, TOLERANCE);
-}
-
-/// With a proper start and one point, everything is a two-variable normal law.
-#[test]
-fn a_proper_start_is_a_prior() {
-    let form = GeneralForm {
-        z: vec![Some(2.0)],
-        t: vec![1.0],
-        h: Some(3.0),
-        a1: vec![5.0],
-        p1: vec![Some(4.0)],
-        ..GeneralForm::default()
-    };
-    let fit = run(&form, &Series { observed: vec![13.0], ..Series::default() });
-    // y ~ N(10, 2^2 4 + 3 = 19); a given y: 5 + 4 2 / 19 (13 - 10), variance 4 - (4 2)^2 / 19.
-    assert!((fit.states[0].value[0] - (5.0 + 24.0 / 19.0)).abs() < 1e-12);
-    assert!((fit.states[0].std_error[0] - (4.0 - 64.0 / 19.0_f64).sqrt()).abs() < 1e-12);
-    let density = -0.5 * ((TAU * 19.0).ln() + 9.0 / 19.0);
-    assert!((fit.log_likelihood - density).abs() < 1e-12);
-}
-
-#[test]
-fn points_after_the_last_observation_are_forecasts() {
-    let mut blocks = Blocks::default();
-    blocks.trend(Some(0.4), Some(Some(0.02)), None);
-    let structure = Structure { trend: Trend::LocalLinear, ..Structure::default() };
-    let values = [1.3, 0.4, 0.02];
-    let mut series = series_of(&structure, &values);
-    let named = Evaluation::new(structure.model(), &values, series.clone()).expect("an evaluation");
-    let (mean, _, variance) = named.forecast(5);
-    series.observed.extend([f64::NAN; 5]);
-    let fit = run(&blocks.form(1.3), &series);
-    close("forecast", &fit.fitted[N..], &mean, TOLERANCE);
-    let z = stillwell_statespace::quantile::normal_quantile(0.95);
-    let upper: Vec<f64> = mean.iter().zip(&variance).map(|(m, v)| m + z * v.sqrt()).collect();
-    close("upper", &fit.upper[N..], &upper, TOLERANCE);
-}
-
-proptest! {
-    #![proptest_config(ProptestConfig { cases: 40, failure_persistence: None, ..ProptestConfig::default() })]
-
-    /// Another basis of the states, b = M a, is another system for the same series: T becomes M T M^-1, R M R, Z Z M^-1. With a proper start
-    /// its likelihood and signal are the same, and correlated disturbances and starts come up on the way.
-    #[test]
-    fn another_basis_of_the_states_changes_nothing(
-        m in proptest::collection::vec(-1.0..1.0f64, 4),
-        noise in proptest::collection::vec(-2.0..2.0f64, 40),
-        correlation in -0.9..0.9f64,
-    ) {
-        let basis = nalgebra::Matrix2::new(2.0 + m[0], m[1], m[2], 2.0 + m[3]);
-        let inverse = basis.try_inverse().expect("diagonally dominant");
-        let t = nalgebra::Matrix2::new(1.0, 1.0, 0.0, 0.9);
-        let z = nalgebra::RowVector2::new(1.0, 0.0);
-        let off = correlation * (0.5_f64 * 0.1).sqrt();
-        let q = nalgebra::Matrix2::new(0.5, off, off, 0.1);
-        let p1 = nalgebra::Matrix2::new(3.0, 0.4, 0.4, 1.0);
-        let rows = |x: nalgebra::Matrix2<f64>| vec![x[(0, 0)], x[(0, 1)], x[(1, 0)], x[(1, 1)]];
-        let symmetric = |x: nalgebra::Matrix2<f64>| {
-            vec![Some(x[(0, 0)]), Some(x[(0, 1)]), Some(x[(0, 1)]), Some(x[(1, 1)])]
-        };
-        let form = |t, z: nalgebra::RowVector2<f64>, r, q, p1| GeneralForm {
-            z: vec![Some(z[0]), Some(z[1])],
-            t: rows(t),
-            r: rows(r),
-            h: Some(0.3),
-            q: symmetric(q),
-            p1: symmetric(p1),
-            ..GeneralForm::default()
-        };
-        let identity = nalgebra::Matrix2::identity();
-        let plain = form(t, z, identity, q, p1);
-        let moved = basis * p1 * basis.transpose();
-        // Once with the basis in R, once with it in Q.
-        let in_r = form(basis * t * inverse, z * inverse, basis, q, moved);
-        let in_q = form(basis * t * inverse, z * inverse, identity, basis * q * basis.transpose(), moved);
-        let series = Series { observed: noise, ..Series::default() };
-        let plain = run(&plain, &series);
-        for other in [run(&in_r, &series), run(&in_q, &series)] {
-            prop_assert!((other.log_likelihood - plain.log_likelihood).abs() < 1e-9);
-            for t in 0..series.observed.len() {
-                prop_assert!((other.fitted[t] - plain.fitted[t]).abs() < 1e-9);
-            }
-        }
+/// The request for a structure, everything in it open.
+fn request(structure: &Structure) -> Request {
+    let names = |count: usize| (0..count).map(|i| format!("driver_{i}")).collect();
+    Request {
+        season: SeasonRequest::Given(structure.seasons.iter().map(|s| s.period).collect()),
+        harmonics: structure
+            .seasons
+            .iter()
+            .map(|s| s.harmonics)
+            .collect::<Option<Vec<_>>>()
+            .filter(|h| !h.is_empty()),
+        fixed_season: structure.seasons.iter().any(|s| s.fixed),
+        drivers: names(structure.drivers),
+        drifting_drivers: structure.drifting_drivers.clone(),
+        ..plain(structure.trend)
     }
 }
 
-/// The error that `change` makes of a sound form.
-fn refused(change: impl FnOnce(&mut GeneralForm)) -> BadRequest {
-    let mut blocks = Blocks::default();
-    blocks.trend(Some(0.4), Some(Some(0.02)), None);
-    let mut form = blocks.form(1.3);
-    form.check().expect("sound");
-    change(&mut form);
-    form.check().expect_err("a mistake")
-}
-
 #[test]
-fn mistakes_are_named() {
-    assert_eq!(refused(|f| f.z.clear()).argument, "z");
-    assert_eq!(refused(|f| f.t.truncate(3)).argument, "t");
-    assert_eq!(refused(|f| f.r.truncate(3)).argument, "r");
-    assert_eq!(refused(|f| f.q.truncate(3)).argument, "q");
-    assert_eq!(refused(|f| f.q[0] = Some(-1.0)).argument, "q");
-    assert_eq!(refused(|f| f.q[1] = None).argument, "q");
-    assert_eq!(refused(|f| f.q[1] = Some(0.01)).argument, "q");
-    assert_eq!(refused(|f| (f.q[1], f.q[2]) = (Some(9.0), Some(9.0))).argument, "q");
-    assert_eq!(refused(|f| f.h = Some(-1.0)).argument, "h");
-    assert_eq!(refused(|f| f.d = f64::NAN).argument, "d");
-    assert_eq!(refused(|f| f.c = vec![1.0]).argument, "c");
-    assert_eq!(refused(|f| f.a1 = vec![1.0, 2.0, 3.0]).argument, "a1");
-    assert_eq!(refused(|f| (f.a1, f.p1) = (vec![1.0, 2.0], Vec::new())).argument, "a1");
-    assert_eq!(refused(|f| f.z[0] = None).argument, "z");
-    assert!(refused(|f| f.t.truncate(3)).why.contains("2 x 2"));
-}
-
-#[test]
-fn a_state_that_no_observation_reaches_is_named() {
-    let mut blocks = Blocks::default();
-    blocks.trend(Some(0.4), None, None);
-    let at = blocks.states(&[Some(0.0)]);
-    blocks.t.push((at, at, 1.0));
-    let observed = (0..30).map(|t| f64::from(t * t % 11)).collect();
-    let fit = blocks.form(1.0).fit(&Series { observed, ..Series::default() }, 0.9, &mut Workspace::new());
-    assert_eq!(fit, Err(Trouble::UndeterminedState { state: 2 }));
+fn open_variances_reach_the_optimum_of_every_named_structure() {
+    let (mut equal, mut above) = (0, 0);
+    for (name, structure, values, blocks) in cases() {
+        let parameters = structure.model().parameters().len();
+        let mixed = structure.seasons.iter().any(|s| s.harmonics.is_none())
+            && structure.seasons.iter().any(|s| s.harmonics.is_some());
+        // Dampings, periods and coefficients stand in T, where nothing is estimated; one call cannot ask for dummies and harmonics.
+        let only_variances =
+            !(structure.trend == Trend::Damped || structure.cycle.is_some() || structure.autoregression > 0);
+        if !only_variances || mixed {
+            continue;
+        }
+        let series = series_of(&structure, &values);
+        let named = fit(&series, &request(&structure), &mut Workspace::new()).expect("a fit");
+        assert_eq!(named.structure(), &structure, "{name}");
+        let mut form = blocks.form(1.0);
+        form.h = None;
+        let g = form.disturbances();
+        (0..g).for_each(|k| form.q[k * g + k] = None);
+        let general = run(&form, &all_in_z(&series));
+        let difference = general.log_likelihood - named.diagnostics().log_likelihood;
+        assert!(named.converged() && general.converged, "{name}");
+        assert!(difference > -1e-6, "{name}: log-likelihood {difference:e} below the named one");
+        if 1 + g == parameters {
+            assert!(difference < 1e-6, "{name}: log-likelihood {difference:e} above the named one");
+            for (ours, other) in general.variances.iter().zip(named.parameters()) {
+                assert!(
+                    (ours.value - other.value).abs() < 1e-3 * (1.0 + other.value),
+                    "{name}: {ours:?} {other:?}"
+                );
+            }
+            equal += 1;
+        } else {
+            // One variance for all states of a season is one number; as matrices each state has its own, which can only fit better.
+            above += 1;
+        }
+    }
+    assert_eq!((equal, above), (9, 2));
 }
