@@ -1,4 +1,4 @@
-//! Fitting under a memory limit that the rows do not fit in: the sort goes to disk, the answer stays the same.
+//! Fitting under a memory limit that the rows do not fit in: the sort, or the aggregation, goes to disk, the answer stays the same.
 
 use std::sync::Arc;
 
@@ -6,6 +6,7 @@ use arrow::array::RecordBatch;
 use datafusion::execution::disk_manager::{DiskManagerBuilder, DiskManagerMode};
 use datafusion::execution::memory_pool::FairSpillPool;
 use datafusion::execution::runtime_env::RuntimeEnvBuilder;
+use datafusion::physical_plan::aggregates::AggregateExec;
 use datafusion::physical_plan::sorts::sort::SortExec;
 use datafusion::physical_plan::{ExecutionPlan, collect};
 use datafusion::prelude::{SessionConfig, SessionContext};
@@ -32,7 +33,22 @@ fn window() -> String {
     )
 }
 
-/// The rows, and how often the sorts of the plan went to disk.
+/// The one with matrices has no structure to name.
+fn state_space() -> String {
+    format!(
+        "SELECT * FROM state_space(data => {DATA}, per => depot, at => t, observed => litres,
+             z => [1.0], t => [1.0], h => 2.0, q => [0.5]) ORDER BY depot, at"
+    )
+}
+
+fn fits() -> String {
+    format!(
+        "SELECT depot, structural_fit(t, litres, {{'trend': 'local level', 'season': 0, 'transform': 'none',
+             'known': {{'irregular': 2.0, 'level': 0.5}}}}) AS fit FROM {DATA} GROUP BY depot ORDER BY depot"
+    )
+}
+
+/// The rows, and how often the operators of the plan that hold the series went to disk.
 async fn answer(sql: &str, partitions: usize, memory: Option<usize>) -> (RecordBatch, usize) {
     let mut runtime = RuntimeEnvBuilder::new()
         .with_disk_manager_builder(DiskManagerBuilder::default().with_mode(DiskManagerMode::OsTmpDirectory));
@@ -52,13 +68,20 @@ async fn answer(sql: &str, partitions: usize, memory: Option<usize>) -> (RecordB
     (rows, spills(&plan))
 }
 
-/// Spilled files of the sorts in a plan.
+/// Spilled files of the operators that hold the series: aggregations, or in a plan without one the sorts.
 fn spills(plan: &Arc<dyn ExecutionPlan>) -> usize {
-    let own = match plan.downcast_ref::<SortExec>() {
-        Some(sort) => sort.metrics().and_then(|metrics| metrics.spill_count()).unwrap_or(0),
-        None => 0,
-    };
-    own + plan.children().into_iter().map(spills).sum::<usize>()
+    let aggregations = spills_of(plan, &|plan| plan.downcast_ref::<AggregateExec>().is_some());
+    aggregations.unwrap_or_else(|| {
+        spills_of(plan, &|plan| plan.downcast_ref::<SortExec>().is_some()).unwrap_or_default()
+    })
+}
+
+/// Spilled files of the operators of one kind; nothing where there is none.
+fn spills_of(plan: &Arc<dyn ExecutionPlan>, kind: &dyn Fn(&dyn ExecutionPlan) -> bool) -> Option<usize> {
+    let spilled = || plan.metrics().and_then(|metrics| metrics.spill_count()).unwrap_or(0);
+    let own = kind(plan.as_ref()).then(spilled);
+    let below = plan.children().into_iter().filter_map(|child| spills_of(child, kind));
+    own.into_iter().chain(below).reduce(|a, b| a + b)
 }
 
 /// Partitions and bytes. Each partition sorts and merges on its own; in two of them the same rows need more room.
@@ -96,4 +119,15 @@ async fn diagnostics_from_disk() {
 async fn structural_components_from_disk() {
     // The engine hands the result of a partition on as one batch, which a merge of two holds twice.
     disk_changes_no_bit(&window(), 120_000, &[ONE]).await;
+}
+
+#[tokio::test(flavor = "multi_thread", worker_threads = 2)]
+async fn state_space_from_disk() {
+    disk_changes_no_bit(&state_space(), 120_000, &[ONE, TWO]).await;
+}
+
+#[tokio::test(flavor = "multi_thread", worker_threads = 2)]
+async fn structural_fit_from_disk() {
+    // Rows as numbers take less room than rows to sort: some 4 MB, and the fits are small.
+    disk_changes_no_bit(&fits(), 1_000, &[(1, 3 << 20), (2, 6 << 20)]).await;
 }
