@@ -6,6 +6,7 @@
 //!   [`demo_output`] looks at the files it wrote;
 //! - [`examples`] runs the example of every function;
 //! - [`nightly`] runs the jobs that keep fits and advance them;
+//! - [`powers`] hands the power that was estimated back as a number;
 //! - [`readme`] runs the SQL of the README and holds what it shows against it;
 //! - [`memory`] fits under a small memory limit.
 
@@ -15,6 +16,7 @@ mod jobs;
 mod memory;
 mod nightly;
 mod outlook;
+mod powers;
 mod published;
 mod readme;
 mod slt;
