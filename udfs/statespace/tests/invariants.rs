@@ -14,6 +14,7 @@ use stillwell_statespace::{Evaluation, Series};
 
 fn trends() -> impl Strategy<Value = Trend> {
     prop_oneof![
+        Just(Trend::None),
         Just(Trend::FixedLevel),
         Just(Trend::LocalLevel),
         Just(Trend::FixedLine),
@@ -57,7 +58,8 @@ prop_compose! {
             seasons,
             cycle: cycle.then_some(Cycle { shortest: 3.0, longest: 30.0 }),
             autoregression,
-            drivers,
+            // Without a trend something else must be there.
+            drivers: if trend == Trend::None { 1 } else { drivers },
             drifting_drivers: (0..drifting).map(|i| format!("price_{i}")).collect(),
         }
     }

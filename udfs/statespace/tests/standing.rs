@@ -28,9 +28,13 @@ fn requests() -> Vec<Request> {
     vec![
         plain(Trend::LocalLevel),
         plain(Trend::LocalLinear),
+        plain(Trend::Smooth),
         plain(Trend::Damped),
+        plain(Trend::FixedLevel),
         plain(Trend::FixedLine),
         seasonal(Trend::LocalLevel, &[4.0], None),
+        Request { fixed_season: true, ..seasonal(Trend::LocalLevel, &[4.0], None) },
+        seasonal(Trend::LocalLevel, &[6.0], Some(vec![3])),
         seasonal(Trend::Smooth, &[12.4], Some(vec![2])),
         seasonal(Trend::LocalLevel, &[4.0, 13.0], Some(vec![1, 2])),
         Request { cycle: Some((5.0, 20.0)), ..plain(Trend::LocalLevel) },
