@@ -138,6 +138,7 @@ impl FitGroups {
             (Ok(placed), Ok(standing)) => match ends(&placed) {
                 Some((first_at, last_at)) => Ok(Some(FitValue {
                     status: "ok".to_string(),
+                    refused: None,
                     message: None,
                     fitted: Some(FittedValue {
                         standing,
@@ -166,7 +167,12 @@ impl FitGroups {
             };
             return Err(failed_series(Caller::Expression(NAME), &words, trouble, &sentence));
         }
-        Ok(FitValue { status: trouble.status().to_string(), message: Some(sentence), fitted: None })
+        Ok(FitValue {
+            status: trouble.status().to_string(),
+            refused: None,
+            message: Some(sentence),
+            fitted: None,
+        })
     }
 
     fn take(&mut self, emit: EmitTo) -> Vec<GroupRows> {

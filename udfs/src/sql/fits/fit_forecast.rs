@@ -5,7 +5,7 @@ use std::sync::{Arc, LazyLock};
 use datafusion::arrow::array::AsArray;
 use datafusion::arrow::array::{ArrayRef, Float64Array, Int64Array, ListArray, StringArray, StructArray};
 use datafusion::arrow::buffer::{NullBuffer, OffsetBuffer};
-use datafusion::arrow::compute::cast;
+use datafusion::arrow::compute::{CastOptions, cast, cast_with_options};
 use datafusion::arrow::datatypes::{DataType, Field, Fields, Float64Type, Int64Type};
 use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::{
@@ -170,7 +170,10 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
     let bad_fit =
         |error: crate::columns::fit_value::ReadError| bad_argument(caller, "fit", error.to_string());
     let fits = FitColumn::try_new(argument(0)?).map_err(bad_fit)?;
-    let horizons = cast(argument(1)?, &DataType::Int64)?;
+    let strict = CastOptions { safe: false, ..CastOptions::default() };
+    let horizons = cast_with_options(argument(1)?, &DataType::Int64, &strict).map_err(|_| {
+        bad_argument(caller, "horizon", format!("takes a whole number from 1 to {LONGEST_HORIZON}"))
+    })?;
     let coverages = columns.get(2).map(|column| cast(column, &DataType::Float64)).transpose()?;
     let coverages: Vec<Option<f64>> =
         coverages.map_or_else(Vec::new, |column| column.as_primitive::<Float64Type>().iter().collect());
@@ -235,11 +238,11 @@ fn forecast(
         return Ok(Err(fit.status.clone()));
     };
     let standing = &fitted.standing;
-    if let Some((name, _)) =
-        plans.iter().find(|(name, _)| !standing.driver_names().any(|driver| driver == *name))
-    {
-        let what = format!("names '{name}', which is no driver of the fit");
-        return Err(bad_argument(Caller::Expression(NAME), "drivers", what));
+    // A fit without some of the drivers is no mistake; a name that it does not know beside a driver that is not handed in is one.
+    let known = |name: &String| standing.driver_names().any(|driver| driver == name);
+    let handed = |driver: &String| plans.iter().any(|(name, _)| *name == driver);
+    if plans.iter().any(|(name, _)| !known(name)) && !standing.driver_names().all(handed) {
+        return Ok(Err("no driver plan".to_string()));
     }
     // A driver that is not handed in keeps the plan that the fit carries.
     let plan = standing
@@ -258,7 +261,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     Documentation::builder(
         SECTION,
         "The forecast of a fit, without its history: a list with one struct per step, with the columns of \
-         [`forecast`](#forecast). Drivers that are not handed in keep the plan that the fit carries. The steps of a fit that is in trouble \
+         [`forecast`](#forecast). Drivers that are not handed in keep the plan that the fit carries, those that a fit does not have are passed over. The steps of a fit that is in trouble \
          hold its status and NULLs. `unnest(unnest(fit_forecast(…)))` makes rows and columns of it.",
         WRITTEN,
     )
