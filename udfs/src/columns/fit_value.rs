@@ -46,6 +46,17 @@ pub(crate) struct FittedValue {
     pub(crate) last_at: i64,
 }
 
+impl FitValue {
+    /// The series in words; a value does not know its key.
+    pub(crate) fn describe(&self, time: &TimeKind) -> String {
+        let format = |stored| time.axis().format(stored);
+        self.fitted.as_ref().map_or_else(
+            || "a series without a fit".to_string(),
+            |fitted| format!("a fit from {} to {}", format(fitted.first_at), format(fitted.last_at)),
+        )
+    }
+}
+
 impl FittedValue {
     /// The grid whose point 0 is the last observation.
     pub(crate) fn grid(&self, time: &TimeKind) -> Option<TimeGrid> {
@@ -116,7 +127,7 @@ pub const FIT_LAYOUT: &[(&str, &str)] = &[
     ("shift", "what the level stands above, model scale"),
     (
         "state",
-        "filtered state at last_at, model scale: level less shift, slope, then each season (dummy form: the pattern now and one to period - 2 steps ago;          harmonics: value and companion of each, the last one at half the period alone), cycle and companion, autoregression now and before, coefficients of          drifting drivers, coefficients of constant drivers",
+        "filtered state at last_at, model scale: level less shift, slope, then each season (dummy form: the pattern now and one to period - 2 steps ago; harmonics: value and companion of each, the last one at half the period alone), cycle and companion, autoregression now and before, coefficients of drifting drivers, coefficients of constant drivers",
     ),
     ("covariance", "covariance of the state: the rows of its lower triangle, one after another"),
     ("plan", "values of each driver after last_at, constant coefficients first; NULL where there is none"),

@@ -20,6 +20,7 @@ use crate::columns::numbers;
 use crate::columns::time::TimeKind;
 use crate::columns::time_grid::TimeGrid;
 use crate::sql::error::{Caller, bad_argument, counted};
+use crate::sql::watch::Watch;
 
 const NAME: &str = "fit_advance";
 const WRITTEN: &str = "fit_advance(fit, at_list, observed_list [, drivers])";
@@ -28,14 +29,15 @@ const WRITTEN: &str = "fit_advance(fit, at_list, observed_list [, drivers])";
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct FitAdvance {
     signature: Signature,
+    watch: Watch,
 }
 
 impl FitAdvance {
-    pub(crate) fn new() -> Self {
+    pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["fit", "at_list", "observed_list", "drivers"].map(str::to_string).to_vec());
-        Self { signature }
+        Self { signature, watch }
     }
 }
 
@@ -90,7 +92,7 @@ impl ScalarUDFImpl for FitAdvance {
     fn invoke_with_args(&self, args: ScalarFunctionArgs) -> Result<ColumnarValue> {
         let columns = ColumnarValue::values_to_arrays(&args.args)?;
         let scalar = args.args.iter().all(|arg| matches!(arg, ColumnarValue::Scalar(_)));
-        let answer = advance(&columns)?;
+        let answer = advance(&columns, &self.watch)?;
         Ok(if scalar {
             ColumnarValue::Scalar(ScalarValue::try_from_array(&answer, 0)?)
         } else {
@@ -121,7 +123,7 @@ struct NewRows {
     drivers: Vec<Option<Vec<f64>>>,
 }
 
-fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
+fn advance(columns: &[ArrayRef], watch: &Watch) -> Result<ArrayRef> {
     let argument = |at: usize| {
         columns.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
     };
@@ -159,6 +161,10 @@ fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
             }
             _ => fit,
         };
+        let wrong = answer.refused.as_deref().or(Some(&answer.status)).filter(|status| *status != "ok");
+        let message = answer.message.as_deref().unwrap_or_default();
+        let rows = times[row].as_ref().map_or(0, |times| times.len());
+        watch.record(NAME, rows, wrong.map(|status| (status, message)), || answer.describe(&fits.time));
         answers.push(Some(answer));
     }
     Ok(answers.finish()?)
