@@ -36,6 +36,13 @@ COPY (
 
 CREATE EXTERNAL TABLE monday STORED AS PARQUET PARTITIONED BY (region) LOCATION 'nightly/monday/';
 
+-- What was not taken, and why: a row that came twice, a week that was corrected, a mistyped date. Those fits are what they were on
+-- Sunday. An empty answer is the usual one. Read "status" too: it says which series have no fit at all.
+SELECT region, product, fit['status'] AS status, fit['refused'] AS refused, fit['message'] AS message
+FROM monday
+WHERE fit['status'] <> 'ok' OR fit['refused'] IS NOT NULL
+ORDER BY region, product;
+
 -- Thirteen weeks under the plan, with the columns of forecast.
 COPY (
     SELECT region, product, s['at'] AS at, s['step'] AS step, s['expected'] AS expected,

@@ -162,14 +162,14 @@ fn duration(elapsed: Duration) -> String {
 
 #[cfg(test)]
 mod tests {
-    use stillwell::{Function, TroubledSeries};
+    use stillwell::TroubledSeries;
 
     use super::*;
     use crate::copy_staging::Files;
 
     fn troubled(series: &str, status: &'static str) -> TroubledSeries {
         let message = format!("{status}, in a sentence");
-        TroubledSeries { series: series.to_string(), function: Function::Forecast, status, message }
+        TroubledSeries { series: series.to_string(), function: "forecast", status, message }
     }
 
     fn written(target: &str, kind: Option<Kind>, number: usize) -> Written {

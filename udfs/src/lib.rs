@@ -35,6 +35,7 @@
 mod columns;
 mod sql;
 
+pub use columns::fit_value::FIT_LAYOUT;
 pub use columns::result::{ColumnKind, ColumnScope, ColumnSpec, Scale, Unit};
 pub use sql::{
     ARGUMENTS, Argument, ColumnDoc, Function, FunctionDoc, Progress, StructuralExtensionPlanner,

@@ -2,7 +2,9 @@
 
 use std::fmt::Write;
 
-use stillwell::{ARGUMENTS, Argument, ColumnDoc, ColumnKind, Function, FunctionDoc, ValueFunctionDoc};
+use stillwell::{
+    ARGUMENTS, Argument, ColumnDoc, ColumnKind, FIT_LAYOUT, Function, FunctionDoc, ValueFunctionDoc,
+};
 
 /// The whole page.
 pub(super) fn page(relations: &[FunctionDoc], values: &[ValueFunctionDoc]) -> String {
@@ -25,6 +27,11 @@ pub(super) fn page(relations: &[FunctionDoc], values: &[ValueFunctionDoc]) -> St
         row(&mut page, &[&format!("[`{0}`](#{0})", doc.name), doc.kind.name(), doc.summary()]);
     }
     arguments(&mut page);
+    page.push_str(
+        "\nUnits of columns: those on an untransformed model, and those on a logarithmic one ('log', 'log1p'). With Box-Cox what is a factor \
+         there stands on the transformed scale, unit 'transformed'; with transform => 'auto' each series decides. The `unit` in the metadata of a \
+         field says which.\n",
+    );
     for doc in relations {
         function(&mut page, doc);
     }
@@ -38,7 +45,18 @@ pub(super) fn page(relations: &[FunctionDoc], values: &[ValueFunctionDoc]) -> St
         }
         section.iter().for_each(|doc| value_function(&mut page, doc));
     }
+    layout(&mut page);
     page
+}
+
+fn layout(page: &mut String) {
+    page.push_str(
+        "\n## The layout of a fit\n\nA fit is a struct with these fields, each NULL where it has nothing to say. Keep fits in \
+         Parquet: CSV has no structs, and JSON forgets the types of times. Fields are found by name.\n\n| field | holds |\n|---|---|\n",
+    );
+    for (name, meaning) in FIT_LAYOUT {
+        row(page, &[&format!("`{}`", name.replace(", ", "`, `")), meaning]);
+    }
 }
 
 fn value_function(page: &mut String, doc: &ValueFunctionDoc) {

@@ -151,7 +151,7 @@ pub const ARGUMENTS: &[Argument] = &[
             "harmonics",
             Takes::Value,
             (
-                "a count from 1 to half the period, or one count per season",
+                "a count from 1 to half the period (60 at most), or one count per season",
                 "dummy form, or a rule for long periods",
             ),
             "Pairs of sine and cosine that make a seasonal pattern.",

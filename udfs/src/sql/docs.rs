@@ -56,12 +56,12 @@ fn describe(function: Function) -> FunctionDoc {
         one_row_is,
         description,
         arguments: arguments_of(function).collect(),
-        columns: function.columns().iter().map(column).collect(),
+        columns: function.columns().iter().map(|spec| column(function, spec)).collect(),
         example,
     }
 }
 
-fn column(spec: &'static ColumnSpec) -> ColumnDoc {
+fn column(function: Function, spec: &'static ColumnSpec) -> ColumnDoc {
     let condition = match (spec.part, spec.scope) {
         (true, ColumnScope::Always) => Some("with parts => true"),
         (true, _) => Some("one per driver, with parts => true"),
@@ -71,7 +71,9 @@ fn column(spec: &'static ColumnSpec) -> ColumnDoc {
         (false, ColumnScope::EachState) => Some("one per state"),
         (false, ColumnScope::EachDisturbance) => Some("one per disturbance"),
     };
-    ColumnDoc { spec, units: spec.unit.text(Scale::Data).zip(spec.unit.text(Scale::Log)), condition }
+    // A system given as matrices has no transform.
+    let multiplied = if function == Function::StateSpace { Scale::Data } else { Scale::Log };
+    ColumnDoc { spec, units: spec.unit.text(Scale::Data).zip(spec.unit.text(multiplied)), condition }
 }
 
 fn words(function: Function) -> (&'static str, &'static str, &'static str) {

@@ -31,6 +31,7 @@ mod relation;
 mod session;
 mod stream;
 mod structural_components;
+mod watch;
 mod work;
 
 pub use arguments::{ARGUMENTS, Argument, Takes, arguments_of};

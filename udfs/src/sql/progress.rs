@@ -6,8 +6,6 @@
 use std::sync::atomic::{AtomicU64, Ordering};
 use std::sync::{Mutex, PoisonError};
 
-use super::function::Function;
-
 /// How many troubled series are kept by name, unless [`Progress::with_capacity`] says otherwise.
 const KEPT: usize = 1_000;
 
@@ -16,8 +14,8 @@ const KEPT: usize = 1_000;
 pub struct TroubledSeries {
     /// Its key as text, `region=North, product=Oat milk`; empty where there is no key.
     pub series: String,
-    /// The function that met it.
-    pub function: Function,
+    /// Name of the function that met it.
+    pub function: &'static str,
     /// The words of the `status` column.
     pub status: &'static str,
     /// The sentence of the `message` column.
@@ -130,7 +128,7 @@ mod tests {
     fn troubled(series: &str) -> TroubledSeries {
         TroubledSeries {
             series: series.to_string(),
-            function: Function::Forecast,
+            function: "forecast",
             status: "constant",
             message: "it never moves".to_string(),
         }

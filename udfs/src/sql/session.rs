@@ -10,8 +10,10 @@ use datafusion::execution::context::QueryPlanner;
 use datafusion::prelude::SessionContext;
 
 use super::planner::StructuralQueryPlanner;
+use super::progress::Progress;
 use super::registry;
 use super::relation::StructuralRelationPlanner;
+use super::watch::Watch;
 
 /// The engine's planner, by the only thing it shows of itself.
 const PLAIN_PLANNER: &str = "DefaultQueryPlanner";
@@ -68,9 +70,11 @@ pub fn extend(mut builder: SessionStateBuilder) -> SessionStateBuilder {
         .get_or_insert_with(|| Arc::new(MemoryCatalogProviderList::new()) as Arc<dyn CatalogProviderList>);
     let planner = Arc::new(StructuralRelationPlanner::new(Arc::clone(catalogs)));
     builder.relation_planners().get_or_insert_default().insert(0, planner);
-    registry::add_to(builder.scalar_functions(), registry::scalars());
-    registry::add_to(builder.aggregate_functions(), registry::aggregates());
-    registry::add_to(builder.window_functions(), registry::windows());
+    let progress = builder.config().as_ref().and_then(|config| config.get_extension::<Progress>());
+    let watch = Watch::new(progress);
+    registry::add_to(builder.scalar_functions(), registry::scalars(&watch));
+    registry::add_to(builder.aggregate_functions(), registry::aggregates(&watch));
+    registry::add_to(builder.window_functions(), registry::windows(&watch));
     builder.with_query_planner(Arc::new(StructuralQueryPlanner))
 }
 

@@ -23,6 +23,7 @@ use datafusion::logical_expr::{
 
 use super::arguments::options::{OptionSet, constant};
 use super::error::{Caller, bad_argument, bad_call, counted};
+use super::watch::Watch;
 use crate::columns::components_rows::COLUMNS;
 use crate::columns::result::{Layout, ResultSchema, Scale};
 use crate::columns::time::TimeKind;
@@ -37,14 +38,15 @@ const OPTIONS: OptionSet = OptionSet { function: NAME, without: &[] };
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct StructuralComponents {
     signature: Signature,
+    watch: Watch,
 }
 
 impl StructuralComponents {
-    pub(crate) fn new() -> Self {
+    pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
-        Self { signature }
+        Self { signature, watch }
     }
 }
 
@@ -128,7 +130,7 @@ impl WindowUDFImpl for StructuralComponents {
             None => ScalarValue::Null,
         };
         let settings = OPTIONS.read(&options, inputs.time.axis(), &inputs.drivers)?;
-        Ok(Box::new(Evaluator::new(inputs, settings)))
+        Ok(Box::new(Evaluator::new(inputs, settings, self.watch.clone())))
     }
 
     // The engine ignores DISTINCT on such a function; an answer all the same would be a wrong one.

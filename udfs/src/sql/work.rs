@@ -206,7 +206,7 @@ impl Workshop {
             let describe = trouble.map(|(trouble, message)| {
                 || TroubledSeries {
                     series: group.key.describe(&self.job.key_names),
-                    function: self.job.function,
+                    function: self.job.function.name(),
                     status: trouble.status(),
                     message: message.to_string(),
                 }

@@ -280,7 +280,7 @@ pub(crate) fn choose(request: &Request, observed: &[f64]) -> Result<Choice, Trou
     };
     let power_open = request.transform == TransformRequest::BoxCox(None);
     // An open power may come out as 0, the logarithm: the data must allow that.
-    let strictest = if power_open { Transform::Log } else { transform };
+    let strictest = if power_open { Transform::BoxCox(0.0) } else { transform };
     if let Some(index) = strictest.refuses(observed) {
         return Err(Trouble::NotPositive { index, value: observed[index], transform: strictest });
     }

@@ -106,6 +106,20 @@ pub enum Trouble {
         /// The last observation of the fit.
         last: String,
     },
+    /// Lists of one call that should go together one by one have different lengths.
+    UnequalLists {
+        /// Name of the list.
+        name: String,
+        /// Its length.
+        got: usize,
+        /// The length of the list of times.
+        times: usize,
+    },
+    /// A stored fit whose contents do not go together.
+    DamagedFit {
+        /// What does not.
+        what: String,
+    },
     /// No even grid fits the times.
     NoGrid {
         /// What speaks against one.
@@ -133,12 +147,14 @@ impl Trouble {
             Self::MissingTime { .. } => "missing time",
             Self::OffGrid { .. } => "off the grid",
             Self::NotAfter { .. } => "not after",
+            Self::UnequalLists { .. } => "unequal lists",
+            Self::DamagedFit { .. } => "damaged fit",
             Self::NoGrid { .. } => "no grid",
         }
     }
 
     /// Every status there is, 'ok' first.
-    pub const STATUSES: [&'static str; 18] = [
+    pub const STATUSES: [&'static str; 20] = [
         "ok",
         "all missing",
         "too short",
@@ -156,6 +172,8 @@ impl Trouble {
         "missing time",
         "off the grid",
         "not after",
+        "unequal lists",
+        "damaged fit",
         "no grid",
     ];
 }
@@ -188,6 +206,10 @@ impl fmt::Display for Trouble {
             Self::NotPositive { index, value, transform } => {
                 let (what, remedy) = match transform {
                     Transform::Log1p => ("log1p needs values above -1", "transform => 'none'"),
+                    Transform::BoxCox(0.0) => (
+                        "Box-Cox with power 0, which an estimated power may become, needs values above zero",
+                        "a power above 0 such as transform => 0.5, or 'log1p'",
+                    ),
                     Transform::BoxCox(_) => {
                         ("Box-Cox needs values that are not negative", "transform => 'none'")
                     }
@@ -231,6 +253,11 @@ impl fmt::Display for Trouble {
                 f,
                 "the time {at} is not after {last}, the last observation of the fit; hand in new rows only, or fit the series again where its past was corrected"
             ),
+            Self::UnequalLists { name, got, times } => write!(
+                f,
+                "{name} has {got} item(s), but there are {times} times; they go together one by one"
+            ),
+            Self::DamagedFit { what } => write!(f, "the stored fit is damaged: {what}; fit the series again"),
             Self::NoGrid { why } => {
                 write!(f, "no even grid fits the times: {why}; state the step with every => …")
             }

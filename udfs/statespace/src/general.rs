@@ -94,17 +94,17 @@ impl GeneralForm {
     pub fn check(&self) -> Result<(), BadRequest> {
         let (m, g) = (self.states(), self.disturbances());
         if m == 0 {
-            return Err(BadRequest::new("z", "is empty; it has one number per state"));
+            return Err(BadRequest::new("z", "it is empty, but has one number per state"));
         }
         if m > MOST_STATES {
             return Err(BadRequest::new(
                 "z",
-                format!("has {m} elements; at most {MOST_STATES} states are allowed"),
+                format!("it has {m} elements; at most {MOST_STATES} states are allowed"),
             ));
         }
         let size = |name: &'static str, got: usize, rows: usize, columns: usize| {
             let ok = got == rows * columns;
-            let what = format!("needs {rows} x {columns} numbers, because z has {m}; got {got}");
+            let what = format!("{rows} x {columns} numbers are needed, because z has {m}; got {got}");
             if ok { Ok(()) } else { Err(BadRequest::new(name, what)) }
         };
         size("t", self.t.len(), m, m)?;
@@ -113,7 +113,10 @@ impl GeneralForm {
         if !self.a1.is_empty() {
             size("a1", self.a1.len(), m, 1)?;
             if self.p1.is_empty() {
-                return Err(BadRequest::new("a1", "needs p1 beside it; without both, the start is diffuse"));
+                return Err(BadRequest::new(
+                    "a1",
+                    "it needs p1 beside it; without both, the start is diffuse",
+                ));
             }
         }
         if !self.p1.is_empty() {
@@ -135,13 +138,13 @@ impl GeneralForm {
             ("d", vec![self.d]),
         ] {
             if let Some(value) = values.iter().find(|v| !v.is_finite()) {
-                return Err(BadRequest::new(name, format!("needs finite numbers, got {value}")));
+                return Err(BadRequest::new(name, format!("finite numbers are needed, got {value}")));
             }
         }
         if let Some(h) = self.h.filter(|h| *h < 0.0) {
             return Err(BadRequest::new(
                 "h",
-                format!("is a variance: not negative, or NULL to estimate it; got {h}"),
+                format!("a variance is not negative, or NULL to estimate it; got {h}"),
             ));
         }
         let open = self.z.iter().filter(|z| z.is_none()).count();
@@ -149,7 +152,7 @@ impl GeneralForm {
             return Err(BadRequest::new(
                 "z",
                 format!(
-                    "has {open} NULL(s), each of which takes one of the drivers in order, but {} driver(s) are given",
+                    "it has {open} NULL(s), each of which takes one of the drivers in order, but {} driver(s) are given",
                     self.drivers.len()
                 ),
             ));
@@ -250,6 +253,11 @@ impl GeneralForm {
             return Err(Trouble::TooShort { needed, got: seen });
         }
         let (path, offsets) = self.path_of_constants(&filled);
+        if offsets.iter().any(|offset| !offset.is_finite()) {
+            return Err(Trouble::Numerical {
+                what: "what a1, c and d make on their own leaves the range of double precision along the series: t grows too fast",
+            });
+        }
         let rest: Vec<f64> = filled.observed.iter().zip(&offsets).map(|(y, o)| y - o).collect();
         let squares = rest.iter().filter(|v| !v.is_nan()).map(|v| v * v).sum::<f64>();
         let unit = power_of_two((squares / seen as f64).sqrt());
@@ -384,7 +392,7 @@ fn covariance(name: &'static str, values: &[Option<f64>], size: usize) -> Result
                 return Err(BadRequest::new(
                     name,
                     format!(
-                        "has a NULL beside the diagonal, in row {}, column {}; only variances can be left open",
+                        "it has a NULL beside the diagonal, in row {}, column {}; only variances can be left open",
                         i + 1,
                         j + 1
                     ),
@@ -393,20 +401,20 @@ fn covariance(name: &'static str, values: &[Option<f64>], size: usize) -> Result
             if here != there {
                 return Err(BadRequest::new(
                     name,
-                    format!("is not symmetric in row {}, column {}", i + 1, j + 1),
+                    format!("it is not symmetric in row {}, column {}", i + 1, j + 1),
                 ));
             }
             if i != j && values[i * size + i].is_none() && here != Some(0.0) {
                 return Err(BadRequest::new(
                     name,
-                    format!("leaves variance {} open, so the rest of its row and column must be 0", i + 1),
+                    format!("it leaves variance {} open, so the rest of its row and column must be 0", i + 1),
                 ));
             }
         }
         if let Some(variance) = values[i * size + i].filter(|v| *v < 0.0) {
             return Err(BadRequest::new(
                 name,
-                format!("has a negative variance on its diagonal: {variance}"),
+                format!("it has a negative variance on its diagonal: {variance}"),
             ));
         }
     }
@@ -417,7 +425,7 @@ fn covariance(name: &'static str, values: &[Option<f64>], size: usize) -> Result
         if smallest < -1e-10 * largest {
             return Err(BadRequest::new(
                 name,
-                format!("is no covariance: it has the negative eigenvalue {smallest}"),
+                format!("it is no covariance: it has the negative eigenvalue {smallest}"),
             ));
         }
     }

@@ -5,7 +5,8 @@
 //! parameters. Coefficients of constant drivers are states that never move. The log-likelihood adds up, because it is a sum over
 //! one-step predictions.
 //!
-//! Everything here is on the model scale in the data's own size: no shift and no working unit.
+//! Everything here is on the model scale in the data's own size. Only the level stands apart from a shift, so that series far from zero
+//! keep their digits.
 
 use crate::components::ForecastScale;
 use crate::error::Trouble;
@@ -17,9 +18,9 @@ use crate::quantile::normal_quantile;
 use crate::residual_checks as checks;
 use crate::results::{Forecast, Parameter, State};
 use crate::smoother::Smoothed;
-use crate::structure::{Link, Model, Role, Structure};
+use crate::structure::{Link, MAX_ORDER, Model, ParameterSpec, Role, Structure};
 use crate::system::{Op, System};
-use crate::transform::{Transform, Unit};
+use crate::transform::{LARGEST_POWER, Transform, Unit};
 
 /// What is kept of a fit. All fields are plain, so that it can be written down and read back.
 #[derive(Debug, Clone, PartialEq)]
@@ -34,7 +35,9 @@ pub struct Standing {
     pub power_estimated: bool,
     /// All parameters, model scale.
     pub parameters: Vec<Parameter>,
-    /// Filtered state of the last point, then the coefficients of the constant drivers.
+    /// What the level stands above: subtracted from the transformed observations; zero without a level.
+    pub shift: f64,
+    /// Filtered state of the last point (the level less `shift`), then the coefficients of the constant drivers.
     pub state: Vec<f64>,
     /// Its covariance: rows of the lower triangle, one after another.
     pub covariance: Vec<f64>,
@@ -86,9 +89,6 @@ impl Fit {
             .collect();
         for i in 0..size {
             state[i] *= factors[i];
-            if specs.get(i).is_some_and(|spec| spec.role == Role::Level) {
-                state[i] += self.scaling.shift;
-            }
             for j in 0..size {
                 covariance[i * size + j] *= factors[i] * factors[j];
             }
@@ -101,6 +101,7 @@ impl Fit {
             transform: self.transform,
             power_estimated: self.power_estimated,
             parameters: self.parameters().to_vec(),
+            shift: self.scaling.shift,
             state,
             covariance: packed(&covariance, size),
             points: n,
@@ -175,7 +176,7 @@ impl Standing {
         let scale = ForecastScale {
             transform: self.transform,
             unit: 1.0,
-            shift: 0.0,
+            shift: self.shift,
             h: system.h,
             z: normal_quantile(0.5 + 0.5 * coverage),
         };
@@ -201,7 +202,8 @@ impl Standing {
             return Ok(Self { plan, ..self.clone() });
         }
         self.examine(&observed[..seen], drivers)?;
-        let modelled: Vec<f64> = observed[..seen].iter().map(|&y| self.transform.forward(y)).collect();
+        let modelled: Vec<f64> =
+            observed[..seen].iter().map(|&y| self.transform.forward(y) - self.shift).collect();
         let filled: Vec<Vec<f64>> = drivers
             .iter()
             .map(|column| {
@@ -211,25 +213,28 @@ impl Standing {
             .collect();
         let (_, system) = self.model_and_system()?;
         let start = self.predicted(&system);
-        let data = Data { observed: &modelled, drivers: &[], drifting: &filled };
+        // All points but the last run through the filter, of which only its end is kept; the last is taken in here, up to its filtered
+        // state.
+        let data = Data { observed: &modelled[..seen - 1], drivers: &[], drifting: &filled };
         let mut pass = Pass::default();
-        filter::resume(&system, data, (&start.a, &start.p), Keep::Everything, &mut pass).map_err(|_| {
-            Trouble::Numerical {
-                what: "the new observations take the likelihood out of the range of double precision; fit the series again",
-            }
-        })?;
-        let (m, last) = (pass.m, seen - 1);
-        let (gain, error) = (&pass.gains[last * m..], pass.row(last)[0]);
-        let state = (0..m).map(|i| pass.state_columns(last, i)[0] + gain[i] * error).collect();
-        let p = &pass.covariances[last * m * m..];
-        let covariance: Vec<f64> =
-            (0..m * m).map(|ij| p[ij] - gain[ij / m] * gain[ij % m] * pass.f[last]).collect();
+        let beyond = Trouble::Numerical {
+            what: "the new observations take the likelihood out of the range of double precision; fit the series again",
+        };
+        filter::resume(&system, data, (&start.a, &start.p), Keep::Likelihood, &mut pass)
+            .map_err(|_| beyond.clone())?;
+        let (mut state, mut covariance) = (pass.a, pass.p);
+        let last = taken_in(&system, (&mut state, &mut covariance), modelled[seen - 1], (&filled, seen - 1));
+        let log_likelihood = self.log_likelihood + pass.log_likelihood + last;
+        if !(log_likelihood.is_finite() && state.iter().chain(&covariance).all(|v| v.is_finite())) {
+            return Err(beyond);
+        }
+        let size = state.len();
         Ok(Self {
             state,
-            covariance: packed(&covariance, m),
+            covariance: packed(&covariance, size),
             points: self.points + seen,
-            n: self.n + pass.observed,
-            log_likelihood: self.log_likelihood + pass.log_likelihood,
+            n: self.n + pass.observed + 1,
+            log_likelihood,
             plan: rest(seen),
             ..self.clone()
         })
@@ -259,7 +264,7 @@ impl Standing {
                 variance += weights.iter().map(|&(j, b)| a * b * self.covariance_of(i, j)).sum::<f64>();
             }
             let smoothed = Smoothed { mean: vec![mean], variance: vec![variance.max(0.0)] };
-            let State { value, std_error } = self.transform.component(&smoothed, unit, 1.0, 0.0);
+            let State { value, std_error } = self.transform.component(&smoothed, unit, 1.0, self.shift);
             value.first().copied().zip(std_error.first().copied())
         };
         LastPoint {
@@ -290,17 +295,73 @@ impl Standing {
         (checks::aic(l, w, self.diffuse), checks::bic(l, w, self.diffuse, self.n))
     }
 
-    /// True when the vectors have the lengths that the structure asks for: what was read back is what was written.
-    pub fn is_consistent(&self) -> bool {
-        let model = self.structure.model();
-        let size = model.states() + self.drivers.len();
-        self.state.len() == size
+    /// What speaks against this being a standing that [`Fit::standing`] or [`Self::advance`] made; `None` if nothing does. For values that
+    /// were written down and read back.
+    pub fn contradiction(&self) -> Option<&'static str> {
+        let structure = &self.structure;
+        let size = self.state.len();
+        // Before the model is built: a damaged count must not ask for memory.
+        let season_fits = |season: &crate::structure::Season| {
+            let states = season.harmonics.map_or(season.period - 1.0, |count| 2.0 * count as f64 - 1.0);
+            (2.0..=1e5).contains(&season.period)
+                && states <= size as f64
+                && match season.harmonics {
+                    Some(count) => (1.0..=season.period / 2.0).contains(&(count as f64)),
+                    None => season.period.fract() == 0.0,
+                }
+        };
+        let cycle_fits = structure
+            .cycle
+            .is_none_or(|c| c.shortest > 2.0 && c.longest.is_finite() && c.longest >= c.shortest);
+        if !structure.seasons.iter().all(season_fits) || !cycle_fits || structure.autoregression > MAX_ORDER {
+            return Some("a season, a cycle or an autoregression is out of range");
+        }
+        if self.transform.power().is_some_and(|power| !(0.0..=LARGEST_POWER).contains(&power)) {
+            return Some("the power of its transform is out of range");
+        }
+        let model = structure.model();
+        let lengths = model.states() + self.drivers.len() == size
             && self.covariance.len() == size * (size + 1) / 2
-            && self.structure.drivers == self.drivers.len()
-            && self.plan.len() == self.drivers.len() + self.structure.drifting_drivers.len()
-            && model.parameters().len() == self.parameters.len()
-            && model.parameters().iter().zip(&self.parameters).all(|(spec, p)| spec.name == p.name)
-            && self.state.iter().chain(&self.covariance).all(|v| v.is_finite())
+            && structure.drivers == self.drivers.len()
+            && self.plan.len() == self.drivers.len() + structure.drifting_drivers.len()
+            && model.diffuse_elements() == self.diffuse
+            && model.parameters().len() == self.parameters.len();
+        if !lengths {
+            return Some("its states and parameters are not those of its structure");
+        }
+        let parameter_fits = |(spec, parameter): (&ParameterSpec, &Parameter)| {
+            let value = parameter.value;
+            spec.name == parameter.name
+                && match spec.link {
+                    Link::Variance => value.is_finite() && value >= 0.0,
+                    Link::Between { low, high } => {
+                        value.is_nan()
+                            || parameter.known && value.is_finite()
+                            || (low..=high).contains(&value)
+                    }
+                    Link::Free => value.is_nan() || value.is_finite(),
+                }
+        };
+        if !model.parameters().iter().zip(&self.parameters).all(parameter_fits) {
+            return Some("a parameter is missing or out of range");
+        }
+        let in_range = |v: &f64| v.abs() <= crate::fit::LARGEST * crate::fit::LARGEST;
+        let finite = self.shift.is_finite() && self.log_likelihood.is_finite();
+        if !finite || !self.state.iter().chain(&self.covariance).all(in_range) {
+            return Some("its state is not finite");
+        }
+        let positive = (0..size).all(|i| {
+            (0..=i).all(|j| {
+                let bound = self.covariance_of(i, i) * self.covariance_of(j, j);
+                self.covariance_of(i, i) >= 0.0
+                    && self.covariance_of(i, j).powi(2) <= bound * (1.0 + 1e-6) + 1e-300
+            })
+        });
+        if !positive {
+            return Some("its covariance is none");
+        }
+        (self.n == 0 || self.n > self.points || self.diffuse > self.n)
+            .then_some("its counts do not go together")
     }
 
     fn covariance_of(&self, i: usize, j: usize) -> f64 {
@@ -373,6 +434,31 @@ impl Standing {
         }
         Ok(())
     }
+}
+
+/// Takes an observation into the predicted state and covariance, which become the filtered ones, and returns its share of the
+/// log-likelihood (DK eqs. 4.13, 4.14).
+fn taken_in(
+    system: &System,
+    (state, covariance): (&mut [f64], &mut [f64]),
+    y: f64,
+    (drivers, t): (&[Vec<f64>], usize),
+) -> f64 {
+    let m = state.len();
+    let mut pz = vec![0.0; m];
+    let (mut error, mut f) = (y, system.h);
+    system.for_loads(drivers, t, |i, load| {
+        error -= load * state[i];
+        pz.iter_mut().zip(&covariance[i * m..(i + 1) * m]).for_each(|(to, from)| *to += load * from);
+    });
+    system.for_loads(drivers, t, |i, load| f += load * pz[i]);
+    for i in 0..m {
+        state[i] += pz[i] / f * error;
+        for j in 0..m {
+            covariance[i * m + j] -= pz[i] / f * pz[j];
+        }
+    }
+    -0.5 * (std::f64::consts::TAU.ln() + f.ln() + error * error / f)
 }
 
 /// The lower triangle of a square matrix, row by row.

@@ -1,6 +1,7 @@
 //! Running totals of forecast steps on a transformed scale.
 //!
-//! The steps are functions of jointly normal variables: the first two moments of their sum are exact. Its interval is that of a law with
+//! The steps are functions of jointly normal variables: the mean of their sum is exact, its variance too for the logarithm; for a power the
+//! covariances of different steps are Mehler's expansion to its twelfth term. The interval of the sum is that of a law with
 //! these moments: for the logarithm the lognormal (Fenton 1960, *IRE Trans. Communications Systems* 8, 57-67), for Box-Cox with power
 //! `lambda` the law whose own power `lambda` is normal (what Wilson & Hilferty 1931, *PNAS* 17, do for sums of squares), which for
 //! `lambda = 1` is the normal law itself.
@@ -27,8 +28,8 @@ pub(crate) struct Totals {
 struct StepMoments {
     /// Mean on the data's scale (log1p: of one plus the value).
     expected: f64,
-    /// Standard deviation on the model scale, and the expansion (Box-Cox alone).
-    expansion: Option<(f64, [f64; TERMS])>,
+    /// Standard deviation on the model scale, variance on the data's, and the expansion (Box-Cox alone).
+    expansion: Option<(f64, f64, [f64; TERMS])>,
 }
 
 impl Totals {
@@ -47,13 +48,12 @@ impl Totals {
         let square = self.unit * self.unit;
         let (m, v) = (step.mean * self.unit + self.shift, step.variance * square);
         let moments = match self.power() {
-            Some(_) => StepMoments {
-                expected: self.transform.moments(m, v).0,
-                expansion: Some((
-                    v.sqrt(),
-                    normal_law::coefficients(m, v, self.transform.kink(), |x| self.transform.back(x)),
-                )),
-            },
+            Some(_) => {
+                let (expected, sd) = self.transform.moments(m, v);
+                let back = |x| self.transform.back(x);
+                let coefficients = normal_law::coefficients(m, v, self.transform.kink(), back);
+                StepMoments { expected, expansion: Some((v.sqrt(), sd * sd, coefficients)) }
+            }
             None => StepMoments { expected: transform::lognormal(m, v).0, expansion: None },
         };
         let before = self.total;
@@ -64,7 +64,7 @@ impl Totals {
         for (earlier, c) in self.steps.iter().zip(step.with_earlier) {
             relative += 2.0
                 * match (&earlier.expansion, &moments.expansion) {
-                    (Some((s, a)), Some((r, b))) => {
+                    (Some((s, _, a)), Some((r, _, b))) => {
                         let rho = if s * r > 0.0 { c * square / (s * r) } else { 0.0 };
                         share(share(normal_law::covariance(a, b, rho)))
                     }
@@ -72,7 +72,7 @@ impl Totals {
                 };
         }
         relative += match &moments.expansion {
-            Some((_, a)) => share(share(normal_law::covariance(a, a, 1.0))),
+            Some((_, variance, _)) => share(share(*variance)),
             None => share(moments.expected).powi(2) * v.min(700.0).exp_m1(),
         };
         self.relative = relative;
@@ -92,11 +92,12 @@ impl Totals {
 
 /// Ends of `scale (1 + c u)^(1/power)`, `u ~ N(0, 1)`, zero where the bracket is negative, with this mean and relative variance.
 fn power_normal_ends(mean: f64, relative_variance: f64, power: f64, z: f64) -> (f64, f64) {
-    let value = |c: f64, u: f64| (1.0 + c * u).max(0.0).powf(1.0 / power);
+    // ln_1p keeps the digits of small powers, whose c is small too.
+    let value = |c: f64, u: f64| if c * u <= -1.0 { 0.0 } else { ((c * u).ln_1p() / power).exp() };
     let moments = |c: f64| normal_law::moments(0.0, 1.0, -1.0 / c, |u| value(c, u));
     // The relative variance grows with c: halve the bracket in the logarithm.
-    let (mut low, mut high) = (1e-8_f64, 1e2_f64);
-    for _ in 0..60 {
+    let (mut low, mut high) = (1e-8 * power, 1e2_f64);
+    for _ in 0..80 {
         let middle = (low * high).sqrt();
         let (mean, sd) = moments(middle);
         if (sd / mean).powi(2) < relative_variance {
@@ -116,6 +117,21 @@ fn power_normal_ends(mean: f64, relative_variance: f64, power: f64, z: f64) -> (
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// Towards power zero the law becomes the lognormal.
+    #[test]
+    fn small_powers_are_nearly_the_lognormal() {
+        let (m, v) = transform::lognormal_with_moments(50.0, 0.04);
+        for power in [1e-3, 1e-6, 1e-9] {
+            let (low, high) = power_normal_ends(50.0, 0.04, power, 1.5);
+            let ends = ((m - 1.5 * v.sqrt()).exp(), (m + 1.5 * v.sqrt()).exp());
+            let near = 1e-6 + 2.0 * power;
+            assert!(
+                (low / ends.0 - 1.0).abs() < near && (high / ends.1 - 1.0).abs() < near,
+                "{power}: {low} {high} {ends:?}"
+            );
+        }
+    }
 
     #[test]
     fn power_one_is_the_normal_law() {

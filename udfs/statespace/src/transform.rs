@@ -124,7 +124,14 @@ impl Transform {
             Self::Log | Self::Log1p => exp(x),
             Self::BoxCox(power) => {
                 let y = self.back(x);
-                if power == 1.0 { 1.0 } else { y.powf(1.0 - power) }
+                // At zero a root has no slope to speak of.
+                if power == 1.0 {
+                    1.0
+                } else if y > 0.0 {
+                    y.powf(1.0 - power)
+                } else {
+                    f64::NAN
+                }
             }
         }
     }

@@ -357,6 +357,8 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
         Trouble::MissingTime { rows: 7 },
         Trouble::OffGrid { at: "2020-02-03".to_owned(), grid: "weeks".to_owned() },
         Trouble::NotAfter { at: "2020-02-03".to_owned(), last: "2020-02-10".to_owned() },
+        Trouble::UnequalLists { name: "price".to_owned(), got: 3, times: 2 },
+        Trouble::DamagedFit { what: "a reason".to_owned() },
         Trouble::NoGrid { why: "because".to_owned() },
     ];
     let statuses: Vec<&str> = std::iter::once("ok").chain(all.iter().map(Trouble::status)).collect();
@@ -377,7 +379,9 @@ fn every_trouble_has_a_listed_status_and_a_sentence() {
     has(&all[13], &["7 row"]);
     has(&all[14], &["2020-02-03", "weeks", "every =>"]);
     has(&all[15], &["2020-02-03", "2020-02-10", "new rows"]);
-    has(&all[16], &["because", "every =>"]);
+    has(&all[16], &["price has 3", "2 times"]);
+    has(&all[17], &["a reason", "fit the series again"]);
+    has(&all[18], &["because", "every =>"]);
 }
 
 #[test]

@@ -10,7 +10,7 @@ use arrow::datatypes::{DataType, Float64Type, Int32Type, Int64Type};
 use arrow::error::ArrowError;
 use stillwell_statespace::calendar::Step;
 use stillwell_statespace::structure::{Cycle, Season, Structure, Trend};
-use stillwell_statespace::{Parameter, Standing, Transform};
+use stillwell_statespace::{Parameter, Standing, Transform, Trouble};
 
 use super::{FitValue, FittedValue, LAYOUT_VERSION, fit_fields};
 use crate::columns::time::TimeKind;
@@ -103,36 +103,64 @@ impl FitColumn {
         self.fits.len()
     }
 
-    /// The fit of a row; `None` for NULL.
+    /// The fit of a row; `None` for NULL. A fit whose contents do not go together is one in trouble, of that series alone.
     ///
     /// # Errors
-    /// A later layout, or contents that do not go together.
+    /// A layout of a later version.
     pub(crate) fn get(&self, row: usize) -> Result<Option<FitValue>, ReadError> {
         if self.fits.is_null(row) {
             return Ok(None);
         }
-        let at = Row { fits: &self.fits, row };
-        // Outer joins make structs of NULLs.
-        let Some(version) = at.short("layout_version")? else { return Ok(None) };
-        if version > LAYOUT_VERSION {
-            return Err(ReadError::Later { version });
+        match self.read(row) {
+            Err(ReadError::Damaged { what }) => {
+                let trouble = Trouble::DamagedFit { what };
+                let message = Some(trouble.to_string());
+                Ok(Some(FitValue {
+                    status: trouble.status().to_string(),
+                    refused: None,
+                    message,
+                    fitted: None,
+                }))
+            }
+            other => other,
         }
-        let status = at.text("status")?.unwrap_or_else(|| "ok".to_string());
-        let message = at.text("message")?;
-        let last_at = self.time.read(at.column("last_at")?).map_err(|error| damaged(&error.to_string()))?;
-        let first_at = self.time.read(at.column("first_at")?).map_err(|error| damaged(&error.to_string()))?;
-        let ends = first_at.get(row).copied().flatten().zip(last_at.get(row).copied().flatten());
-        let fitted = match ends {
-            None => None,
-            Some((first_at, last_at)) => Some(FittedValue {
-                standing: at.standing()?,
-                rule: at.rule()?,
-                every: at.text("every")?.unwrap_or_default(),
-                first_at,
-                last_at,
-            }),
+    }
+
+    fn read(&self, row: usize) -> Result<Option<FitValue>, ReadError> {
+        let at = Row { fits: &self.fits, row };
+        let (version, status) = (at.short("layout_version")?, at.text("status")?);
+        let (version, status) = match (version, status) {
+            // Outer joins make structs of NULLs.
+            (None, None) => return Ok(None),
+            (Some(version), Some(status)) => (version, status),
+            _ => return Err(damaged("it has no layout_version or no status")),
         };
-        Ok(Some(FitValue { status, message, fitted }))
+        match version {
+            later if later > LAYOUT_VERSION => return Err(ReadError::Later { version }),
+            1.. => {}
+            _ => return Err(damaged("there is no such layout_version")),
+        }
+        let (refused, message) = (at.text("refused")?, at.text("message")?);
+        let time = |name: &str| -> Result<Option<i64>, ReadError> {
+            let times = self
+                .time
+                .read(&at.column(name)?.slice(row, 1))
+                .map_err(|error| damaged(&error.to_string()))?;
+            Ok(times.first().copied().flatten())
+        };
+        let fitted = match (time("first_at")?, time("last_at")?) {
+            (None, None) => None,
+            (Some(first_at), Some(last_at)) if first_at <= last_at => {
+                let (rule, standing) = (at.rule()?, at.standing()?);
+                let every = at.text("every")?.unwrap_or_default();
+                Some(FittedValue { standing, rule, every, first_at, last_at })
+            }
+            _ => return Err(damaged("its first_at and last_at do not go together")),
+        };
+        if fitted.is_none() && status == "ok" {
+            return Err(damaged("it is 'ok' but has no times"));
+        }
+        Ok(Some(FitValue { status, refused, message, fitted }))
     }
 }
 
@@ -233,15 +261,11 @@ impl Row<'_> {
                 .collect()
         });
         let cycle = self.number("cycle_shortest")?.zip(self.number("cycle_longest")?);
-        // The core builds what it is told: periods it could not build are refused here.
-        if seasons.iter().any(|season: &Season| !(2.0..=100_000.0).contains(&season.period)) {
-            return Err(damaged("the period of a season is out of range"));
-        }
         Ok(Structure {
             trend: trend.ok_or_else(|| damaged(&format!("there is no trend '{word}'")))?,
             seasons,
             cycle: cycle.map(|(shortest, longest)| Cycle { shortest, longest }),
-            autoregression: self.count("autoregression")?.min(100),
+            autoregression: self.count("autoregression")?,
             drivers: self.names("drivers")?.len(),
             drifting_drivers: self.names("drifting_drivers")?,
         })
@@ -285,6 +309,7 @@ impl Row<'_> {
             transform: self.transform()?,
             power_estimated: self.flag("power_estimated")?,
             parameters: self.parameters()?,
+            shift: self.number("shift")?.unwrap_or(f64::NAN),
             state: self.numbers("state")?,
             covariance: self.numbers("covariance")?,
             points: self.count("points")?,
@@ -295,9 +320,9 @@ impl Row<'_> {
             evaluations: self.count("evaluations")?,
             plan,
         };
-        match standing.is_consistent() {
-            true => Ok(standing),
-            false => Err(damaged("its states and parameters are not those of its structure")),
+        match standing.contradiction() {
+            None => Ok(standing),
+            Some(what) => Err(damaged(what)),
         }
     }
 }

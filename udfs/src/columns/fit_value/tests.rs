@@ -38,10 +38,14 @@ fn time() -> TimeKind {
 }
 
 fn rows() -> Vec<Option<FitValue>> {
-    let broken =
-        FitValue { status: "constant".to_string(), message: Some("a sentence".to_string()), fitted: None };
+    let broken = FitValue {
+        status: "constant".to_string(),
+        refused: None,
+        message: Some("a sentence".to_string()),
+        fitted: None,
+    };
     vec![
-        Some(FitValue { status: "ok".to_string(), message: None, fitted: Some(fitted()) }),
+        Some(FitValue { status: "ok".to_string(), refused: None, message: None, fitted: Some(fitted()) }),
         None,
         Some(broken),
     ]
@@ -114,10 +118,15 @@ fn later_layouts_and_damaged_fits_are_refused() {
     let fits = FitColumn::try_new(&later).expect("a column of fits");
     assert_eq!(fits.get(0), Err(ReadError::Later { version: 2 }));
 
-    let damaged = with("autoregression", Arc::new(Int32Array::from(vec![3, 0, 0])));
-    let fits = FitColumn::try_new(&damaged).expect("a column of fits");
-    assert!(matches!(fits.get(0), Err(ReadError::Damaged { .. })));
-    assert!(fits.get(0).unwrap_err().to_string().contains("fit the series again"));
+    let none = with("layout_version", Arc::new(Int32Array::from(vec![Some(0), None, Some(1)])));
+    let longer = with("autoregression", Arc::new(Int32Array::from(vec![3, 0, 0])));
+    for damaged in [none, longer] {
+        let fits = FitColumn::try_new(&damaged).expect("a column of fits");
+        let fit = fits.get(0).expect("a row of its own").expect("a fit");
+        assert_eq!((fit.status.as_str(), fit.fitted.is_none()), ("damaged fit", true));
+        assert!(fit.message.expect("a sentence").contains("fit the series again"));
+        assert_eq!(fits.get(2).expect("the others").expect("a fit").status, "constant");
+    }
 }
 
 #[test]

@@ -159,6 +159,9 @@ impl FitBuilder {
             "status" => {
                 Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>())
             }
+            "refused" => Arc::new(
+                self.fits().map(|fit| fit.and_then(|fit| fit.refused.as_deref())).collect::<StringArray>(),
+            ),
             "message" => Arc::new(
                 self.fits().map(|fit| fit.and_then(|fit| fit.message.as_deref())).collect::<StringArray>(),
             ),
@@ -189,6 +192,7 @@ impl FitBuilder {
             "transform_power" => self.numbers(|fit| fit.standing.transform.power()),
             "power_estimated" => self.flags(|fit| fit.standing.power_estimated),
             "parameters" => self.parameters()?,
+            "shift" => self.numbers(|fit| Some(fit.standing.shift)),
             "state" => self.lists(|fit| &fit.standing.state),
             "covariance" => self.lists(|fit| &fit.standing.covariance),
             "plan" => self.plans()?,

@@ -3,6 +3,7 @@
 use datafusion::logical_expr::Documentation;
 
 use crate::sql::registry;
+use crate::sql::watch::Watch;
 
 /// What kind of function it is.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
@@ -73,7 +74,11 @@ impl ValueFunctionDoc {
 
 /// The documentation of all scalar, aggregate and window functions; those of one section stand together.
 pub fn value_functions() -> Vec<ValueFunctionDoc> {
-    let (scalars, aggregates, windows) = (registry::scalars(), registry::aggregates(), registry::windows());
+    let (scalars, aggregates, windows) = (
+        registry::scalars(&Watch::default()),
+        registry::aggregates(&Watch::default()),
+        registry::windows(&Watch::default()),
+    );
     let scalars = scalars.iter().map(|f| (f.name(), ValueFunctionKind::Scalar, f.documentation()));
     let aggregates = aggregates.iter().map(|f| (f.name(), ValueFunctionKind::Aggregate, f.documentation()));
     let windows = windows.iter().map(|f| (f.name(), ValueFunctionKind::Window, f.documentation()));
@@ -94,7 +99,9 @@ mod tests {
     #[test]
     fn every_function_says_all_there_is_to_say() {
         let docs = value_functions();
-        let count = registry::scalars().len() + registry::aggregates().len() + registry::windows().len();
+        let count = registry::scalars(&Watch::default()).len()
+            + registry::aggregates(&Watch::default()).len()
+            + registry::windows(&Watch::default()).len();
         assert_eq!(docs.len(), count, "a function has no documentation");
         for doc in docs {
             let name = &doc.name;

@@ -20,6 +20,7 @@ use crate::columns::{driver_struct, numbers};
 use crate::sql::arguments::settings::Settings;
 use crate::sql::error::{Caller, bad_argument, failed_series};
 use crate::sql::fitting::{fitted, message};
+use crate::sql::watch::Watch;
 
 /// Columns of the state: times, observed values and each driver, as lists of equal lengths.
 pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
@@ -57,11 +58,12 @@ pub(super) struct FitGroups {
     distinct: bool,
     groups: Vec<GroupRows>,
     workspace: Workspace,
+    watch: Watch,
 }
 
 impl FitGroups {
-    pub(super) fn new(inputs: Inputs, settings: Settings, distinct: bool) -> Self {
-        Self { inputs, settings, distinct, groups: Vec::new(), workspace: Workspace::new() }
+    pub(super) fn new(inputs: Inputs, settings: Settings, distinct: bool, watch: Watch) -> Self {
+        Self { inputs, settings, distinct, groups: Vec::new(), workspace: Workspace::new(), watch }
     }
 
     /// Names of the drivers as the fit knows them: constant coefficients first.
@@ -136,17 +138,21 @@ impl FitGroups {
         };
         match (placed, solved) {
             (Ok(placed), Ok(standing)) => match ends(&placed) {
-                Some((first_at, last_at)) => Ok(Some(FitValue {
-                    status: "ok".to_string(),
-                    message: None,
-                    fitted: Some(FittedValue {
-                        standing,
-                        rule: placed.grid().rule(),
-                        every: placed.grid().grid().describe(),
-                        first_at,
-                        last_at,
-                    }),
-                })),
+                Some((first_at, last_at)) => {
+                    self.watch.record(NAME, group.len(), None, String::new);
+                    Ok(Some(FitValue {
+                        status: "ok".to_string(),
+                        refused: None,
+                        message: None,
+                        fitted: Some(FittedValue {
+                            standing,
+                            rule: placed.grid().rule(),
+                            every: placed.grid().grid().describe(),
+                            first_at,
+                            last_at,
+                        }),
+                    }))
+                }
                 None => self.trouble(&group, Some(&placed), &Trouble::AllMissing).map(Some),
             },
             (Err(unplaced), _) => self.trouble(&group, None, &unplaced.trouble).map(Some),
@@ -157,16 +163,26 @@ impl FitGroups {
     fn trouble(&self, group: &Group, placed: Option<&Placed>, trouble: &Trouble) -> Result<FitValue> {
         let sentence = message(trouble, placed);
         if self.settings.fail {
-            let format = |time: &i64| self.inputs.time.axis().format(*time);
-            let mut times = group.times.iter().flatten();
-            // An aggregate is not told the key of its group.
-            let words = match (times.next().map(format), times.next_back().map(format)) {
-                (Some(first), Some(last)) => format!("of {} rows from {first} to {last}", group.len()),
-                _ => format!("of {} row(s)", group.len()),
-            };
-            return Err(failed_series(Caller::Expression(NAME), &words, trouble, &sentence));
+            return Err(failed_series(Caller::Expression(NAME), &self.describe(group), trouble, &sentence));
         }
-        Ok(FitValue { status: trouble.status().to_string(), message: Some(sentence), fitted: None })
+        let wrong = (trouble.status(), sentence.as_str());
+        self.watch.record(NAME, group.len(), Some(wrong), || self.describe(group));
+        Ok(FitValue {
+            status: trouble.status().to_string(),
+            refused: None,
+            message: Some(sentence),
+            fitted: None,
+        })
+    }
+
+    /// The series in words; an aggregate is not told the key of its group.
+    fn describe(&self, group: &Group) -> String {
+        let format = |time: &i64| self.inputs.time.axis().format(*time);
+        let mut times = group.times.iter().flatten();
+        match (times.next().map(format), times.next_back().map(format)) {
+            (Some(first), Some(last)) => format!("of {} rows from {first} to {last}", group.len()),
+            _ => format!("of {} row(s)", group.len()),
+        }
     }
 
     fn take(&mut self, emit: EmitTo) -> Vec<GroupRows> {

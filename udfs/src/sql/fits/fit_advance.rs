@@ -4,6 +4,7 @@ use std::collections::HashMap;
 use std::sync::LazyLock;
 
 use datafusion::arrow::array::{Array, ArrayRef};
+use datafusion::arrow::compute::{CastOptions, cast_with_options};
 use datafusion::arrow::datatypes::DataType;
 use datafusion::common::ScalarValue;
 use datafusion::error::{DataFusionError, Result};
@@ -19,6 +20,7 @@ use crate::columns::numbers;
 use crate::columns::time::TimeKind;
 use crate::columns::time_grid::TimeGrid;
 use crate::sql::error::{Caller, bad_argument, counted};
+use crate::sql::watch::Watch;
 
 const NAME: &str = "fit_advance";
 const WRITTEN: &str = "fit_advance(fit, at_list, observed_list [, drivers])";
@@ -27,14 +29,15 @@ const WRITTEN: &str = "fit_advance(fit, at_list, observed_list [, drivers])";
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct FitAdvance {
     signature: Signature,
+    watch: Watch,
 }
 
 impl FitAdvance {
-    pub(crate) fn new() -> Self {
+    pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["fit", "at_list", "observed_list", "drivers"].map(str::to_string).to_vec());
-        Self { signature }
+        Self { signature, watch }
     }
 }
 
@@ -63,10 +66,10 @@ impl ScalarUDFImpl for FitAdvance {
         let time = FitColumn::time_of(data_type(0)).map_err(|error| bad_fit(&error))?;
         match data_type(1) {
             DataType::Null => {}
-            list if item_type(list) == Some(time.data_type()) => {}
+            list if item_type(list).is_some_and(|item| same_kind(item, time.data_type())) => {}
             other => {
                 let what = format!(
-                    "takes a list of {}, the times of the fit, such as array_agg(week), but has type {other}",
+                    "takes a list of {}, the times of the fit, such as array_agg(week), but has type {other}; cast it",
                     time.data_type()
                 );
                 return Err(bad_argument(caller, "at_list", what));
@@ -89,7 +92,7 @@ impl ScalarUDFImpl for FitAdvance {
     fn invoke_with_args(&self, args: ScalarFunctionArgs) -> Result<ColumnarValue> {
         let columns = ColumnarValue::values_to_arrays(&args.args)?;
         let scalar = args.args.iter().all(|arg| matches!(arg, ColumnarValue::Scalar(_)));
-        let answer = advance(&columns)?;
+        let answer = advance(&columns, &self.watch)?;
         Ok(if scalar {
             ColumnarValue::Scalar(ScalarValue::try_from_array(&answer, 0)?)
         } else {
@@ -102,6 +105,16 @@ impl ScalarUDFImpl for FitAdvance {
     }
 }
 
+/// True for types of time that can be brought to one another: another unit or width, another zone for the same instants.
+fn same_kind(given: &DataType, of_fit: &DataType) -> bool {
+    match (given, of_fit) {
+        (DataType::Null, _) => true,
+        (DataType::Timestamp(_, a), DataType::Timestamp(_, b)) => a.is_some() == b.is_some(),
+        (DataType::Date32 | DataType::Date64, DataType::Date32 | DataType::Date64) => true,
+        (a, b) => a == b || a.is_integer() && b.is_integer(),
+    }
+}
+
 /// New rows of one fit in order of time.
 struct NewRows {
     times: Vec<i64>,
@@ -110,7 +123,7 @@ struct NewRows {
     drivers: Vec<Option<Vec<f64>>>,
 }
 
-fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
+fn advance(columns: &[ArrayRef], watch: &Watch) -> Result<ArrayRef> {
     let argument = |at: usize| {
         columns.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
     };
@@ -134,20 +147,24 @@ fn advance(columns: &[ArrayRef]) -> Result<ArrayRef> {
             (Some(fitted), Some(times)) if fit.status == "ok" => {
                 let rows = new_rows(&fits.time, times, observed[row].as_ref(), fitted, (&drivers, row))?;
                 match rows.and_then(|rows| advanced(&fits.time, fitted, &rows)) {
-                    Ok(fitted) => FitValue { fitted: Some(fitted), ..fit },
-                    // What was known is kept: the same rows, mended, can be handed in again.
+                    Ok(fitted) => FitValue { refused: None, message: None, fitted: Some(fitted), ..fit },
+                    // The fit stays what it was: the same rows, mended, can be handed in again.
                     Err((trouble, place)) => FitValue {
-                        status: trouble.status().to_string(),
+                        refused: Some(trouble.status().to_string()),
                         message: Some(match place {
                             Some(time) => format!("{trouble} (time of that point: {time})"),
                             None => trouble.to_string(),
                         }),
-                        fitted: Some(fitted.clone()),
+                        ..fit
                     },
                 }
             }
             _ => fit,
         };
+        let wrong = answer.refused.as_deref().or(Some(&answer.status)).filter(|status| *status != "ok");
+        let message = answer.message.as_deref().unwrap_or_default();
+        let rows = times[row].as_ref().map_or(0, |times| times.len());
+        watch.record(NAME, rows, wrong.map(|status| (status, message)), || answer.describe(&fits.time));
         answers.push(Some(answer));
     }
     Ok(answers.finish()?)
@@ -165,34 +182,40 @@ fn new_rows(
     (drivers, row): (&HashMap<String, Vec<Vec<f64>>>, usize),
 ) -> Result<std::result::Result<NewRows, Refusal>> {
     let caller = Caller::Expression(NAME);
-    let stored = time.read(times).map_err(|error| bad_argument(caller, "at_list", error.to_string()))?;
+    let strict = CastOptions { safe: false, ..CastOptions::default() };
+    let wrong = |what: String| bad_argument(caller, "at_list", what);
+    let times = cast_with_options(times, time.data_type(), &strict).map_err(|error| {
+        wrong(format!("holds a time that the fit's {} cannot hold: {error}", time.data_type()))
+    })?;
+    let stored = time.read(&times).map_err(|error| wrong(error.to_string()))?;
     let observed = match observed {
         Some(items) if *items.data_type() != DataType::Null => numbers::to_f64(items)?,
         _ => vec![f64::NAN; stored.len()],
     };
-    let same = |name: &str, length: usize| {
-        if length == stored.len() {
-            return Ok(());
-        }
-        let what =
-            format!("has {length} item(s), but at_list has {}; they go together one by one", stored.len());
-        Err(bad_argument(caller, name, what))
-    };
-    same("observed_list", observed.len())?;
     let names = fitted.standing.driver_names().collect::<Vec<_>>();
-    if let Some(unknown) = drivers.keys().find(|name| !names.contains(name)) {
-        let what = format!("names '{unknown}', which is no driver of the fit");
-        return Err(bad_argument(caller, "drivers", what));
-    }
     let lists = names.iter().map(|name| drivers.get(*name).map(|lists| &lists[row])).collect::<Vec<_>>();
-    for values in lists.iter().flatten() {
-        same("drivers", values.len())?;
+    // A fit without some of the drivers is no mistake: one call may advance fits of several structures. A name that nobody knows beside a
+    // driver that nobody handed in is one.
+    let unknown = drivers.keys().filter(|name| !names.contains(name)).min();
+    if let (Some(unknown), Some(at)) = (unknown, lists.iter().position(Option::is_none)) {
+        let name = format!("driver '{}' (handed in was '{unknown}', which the fit does not have)", names[at]);
+        return Ok(Err((Trouble::UnequalLists { name, got: 0, times: stored.len() }, None)));
+    }
+    let mut lengths = vec![("observed_list", observed.len())];
+    lengths.extend(
+        names.iter().zip(&lists).filter_map(|(name, list)| list.map(|list| (name.as_str(), list.len()))),
+    );
+    if let Some((name, got)) = lengths.into_iter().find(|(_, length)| *length != stored.len()) {
+        return Ok(Err((Trouble::UnequalLists { name: name.to_string(), got, times: stored.len() }, None)));
     }
     let missing = stored.iter().filter(|time| time.is_none()).count();
     if missing > 0 {
         return Ok(Err((Trouble::MissingTime { rows: missing }, None)));
     }
-    let mut order = (0..stored.len()).collect::<Vec<_>>();
+    // A row that the fit has seen and that says nothing new does no harm.
+    let says_something =
+        |&at: &usize| !observed[at].is_nan() || stored[at].is_some_and(|t| t > fitted.last_at);
+    let mut order = (0..stored.len()).filter(says_something).collect::<Vec<_>>();
     order.sort_by_key(|&at| stored[at]);
     Ok(Ok(NewRows {
         times: order.iter().filter_map(|&at| stored[at]).collect(),
@@ -275,21 +298,23 @@ fn points(grid: &TimeGrid, fitted: &FittedValue, rows: &NewRows) -> std::result:
         }
         points.push(point);
     }
-    // A grid can be far longer than the rows on it.
-    match points.last() {
-        Some(&last) if last > MOST_POINTS => Err((
-            Trouble::OffGrid {
-                at: rows.times.last().map_or_else(String::new, |&time| grid.format(time)),
-                grid: format!("{}, {last} steps after the last observation", fitted.every),
-            },
-            None,
-        )),
-        _ => Ok(points),
+    // A mistyped year would pass for a long gap, and everything that comes after it for old.
+    let most = fitted.standing.points.max(LONGEST_GAP);
+    let far = points.iter().zip(&rows.times).find(|(point, _)| **point > most);
+    match far {
+        Some((steps, &time)) => {
+            let grid_words = format!(
+                "{}; {steps} steps after the last observation, but the series has {}",
+                fitted.every, fitted.standing.points
+            );
+            Err((Trouble::OffGrid { at: grid.format(time), grid: grid_words }, None))
+        }
+        None => Ok(points),
     }
 }
 
-/// Most grid points that one call may add.
-const MOST_POINTS: usize = 10_000_000;
+/// Steps after the last observation up to which a row may lie where the series itself is shorter.
+const LONGEST_GAP: usize = 1_000;
 
 static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     Documentation::builder(
@@ -297,8 +322,8 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
         "The fit after further rows: the state moves on, the parameters stay, and nothing of the history is needed. The \
          result equals filtering the whole series at the same parameters. Rows must come after the last observation of the fit, in any \
          order; gaps in the grid are missing points, and rows after the last new observation carry the drivers' plan. Rows that \
-         cannot be taken (a time twice, off the grid, not after the last observation) leave the fit as it was, with their \
-         status and message in it. Fit again when the structure of the series changes, and in any case from time to time: parameters \
+         cannot be taken (a time twice, off the grid, not after the last observation, further ahead than the series is long) leave the \
+         fit as it was: it can still be forecast from and advanced, and `refused` and `message` say what was wrong. Fit again when the structure of the series changes, and in any case from time to time: parameters \
          do not learn here.",
         WRITTEN,
     )
@@ -308,7 +333,7 @@ static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     .with_argument(
         "drivers",
         "A struct of lists in the same order, such as {'price': array_agg(price)}. Drivers that are not handed in keep the plan \
-         that the fit carries.",
+         that the fit carries; those that a fit does not have are passed over.",
     )
     .with_sql_example(
         "SELECT region, product, fit_advance(fit, weeks, litres)['last_at'] AS last_at\n\

@@ -5,7 +5,7 @@ use std::sync::{Arc, LazyLock};
 use datafusion::arrow::array::AsArray;
 use datafusion::arrow::array::{ArrayRef, Float64Array, Int64Array, ListArray, StringArray, StructArray};
 use datafusion::arrow::buffer::{NullBuffer, OffsetBuffer};
-use datafusion::arrow::compute::cast;
+use datafusion::arrow::compute::{CastOptions, cast, cast_with_options};
 use datafusion::arrow::datatypes::{DataType, Field, Fields, Float64Type, Int64Type};
 use datafusion::error::{DataFusionError, Result};
 use datafusion::logical_expr::{
@@ -18,6 +18,7 @@ use super::lists::{driver_names, driver_values};
 use crate::columns::fit_value::{FitColumn, FitValue};
 use crate::columns::time::TimeKind;
 use crate::sql::error::{Caller, bad_argument, counted};
+use crate::sql::watch::Watch;
 
 const NAME: &str = "fit_forecast";
 const WRITTEN: &str = "fit_forecast(fit, horizon [, coverage [, drivers]])";
@@ -29,14 +30,15 @@ const DEFAULT_COVERAGE: f64 = 0.9;
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct FitForecast {
     signature: Signature,
+    watch: Watch,
 }
 
 impl FitForecast {
-    pub(crate) fn new() -> Self {
+    pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["fit", "horizon", "coverage", "drivers"].map(str::to_string).to_vec());
-        Self { signature }
+        Self { signature, watch }
     }
 }
 
@@ -96,7 +98,7 @@ impl ScalarUDFImpl for FitForecast {
     fn invoke_with_args(&self, args: ScalarFunctionArgs) -> Result<ColumnarValue> {
         let columns = ColumnarValue::values_to_arrays(&args.args)?;
         let scalar = args.args.iter().all(|arg| matches!(arg, ColumnarValue::Scalar(_)));
-        let answer = forecasts(&columns)?;
+        let answer = forecasts(&columns, &self.watch)?;
         Ok(if scalar {
             ColumnarValue::Scalar(datafusion::common::ScalarValue::try_from_array(&answer, 0)?)
         } else {
@@ -162,7 +164,7 @@ impl Steps {
     }
 }
 
-fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
+fn forecasts(columns: &[ArrayRef], watch: &Watch) -> Result<ArrayRef> {
     let caller = Caller::Expression(NAME);
     let argument = |at: usize| {
         columns.get(at).ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
@@ -170,7 +172,10 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
     let bad_fit =
         |error: crate::columns::fit_value::ReadError| bad_argument(caller, "fit", error.to_string());
     let fits = FitColumn::try_new(argument(0)?).map_err(bad_fit)?;
-    let horizons = cast(argument(1)?, &DataType::Int64)?;
+    let strict = CastOptions { safe: false, ..CastOptions::default() };
+    let horizons = cast_with_options(argument(1)?, &DataType::Int64, &strict).map_err(|_| {
+        bad_argument(caller, "horizon", format!("takes a whole number from 1 to {LONGEST_HORIZON}"))
+    })?;
     let coverages = columns.get(2).map(|column| cast(column, &DataType::Float64)).transpose()?;
     let coverages: Vec<Option<f64>> =
         coverages.map_or_else(Vec::new, |column| column.as_primitive::<Float64Type>().iter().collect());
@@ -216,30 +221,37 @@ fn forecasts(columns: &[ArrayRef]) -> Result<ArrayRef> {
         lengths.push(horizon);
         valid.push(true);
         match forecast(&fit, horizon, coverage, &plans, row)? {
-            Ok(forecast) => steps.push(horizon, &fit, Some(&forecast), "ok"),
-            Err(status) => steps.push(horizon, &fit, None, &status),
+            Ok(forecast) => {
+                watch.record(NAME, horizon, None, String::new);
+                steps.push(horizon, &fit, Some(&forecast), "ok");
+            }
+            Err((status, message)) => {
+                watch.record(NAME, horizon, Some((&status, &message)), || fit.describe(&fits.time));
+                steps.push(horizon, &fit, None, &status);
+            }
         }
     }
     steps.finish(lengths, valid)
 }
 
-/// The forecast of one fit, or its status.
+/// The forecast of one fit, or what is wrong with it: status and sentence.
 fn forecast(
     fit: &FitValue,
     horizon: usize,
     coverage: f64,
     plans: &[(&String, Vec<Vec<f64>>)],
     row: usize,
-) -> Result<std::result::Result<Forecast, String>> {
+) -> Result<std::result::Result<Forecast, (String, String)>> {
     let Some(fitted) = fit.fitted.as_ref().filter(|_| fit.status == "ok") else {
-        return Ok(Err(fit.status.clone()));
+        return Ok(Err((fit.status.clone(), fit.message.clone().unwrap_or_default())));
     };
     let standing = &fitted.standing;
-    if let Some((name, _)) =
-        plans.iter().find(|(name, _)| !standing.driver_names().any(|driver| driver == *name))
-    {
-        let what = format!("names '{name}', which is no driver of the fit");
-        return Err(bad_argument(Caller::Expression(NAME), "drivers", what));
+    // A fit without some of the drivers is no mistake; a name that it does not know beside a driver that is not handed in is one.
+    let known = |name: &String| standing.driver_names().any(|driver| driver == name);
+    let handed = |driver: &String| plans.iter().any(|(name, _)| *name == driver);
+    if plans.iter().any(|(name, _)| !known(name)) && !standing.driver_names().all(handed) {
+        let message = "the drivers handed in are not those of the fit".to_string();
+        return Ok(Err(("no driver plan".to_string(), message)));
     }
     // A driver that is not handed in keeps the plan that the fit carries.
     let plan = standing
@@ -251,14 +263,14 @@ fn forecast(
         })
         .collect::<Vec<_>>();
     let answer = standing.forecast(horizon, coverage, Some(&plan));
-    Ok(answer.map_err(|trouble: Trouble| trouble.status().to_string()))
+    Ok(answer.map_err(|trouble: Trouble| (trouble.status().to_string(), trouble.to_string())))
 }
 
 static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     Documentation::builder(
         SECTION,
         "The forecast of a fit, without its history: a list with one struct per step, with the columns of \
-         [`forecast`](#forecast). Drivers that are not handed in keep the plan that the fit carries. The steps of a fit that is in trouble \
+         [`forecast`](#forecast). Drivers that are not handed in keep the plan that the fit carries, those that a fit does not have are passed over. The steps of a fit that is in trouble \
          hold its status and NULLs. `unnest(unnest(fit_forecast(…)))` makes rows and columns of it.",
         WRITTEN,
     )

@@ -68,6 +68,7 @@ fn summary_fields(time: &TimeKind) -> Fields {
     let field = |name: &str, data_type: DataType| Field::new(name, data_type, true);
     let mut fields = vec![
         field("status", DataType::Utf8),
+        field("refused", DataType::Utf8),
         field("message", DataType::Utf8),
         field("trend", DataType::Utf8),
         field("season", DataType::Utf8),
@@ -236,6 +237,9 @@ impl Table<'_> {
             "status" => {
                 Arc::new(self.fits().map(|fit| fit.map(|fit| fit.status.as_str())).collect::<StringArray>())
             }
+            "refused" => Arc::new(
+                self.fits().map(|fit| fit.and_then(|fit| fit.refused.as_deref())).collect::<StringArray>(),
+            ),
             "message" => Arc::new(
                 self.fits().map(|fit| fit.and_then(|fit| fit.message.as_deref())).collect::<StringArray>(),
             ),
@@ -280,7 +284,7 @@ impl Table<'_> {
 static DOCUMENTATION: LazyLock<Documentation> = LazyLock::new(|| {
     Documentation::builder(
         SECTION,
-        "What a fit holds, as a struct. Its fields: `status` and `message`, the structure chosen (`trend`, `season`, `harmonics`, `transform`, \
+        "What a fit holds, as a struct. Its fields: `status`, `refused` and `message`, the structure chosen (`trend`, `season`, `harmonics`, `transform`, \
          `transform_power`), the grid (`every`, `first_at`, `last_at`, `n`, `missing`), where the series stands at `last_at` \
          (`level`, `slope`, `seasonal`, `cycle`, `autoregression`, each with its standard error, in the units of \
          [`components`](#components)), `parameters` as a list of name, value, std_error and known, `coefficients` of the drivers, \

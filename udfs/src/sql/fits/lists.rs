@@ -51,7 +51,9 @@ pub(super) fn driver_names(function: &'static str, data_type: &DataType) -> Resu
         }
     };
     for field in fields {
-        if !item_type(field.data_type()).is_some_and(numbers::is_driver) {
+        let nothing = *field.data_type() == DataType::Null;
+        let driver = |item: &DataType| *item == DataType::Null || numbers::is_driver(item);
+        if !nothing && !item_type(field.data_type()).is_some_and(driver) {
             return Err(wrong(format!(
                 "takes a list of numbers or flags in each field, but '{}' has type {}",
                 field.name(),
@@ -68,6 +70,7 @@ pub(super) fn driver_values(column: &ArrayRef, name: &str) -> Result<Option<Vec<
         return Ok(None);
     };
     let read = |items: Option<ArrayRef>| match items {
+        Some(items) if *items.data_type() == DataType::Null => Ok(vec![f64::NAN; items.len()]),
         Some(items) => Ok(numbers::to_f64(&items)?),
         None => Ok(Vec::new()),
     };

@@ -15,18 +15,20 @@ mod structural_fit;
 
 use datafusion::logical_expr::{AggregateUDF, DocSection, ScalarUDF};
 
+use super::watch::Watch;
+
 /// The scalar functions.
-pub(crate) fn scalars() -> Vec<ScalarUDF> {
+pub(crate) fn scalars(watch: &Watch) -> Vec<ScalarUDF> {
     vec![
-        ScalarUDF::from(fit_forecast::FitForecast::new()),
+        ScalarUDF::from(fit_forecast::FitForecast::new(watch.clone())),
         ScalarUDF::from(fit_summary::FitSummary::new()),
-        ScalarUDF::from(fit_advance::FitAdvance::new()),
+        ScalarUDF::from(fit_advance::FitAdvance::new(watch.clone())),
     ]
 }
 
 /// The aggregate.
-pub(crate) fn aggregates() -> Vec<AggregateUDF> {
-    vec![AggregateUDF::from(structural_fit::StructuralFit::new())]
+pub(crate) fn aggregates(watch: &Watch) -> Vec<AggregateUDF> {
+    vec![AggregateUDF::from(structural_fit::StructuralFit::new(watch.clone()))]
 }
 
 /// The section of the reference that the scalar functions stand in.

@@ -18,6 +18,7 @@ use crate::columns::{driver_struct, numbers};
 use crate::sql::arguments::options::{OptionSet, constant};
 use crate::sql::arguments::settings::Settings;
 use crate::sql::error::{Caller, bad_argument, bad_call, counted};
+use crate::sql::watch::Watch;
 
 pub(super) const NAME: &str = "structural_fit";
 const WRITTEN: &str = "structural_fit(at, observed [, options [, drivers]])";
@@ -27,14 +28,15 @@ const OPTIONS: OptionSet = OptionSet { function: NAME, without: &["coverage"] };
 #[derive(Debug, PartialEq, Eq, Hash)]
 pub(crate) struct StructuralFit {
     signature: Signature,
+    watch: Watch,
 }
 
 impl StructuralFit {
-    pub(crate) fn new() -> Self {
+    pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
         signature.parameter_names =
             Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
-        Self { signature }
+        Self { signature, watch }
     }
 }
 
@@ -107,7 +109,12 @@ impl AggregateUDFImpl for StructuralFit {
 
     fn accumulator(&self, args: AccumulatorArgs<'_>) -> Result<Box<dyn Accumulator>> {
         let (inputs, settings) = read(&args)?;
-        Ok(Box::new(FitAccumulator::new(FitGroups::new(inputs, settings, args.is_distinct))))
+        Ok(Box::new(FitAccumulator::new(FitGroups::new(
+            inputs,
+            settings,
+            args.is_distinct,
+            self.watch.clone(),
+        ))))
     }
 
     fn groups_accumulator_supported(&self, _args: AccumulatorArgs<'_>) -> bool {
@@ -116,7 +123,7 @@ impl AggregateUDFImpl for StructuralFit {
 
     fn create_groups_accumulator(&self, args: AccumulatorArgs<'_>) -> Result<Box<dyn GroupsAccumulator>> {
         let (inputs, settings) = read(&args)?;
-        Ok(Box::new(FitGroups::new(inputs, settings, args.is_distinct)))
+        Ok(Box::new(FitGroups::new(inputs, settings, args.is_distinct, self.watch.clone())))
     }
 
     // The rows are sorted by `at` when a group is complete; ORDER BY in the call changes nothing.

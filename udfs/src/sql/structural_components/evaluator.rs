@@ -19,12 +19,14 @@ use crate::columns::{components_rows, driver_struct, numbers};
 use crate::sql::arguments::settings::Settings;
 use crate::sql::error::{Caller, bad_argument, failed_series};
 use crate::sql::fitting::{fitted, message};
+use crate::sql::watch::Watch;
 
 /// Fits the series of a partition.
 #[derive(Debug)]
 pub(super) struct Evaluator {
     inputs: Inputs,
     settings: Settings,
+    watch: Watch,
 }
 
 /// The result before it is put into the order of the rows.
@@ -37,8 +39,8 @@ struct Answers {
 }
 
 impl Evaluator {
-    pub(super) fn new(inputs: Inputs, settings: Settings) -> Self {
-        Self { inputs, settings }
+    pub(super) fn new(inputs: Inputs, settings: Settings, watch: Watch) -> Self {
+        Self { inputs, settings, watch }
     }
 
     /// Names of the drivers as the fit knows them: constant coefficients first.
@@ -99,6 +101,7 @@ impl Evaluator {
         placed: &Placed,
         components: &Components,
     ) -> Result<Answers> {
+        self.watch.record(NAME, group.len(), None, String::new);
         let mut rows = self.rows();
         components_rows::write(&mut rows, &group.key, placed, components, &self.drivers());
         let points = group.times.iter().map(|time| time.and_then(|time| placed.index_of(time)));
@@ -116,6 +119,9 @@ impl Evaluator {
             let caller = Caller::Expression(NAME);
             return Err(failed_series(caller, &self.describe(group), trouble, &message(trouble, placed)));
         }
+        let sentence = message(trouble, placed);
+        let wrong = (trouble.status(), sentence.as_str());
+        self.watch.record(NAME, group.len(), Some(wrong), || self.describe(group));
         let mut rows = self.rows();
         components_rows::write_trouble(&mut rows, group, trouble);
         let of_row = in_row_order(order, (0..group.len()).map(Some));
