@@ -289,3 +289,6 @@ impl fmt::Display for BadRequest {
 }
 
 impl std::error::Error for BadRequest {}
+
+#[cfg(test)]
+mod tests;

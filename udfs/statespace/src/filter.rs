@@ -5,11 +5,10 @@
 //! *Annals of Statistics* 19, 1073-1083; DK 5.7. The ordinary filter runs on `d + 1` columns, the data and the response
 //! to each element, and the rows are reduced orthogonally ([`crate::reduction`]). The covariance starts at
 //! a multiple of I on the diffuse states ([`System::start_scale`]), which changes nothing in the results but
-//! keeps `F` positive when the irregular variance is zero and lets `P` settle within a few steps.
-//!
-//! **Collapse.** Once the rows tell the diffuse states well apart, their columns move into the state: `a` takes their estimate and
-//! `P` their posterior covariance, and the ordinary filter goes on (de Jong 1991, section 5; DK 5.7.3). The
-//! columns of constant drivers stay open to the end, so that a driver that starts late needs no special case.
+//! keeps `F` positive when the irregular variance is zero and lets `P` settle within a few steps. Once the rows determine the
+//! diffuse states, `collapse` takes their columns out.
+
+mod collapse;
 
 use crate::buffer::refill;
 use crate::reduction::Reduction;
@@ -266,9 +265,6 @@ fn unchanged(before: &[f64], after: &[f64], m: usize) -> bool {
     })
 }
 
-/// Steps that must be left for a collapse to pay.
-const WORTHWHILE: usize = 16;
-
 impl Pass {
     /// Width of the row and of the columns at `t`: the data and the elements still open.
     #[inline]
@@ -292,38 +288,6 @@ impl Pass {
     /// Position of a constant driver's column after the last point.
     pub(crate) fn driver_column(&self, driver: usize, drivers: usize) -> usize {
         self.width(self.n) - drivers + driver
-    }
-
-    fn may_collapse(&self, t: usize, states: usize) -> bool {
-        // With more drivers than diffuse states little is saved, and one QR of everything keeps the most digits.
-        let saves = states > 0 && 2 * states >= self.elements && t + WORTHWHILE < self.n;
-        saves && !self.keep_open && self.reduction.ready(states)
-    }
-
-    /// Moves the first `states` columns into the predicted state of point `at`.
-    fn collapse(&mut self, at: usize, states: usize) {
-        let (m, width) = (self.m, self.elements + 1);
-        let narrow = width - states;
-        self.collapsed_at = at;
-        self.reduction.eliminate(states);
-        for i in 0..m {
-            let row = &mut self.a[i * width..(i + 1) * width];
-            self.reduction.condition(row);
-            self.bridge[i * states..(i + 1) * states].copy_from_slice(&row[1..=states]);
-            row.copy_within(1 + states.., 1);
-            self.a.copy_within(i * width..i * width + narrow, i * narrow);
-        }
-        self.a.truncate(m * narrow);
-        for i in 0..m {
-            for j in 0..=i {
-                let (x, y) = (&self.bridge[i * states..][..states], &self.bridge[j * states..][..states]);
-                let c = x.iter().zip(y).map(|(a, b)| a * b).sum::<f64>();
-                self.p[i * m + j] += c;
-                if i != j {
-                    self.p[j * m + i] += c;
-                }
-            }
-        }
     }
 
     fn prepare(&mut self, n: usize, m: usize, d: usize, keep: Keep) {
@@ -353,82 +317,4 @@ impl Pass {
 }
 
 #[cfg(test)]
-mod tests {
-    use super::*;
-    use crate::structure::{Season, Structure, Trend};
-    use proptest::prelude::*;
-
-    /// Every predicted covariance is symmetric to the last bit and has no direction of negative variance.
-    fn assert_covariances(pass: &Pass) -> Result<(), TestCaseError> {
-        let m = pass.m;
-        for p in pass.covariances.chunks_exact(m * m).take(pass.n) {
-            let matrix = nalgebra::DMatrix::from_row_slice(m, m, p);
-            prop_assert_eq!(&matrix, &matrix.transpose());
-            let largest = matrix.amax();
-            let smallest = matrix.symmetric_eigenvalues().min();
-            prop_assert!(smallest >= -1e-12 * largest, "eigenvalue {smallest} beside {largest}");
-        }
-        Ok(())
-    }
-
-    proptest! {
-        #[test]
-        fn covariances_are_symmetric_and_not_negative(
-            noise in proptest::collection::vec(-1.0..1.0f64, 60),
-            variances in proptest::collection::vec(0.0..1.0f64, 8),
-            gap in 0usize..50,
-        ) {
-            let structure = Structure {
-                trend: Trend::Damped,
-                seasons: vec![Season { period: 12.4, harmonics: Some(3), fixed: false }],
-                drifting_drivers: vec!["price".to_owned()],
-                ..Structure::default()
-            };
-            let values = [variances[0], variances[1], variances[2], 0.8, variances[3], variances[4]];
-            let system = structure.model().system_at(&values).unwrap();
-            let mut observed = noise.clone();
-            observed[gap..gap + 8].fill(f64::NAN);
-            let price: Vec<f64> = (0..60).map(|t| (f64::from(t) * 0.7).sin()).collect();
-            let data = Data { observed: &observed, drivers: &[], drifting: &[price] };
-            let mut pass = Pass::default();
-            if run(&system, data, Keep::Everything, &mut pass).is_ok() {
-                assert_covariances(&pass)?;
-            }
-        }
-
-        /// A flat prior convolved with any proper one is still flat.
-        #[test]
-        fn nothing_depends_on_the_start_scale(
-            noise in proptest::collection::vec(-1.0..1.0f64, 40),
-            factor in 0.02..50.0f64,
-            level in 0.01..1.0f64,
-        ) {
-            let structure = Structure {
-                trend: Trend::LocalLinear,
-                seasons: vec![Season { period: 4.0, harmonics: None, fixed: false }],
-                drivers: 1,
-                ..Structure::default()
-            };
-            let system = structure.model().system_at(&[0.5, level, 0.01, 0.05]).unwrap();
-            let driver: Vec<f64> = (0..40).map(|t| f64::from(t % 7) - 3.0).collect();
-            let mut observed = noise.clone();
-            observed[3] = f64::NAN;
-            let data = Data { observed: &observed, drivers: &[driver], drifting: &[] };
-            let (mut a, mut b) = (Pass::default(), Pass::default());
-            let scale = system.start_scale();
-            run_from(&system, data, Start::Scale(scale), Keep::Everything, &mut a).unwrap();
-            run_from(&system, data, Start::Scale(scale * factor), Keep::Everything, &mut b).unwrap();
-            prop_assert!((a.log_likelihood - b.log_likelihood).abs() < 1e-9);
-            a.whiten_rows();
-            b.whiten_rows();
-            let level = crate::smoother::Functional::States(vec![(0, 1.0)]);
-            let [x, y] = [&a, &b].map(|pass| {
-                crate::smoother::run(&system, data, pass, std::slice::from_ref(&level), None).unwrap().functionals
-            });
-            for t in 0..40 {
-                prop_assert!((x[0].mean[t] - y[0].mean[t]).abs() < 1e-9);
-                prop_assert!((x[0].variance[t] / y[0].variance[t] - 1.0).abs() < 1e-9);
-            }
-        }
-    }
-}
+mod tests;

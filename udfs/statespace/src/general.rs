@@ -5,9 +5,10 @@
 //! estimate, a `NULL` on the diagonal of `P1` a state with a diffuse start. The path that the constants `a1`, `c` and `d` make on their own is taken
 //! off the observations and put back, so that filter, smoother, score and estimation are those of the named structures.
 
-use nalgebra::{DMatrix, SymmetricEigen};
+mod assembly;
+mod check;
 
-use crate::error::{BadRequest, Trouble};
+use crate::error::Trouble;
 use crate::estimate;
 use crate::evaluation::{Evaluation, EvaluationError, data_of};
 use crate::fit::{ROUNDING, examine, fill_drivers, reproduces};
@@ -17,9 +18,6 @@ use crate::request::{Request, Series};
 use crate::results::{Parameter, State};
 use crate::scaling::power_of_two;
 use crate::smoother::Functional;
-use crate::structure::assembly::{Assembly, Load, SharedSpec, StateSpec};
-use crate::structure::{Link, Model, Role};
-use crate::system::{Op, ProperStart};
 
 /// Most states of a system given as matrices.
 pub const MOST_STATES: usize = 64;
@@ -87,148 +85,15 @@ impl GeneralForm {
         if self.r.is_empty() { 0 } else { self.r.len() / self.states().max(1) }
     }
 
-    /// Contradictions that no series could satisfy.
-    ///
-    /// # Errors
-    /// Names the argument, what is wrong and what would be right.
-    pub fn check(&self) -> Result<(), BadRequest> {
-        let (m, g) = (self.states(), self.disturbances());
-        if m == 0 {
-            return Err(BadRequest::new("z", "it is empty, but has one number per state"));
-        }
-        if m > MOST_STATES {
-            return Err(BadRequest::new(
-                "z",
-                format!("it has {m} elements; at most {MOST_STATES} states are allowed"),
-            ));
-        }
-        let size = |name: &'static str, got: usize, rows: usize, columns: usize| {
-            let ok = got == rows * columns;
-            let what = format!("{rows} x {columns} numbers are needed, because z has {m}; got {got}");
-            if ok { Ok(()) } else { Err(BadRequest::new(name, what)) }
-        };
-        size("t", self.t.len(), m, m)?;
-        size("r", self.r.len(), m, g)?;
-        size("q", self.q.len(), g, g)?;
-        if !self.a1.is_empty() {
-            size("a1", self.a1.len(), m, 1)?;
-            if self.p1.is_empty() {
-                return Err(BadRequest::new(
-                    "a1",
-                    "it needs p1 beside it; without both, the start is diffuse",
-                ));
-            }
-        }
-        if !self.p1.is_empty() {
-            size("p1", self.p1.len(), m, m)?;
-        }
-        if !self.c.is_empty() {
-            size("c", self.c.len(), m, 1)?;
-        }
-        let given = |values: &[Option<f64>]| values.iter().copied().flatten().collect::<Vec<f64>>();
-        for (name, values) in [
-            ("z", given(&self.z)),
-            ("t", self.t.clone()),
-            ("r", self.r.clone()),
-            ("q", given(&self.q)),
-            ("h", self.h.into_iter().collect()),
-            ("a1", self.a1.clone()),
-            ("p1", given(&self.p1)),
-            ("c", self.c.clone()),
-            ("d", vec![self.d]),
-        ] {
-            if let Some(value) = values.iter().find(|v| !v.is_finite()) {
-                return Err(BadRequest::new(name, format!("finite numbers are needed, got {value}")));
-            }
-        }
-        if let Some(h) = self.h.filter(|h| *h < 0.0) {
-            return Err(BadRequest::new(
-                "h",
-                format!("a variance is not negative, or NULL to estimate it; got {h}"),
-            ));
-        }
-        let open = self.z.iter().filter(|z| z.is_none()).count();
-        if open != self.drivers.len() {
-            return Err(BadRequest::new(
-                "z",
-                format!(
-                    "it has {open} NULL(s), each of which takes one of the drivers in order, but {} driver(s) are given",
-                    self.drivers.len()
-                ),
-            ));
-        }
-        covariance("q", &self.q, g)?;
-        covariance("p1", &self.p1, if self.p1.is_empty() { 0 } else { m })
-    }
-
     /// Diffuse states, ascending.
     fn diffuse(&self) -> Vec<usize> {
         let m = self.states();
         (0..m).filter(|&i| self.p1.is_empty() || self.p1[i * m + i].is_none()).collect()
     }
 
-    /// The model on data divided by `unit`; its parameters are `h`, then the disturbances that stand alone.
-    fn model(&self, unit: f64) -> (Model, Vec<Option<f64>>) {
-        let (m, g) = (self.states(), self.disturbances());
-        let mut assembly = Assembly::default();
-        let mut known = vec![self.h.map(|h| h / (unit * unit))];
-        assembly.parameter("h", Role::Irregular, Link::Variance);
-        let diffuse = self.diffuse();
-        let mut driver = 0;
-        let states: Vec<StateSpec> = (0..m)
-            .map(|i| StateSpec {
-                name: format!("state_{}", i + 1),
-                role: Role::General,
-                load: match self.z[i] {
-                    Some(0.0) => Load::None,
-                    Some(z) => Load::Fixed(z),
-                    None => {
-                        driver += 1;
-                        Load::Driver(driver - 1)
-                    }
-                },
-                variance: None,
-                diffuse: diffuse.contains(&i),
-            })
-            .collect();
-        assembly.block(Op::Matrix { size: m, values: self.t.clone() }, states);
-        let column = |weights: &dyn Fn(usize) -> f64| -> Vec<(usize, f64)> {
-            (0..m)
-                .map(|i| (i, (0..g).map(|j| self.r[i * g + j] * weights(j)).sum::<f64>()))
-                .filter(|(_, load)| *load != 0.0)
-                .collect()
-        };
-        // Disturbances without a covariance are parameters, those with one share a factor of their block of Q.
-        let alone = |j: usize| (0..g).all(|k| k == j || self.q[j * g + k] == Some(0.0));
-        for j in (0..g).filter(|&j| alone(j)) {
-            known.push(self.q[j * g + j].map(|q| q / (unit * unit)));
-            let parameter = assembly.parameter(format!("q_{}", j + 1), Role::General, Link::Variance);
-            let loads = column(&|k| f64::from(u8::from(k == j)));
-            assembly.shared.push(SharedSpec { parameter: Some(parameter), loads });
-        }
-        let together: Vec<usize> = (0..g).filter(|&j| !alone(j)).collect();
-        if !together.is_empty() {
-            let block = DMatrix::from_fn(together.len(), together.len(), |a, b| {
-                self.q[together[a] * g + together[b]].unwrap_or(0.0)
-            });
-            let eigen = SymmetricEigen::new(block);
-            for (k, &value) in eigen.eigenvalues.iter().enumerate().filter(|(_, v)| **v > 0.0) {
-                let weight = |j: usize| {
-                    let at = together.iter().position(|&t| t == j);
-                    at.map_or(0.0, |a| eigen.eigenvectors[(a, k)] * value.sqrt() / unit)
-                };
-                assembly.shared.push(SharedSpec { parameter: None, loads: column(&weight) });
-            }
-        }
-        if !self.p1.is_empty() {
-            let covariance = self.p1.iter().map(|p| p.unwrap_or(0.0) / (unit * unit)).collect();
-            assembly.proper.push(ProperStart { offset: 0, size: m, covariance });
-        }
-        (Model::new(assembly, 0), known)
-    }
-
     /// Fits one series: estimates the variances left open, then smooths. `series.drifting_drivers` holds the drivers that stand in `Z`;
-    /// observations may end in missing points, whose states are forecasts then.
+    /// observations may end in missing points, whose states are forecasts then. `coverage`, between 0 and 1 (0.9 = 90 %), is the probability
+    /// with which the interval from [`GeneralFit::lower`] to [`GeneralFit::upper`] holds the signal.
     ///
     /// # Errors
     /// [`Trouble`] says what is wrong with the series, or why the system cannot be fitted to it. The form must have passed
@@ -381,53 +246,4 @@ impl GeneralForm {
             },
         }
     }
-}
-
-/// `values` is a covariance of `size` variables: symmetric, no direction of negative variance; `None` on the diagonal stands alone.
-fn covariance(name: &'static str, values: &[Option<f64>], size: usize) -> Result<(), BadRequest> {
-    for i in 0..size {
-        for j in 0..size {
-            let (here, there) = (values[i * size + j], values[j * size + i]);
-            if i != j && here.is_none() {
-                return Err(BadRequest::new(
-                    name,
-                    format!(
-                        "it has a NULL beside the diagonal, in row {}, column {}; only variances can be left open",
-                        i + 1,
-                        j + 1
-                    ),
-                ));
-            }
-            if here != there {
-                return Err(BadRequest::new(
-                    name,
-                    format!("it is not symmetric in row {}, column {}", i + 1, j + 1),
-                ));
-            }
-            if i != j && values[i * size + i].is_none() && here != Some(0.0) {
-                return Err(BadRequest::new(
-                    name,
-                    format!("it leaves variance {} open, so the rest of its row and column must be 0", i + 1),
-                ));
-            }
-        }
-        if let Some(variance) = values[i * size + i].filter(|v| *v < 0.0) {
-            return Err(BadRequest::new(
-                name,
-                format!("it has a negative variance on its diagonal: {variance}"),
-            ));
-        }
-    }
-    let matrix = DMatrix::from_fn(size, size, |i, j| values[i * size + j].unwrap_or(0.0));
-    if size > 0 {
-        let largest = matrix.amax();
-        let smallest = matrix.symmetric_eigenvalues().min();
-        if smallest < -1e-10 * largest {
-            return Err(BadRequest::new(
-                name,
-                format!("it is no covariance: it has the negative eigenvalue {smallest}"),
-            ));
-        }
-    }
-    Ok(())
 }

@@ -6,10 +6,12 @@
 //!
 //! The way through the crate follows the job:
 //!
-//! 1. [`Request`] says what is wanted; `choose` settles what was left to decide.
+//! 1. [`Request`] says what is wanted; `choose` checks it and settles what was left to decide.
 //! 2. [`structure`] turns the settled [`structure::Structure`] into a [`system::System`]
-//!    (`y_t = Z_t a_t + e_t`, `a_{t+1} = T a_t + n_t`), one component a file.
-//! 3. `filter` runs it forward with the diffuse elements as extra columns, `smoother` backward.
+//!    (`y_t = Z_t a_t + e_t`, `a_{t+1} = T a_t + n_t`), one component a file; [`Op`] is a block of `T`.
+//!    [`GeneralForm`] makes one from matrices instead.
+//! 3. `filter` runs it forward with the diffuse elements as extra columns, which `collapse` once the data tell
+//!    them apart, `smoother` backward.
 //! 4. `estimate` climbs the likelihood with the `score` and the average information.
 //! 5. [`fit`] ties these together; a [`Fit`] answers with [`Components`], [`Forecast`], [`Diagnostics`].
 //!
