@@ -1,12 +1,14 @@
 //! Series drawn from each structure's own equations give its parameters back within their standard errors.
 //!
 //! For every trend and season form, several seasons, a cycle, autoregressions, and constant and drifting drivers, series with
-//! fixed seeds are fitted through the public function. Two things are held against the truth: `estimate +- 1.96 standard errors` of each parameter, and the likelihood
-//! ratio of estimate and truth against its chi-square law. A correct fit covers the truth in about 95 of 100 series; what
-//! is reached must be compatible with that (binomial, one chance in ten thousand per figure), and all together nearer.
+//! fixed seeds are fitted through the public function. Two things are held against the truth: `estimate +- 1.96 standard errors`
+//! of each parameter, and the likelihood ratio of estimate and truth against its chi-square law. A correct fit covers the truth
+//! in about 95 of 100 series; what is reached must be compatible with that (binomial, one chance in ten thousand per figure),
+//! and all together nearer.
 //!
 //! Intervals are taken where the estimation works: on the logarithm of a variance (and of a period) and the logit of a damping,
-//! with the standard error carried over by the derivative; coefficients as they are. On the variance itself they are skewed and fall short in small samples.
+//! with the standard error carried over by the derivative; coefficients as they are. On the variance itself they are skewed and
+//! fall short in small samples.
 
 #[path = "support/driver.rs"]
 mod driver;
