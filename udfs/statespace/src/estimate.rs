@@ -76,7 +76,10 @@ pub(crate) fn maximise(
             best = Some(climb);
         }
     }
-    let best = best.ok_or(EvaluationError::NotPositive)?;
+    let mut best = best.ok_or(EvaluationError::NotPositive)?;
+    if !best.converged {
+        best = best.without_one_more(objective, known);
+    }
     Ok(Estimate {
         std_errors: best.std_errors(),
         values: best.values,
@@ -172,6 +175,27 @@ impl Climb {
                 }
             }
         }
+    }
+
+    /// A climb that did not end may creep along a ridge towards a variance of zero, where the other parameters would have to move too before the
+    /// likelihood is higher. Each variance that still falls is held at zero in turn, the others climb, and the best of all is taken.
+    fn without_one_more(self, objective: &mut Objective<'_>, known: &[Option<f64>]) -> Self {
+        let falling: Vec<usize> = (0..self.values.len())
+            .filter(|&i| self.links[i] == Link::Variance && self.moves(i) && self.gradient[i] < 0.0)
+            .collect();
+        let mut best = self;
+        for i in falling {
+            let mut values = best.values.clone();
+            values[i] = 0.0;
+            let Ok(mut climb) = Self::new(objective, known, values) else { continue };
+            climb.held[i] = true;
+            climb.run(objective);
+            let as_good = climb.log_likelihood >= best.log_likelihood - 1e-9;
+            if climb.log_likelihood > best.log_likelihood || as_good && climb.converged && !best.converged {
+                best = climb;
+            }
+        }
+        best
     }
 
     /// Takes the last step if it does not lower the likelihood; score and information stay those of the point before.
