@@ -28,6 +28,7 @@ mod planner;
 mod progress;
 mod registry;
 mod relation;
+mod series_inputs;
 mod session;
 mod stream;
 mod structural_components;

@@ -22,12 +22,11 @@ use datafusion::logical_expr::{
 };
 
 use super::arguments::options::{OptionSet, constant};
-use super::error::{Caller, bad_argument, bad_call, counted};
+use super::error::{Caller, bad_call, counted};
+use super::series_inputs::{NAMES, SeriesInputs};
 use super::watch::Watch;
 use crate::columns::components_rows::COLUMNS;
 use crate::columns::result::{Layout, ResultSchema, Scale};
-use crate::columns::time::TimeKind;
-use crate::columns::{driver_struct, numbers};
 use evaluator::Evaluator;
 
 const NAME: &str = "structural_components";
@@ -44,8 +43,7 @@ pub(crate) struct StructuralComponents {
 impl StructuralComponents {
     pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
-        signature.parameter_names =
-            Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
+        signature.parameter_names = Some(NAMES.map(str::to_string).to_vec());
         Self { signature, watch }
     }
 }
@@ -53,9 +51,7 @@ impl StructuralComponents {
 /// What the types of the arguments say.
 #[derive(Debug, Clone)]
 struct Inputs {
-    time: TimeKind,
-    /// Names of the drivers, in the order of their struct.
-    drivers: Vec<String>,
+    series: SeriesInputs,
     result: Arc<ResultSchema>,
 }
 
@@ -64,19 +60,11 @@ impl Inputs {
     /// Types that an argument does not take, options that are none, names that would come twice in the result.
     fn of(fields: &[FieldRef]) -> Result<Self> {
         let caller = Caller::Expression(NAME);
-        let data_type = |at: usize| fields.get(at).map_or(&DataType::Null, |field| field.data_type());
-        let time =
-            TimeKind::try_new(data_type(0)).map_err(|error| bad_argument(caller, "at", error.to_string()))?;
-        if !numbers::is_number(data_type(1)) {
-            let what = format!("takes {}, but has type {}", numbers::OBSERVED_TYPES, data_type(1));
-            return Err(bad_argument(caller, "observed", what));
-        }
-        OPTIONS.check_type(data_type(2))?;
-        let drivers =
-            driver_struct::names(data_type(3)).map_err(|what| bad_argument(caller, "drivers", what))?;
+        let types = fields.iter().map(|field| field.data_type().clone()).collect::<Vec<_>>();
+        let series = SeriesInputs::of(OPTIONS, &types)?;
         let layout = Layout {
-            time: data_type(0).clone(),
-            drivers: drivers.clone(),
+            time: series.time.data_type().clone(),
+            drivers: series.drivers.clone(),
             drifting_drivers: Vec::new(),
             scale: Scale::BySeries,
             parts: false,
@@ -93,7 +81,7 @@ impl Inputs {
                 return Err(bad_call(caller, what));
             }
         }
-        Ok(Self { time, drivers, result: Arc::new(ResultSchema::new(Vec::new(), columns)) })
+        Ok(Self { series, result: Arc::new(ResultSchema::new(Vec::new(), columns)) })
     }
 }
 
@@ -129,7 +117,7 @@ impl WindowUDFImpl for StructuralComponents {
             Some(expr) => constant(NAME, "options", expr)?,
             None => ScalarValue::Null,
         };
-        let settings = OPTIONS.read(&options, inputs.time.axis(), &inputs.drivers)?;
+        let settings = OPTIONS.read(&options, inputs.series.time.axis(), &inputs.series.drivers)?;
         Ok(Box::new(Evaluator::new(inputs, settings, self.watch.clone())))
     }
 

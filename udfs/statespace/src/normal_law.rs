@@ -160,7 +160,8 @@ mod tests {
                     root(m + s * u) * (-0.5 * u * u).exp() / TAU.sqrt() * 24.0 / f64::from(steps)
                 })
                 .sum();
-            prop_assert!((mean - slow).abs() < 1e-8, "{mean} {slow}");
+            // The slow rule runs across the root: its own error is of the order of the step (2.4e-5) to the power 3/2.
+            prop_assert!((mean - slow).abs() < 1e-7, "{mean} {slow}");
         }
     }
 }

@@ -8,18 +8,18 @@ use datafusion::arrow::array::{
 use datafusion::arrow::buffer::OffsetBuffer;
 use datafusion::arrow::datatypes::{DataType, Field, FieldRef, Float64Type, Int64Type};
 use datafusion::common::ScalarValue;
-use datafusion::error::{DataFusionError, Result};
+use datafusion::error::Result;
 use datafusion::logical_expr::{Accumulator, EmitTo, GroupsAccumulator};
 use stillwell_statespace::{Trouble, Workspace};
 
-use super::structural_fit::{Inputs, NAME};
+use super::structural_fit::NAME;
 use crate::columns::fit_value::{FitBuilder, FitValue, FittedValue};
-use crate::columns::groups::{Group, Groups, Rows};
+use crate::columns::groups::Group;
 use crate::columns::series::{Placed, place};
-use crate::columns::{driver_struct, numbers};
 use crate::sql::arguments::settings::Settings;
-use crate::sql::error::{Caller, bad_argument, failed_series};
+use crate::sql::error::{Caller, failed_series};
 use crate::sql::fitting::{fitted, message};
+use crate::sql::series_inputs::{SeriesInputs, SeriesRows};
 use crate::sql::watch::Watch;
 
 /// Columns of the state: times, observed values and each driver, as lists of equal lengths.
@@ -34,35 +34,20 @@ pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
     fields
 }
 
-/// Rows of one group or one batch, in the order in which they came.
-#[derive(Debug, Default)]
-struct GroupRows {
-    times: Vec<Option<i64>>,
-    observed: Vec<f64>,
-    drivers: Vec<Vec<f64>>,
-}
-
-impl GroupRows {
-    fn bytes(&self) -> usize {
-        let numbers = self.observed.capacity() + self.drivers.iter().map(Vec::capacity).sum::<usize>();
-        size_of::<Self>() + self.times.capacity() * size_of::<Option<i64>>() + numbers * size_of::<f64>()
-    }
-}
-
 /// The groups of one call.
 #[derive(Debug)]
 pub(super) struct FitGroups {
-    inputs: Inputs,
+    inputs: SeriesInputs,
     settings: Settings,
     /// Rows that are the same in every column count once.
     distinct: bool,
-    groups: Vec<GroupRows>,
+    groups: Vec<SeriesRows>,
     workspace: Workspace,
     watch: Watch,
 }
 
 impl FitGroups {
-    pub(super) fn new(inputs: Inputs, settings: Settings, distinct: bool, watch: Watch) -> Self {
+    pub(super) fn new(inputs: SeriesInputs, settings: Settings, distinct: bool, watch: Watch) -> Self {
         Self { inputs, settings, distinct, groups: Vec::new(), workspace: Workspace::new(), watch }
     }
 
@@ -73,7 +58,7 @@ impl FitGroups {
 
     fn grow(&mut self, total: usize) {
         let drivers = self.inputs.drivers.len();
-        let empty = || GroupRows { drivers: vec![Vec::new(); drivers], ..GroupRows::default() };
+        let empty = || SeriesRows { drivers: vec![Vec::new(); drivers], ..SeriesRows::default() };
         self.groups.resize_with(total.max(self.groups.len()), empty);
     }
 
@@ -85,51 +70,9 @@ impl FitGroups {
         }
     }
 
-    /// The columns of a batch: times, observed, drivers.
-    fn read(&self, values: &[ArrayRef]) -> Result<GroupRows> {
-        let argument = |at: usize| {
-            values
-                .get(at)
-                .ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
-        };
-        let times = self.inputs.time.read(argument(0)?);
-        let times = times.map_err(|error| bad_argument(Caller::Expression(NAME), "at", error.to_string()))?;
-        let observed = numbers::to_f64(argument(1)?)?;
-        let drivers = match values.get(3) {
-            Some(drivers) => driver_struct::values(drivers, self.drivers())?,
-            None => Vec::new(),
-        };
-        Ok(GroupRows { times, observed, drivers })
-    }
-
-    /// The rows in order of time, NULLs last; `None` without rows.
-    fn sorted(&self, rows: &GroupRows) -> Result<Option<Group>> {
-        let mut order = (0..rows.times.len()).collect::<Vec<_>>();
-        let bits = |row: usize| {
-            let drivers = rows.drivers.iter().map(move |values| values[row].to_bits());
-            std::iter::once(rows.observed[row].to_bits()).chain(drivers)
-        };
-        let time = |row: usize| rows.times[row].map_or((true, 0), |time| (false, time));
-        order.sort_by(|&a, &b| time(a).cmp(&time(b)).then_with(|| bits(a).cmp(bits(b))));
-        if self.distinct {
-            order.dedup_by(|a, b| time(*a) == time(*b) && bits(*a).eq(bits(*b)));
-        }
-        let pick = |values: &[f64]| order.iter().map(|&row| values[row]).collect();
-        let sorted = Rows {
-            keys: Vec::new(),
-            times: order.iter().map(|&row| rows.times[row]).collect(),
-            observed: pick(&rows.observed),
-            drivers: rows.drivers.iter().map(|values| pick(values)).collect(),
-        };
-        let mut groups = Groups::try_new(&[])?;
-        groups.push(sorted)?;
-        groups.close();
-        Ok(groups.pop())
-    }
-
     /// The fit of one group.
-    fn fit(&mut self, rows: &GroupRows) -> Result<Option<FitValue>> {
-        let Some(group) = self.sorted(rows)? else { return Ok(None) };
+    fn fit(&mut self, rows: &SeriesRows) -> Result<Option<FitValue>> {
+        let (Some(group), _) = rows.sorted(self.distinct)? else { return Ok(None) };
         let settings = &self.settings;
         let placed = place(&group, &self.inputs.time, settings.every, settings.request.drivers.len());
         let solved = match &placed {
@@ -163,10 +106,15 @@ impl FitGroups {
     fn trouble(&self, group: &Group, placed: Option<&Placed>, trouble: &Trouble) -> Result<FitValue> {
         let sentence = message(trouble, placed);
         if self.settings.fail {
-            return Err(failed_series(Caller::Expression(NAME), &self.describe(group), trouble, &sentence));
+            return Err(failed_series(
+                Caller::Expression(NAME),
+                &self.inputs.describe(group),
+                trouble,
+                &sentence,
+            ));
         }
         let wrong = (trouble.status(), sentence.as_str());
-        self.watch.record(NAME, group.len(), Some(wrong), || self.describe(group));
+        self.watch.record(NAME, group.len(), Some(wrong), || self.inputs.describe(group));
         Ok(FitValue {
             status: trouble.status().to_string(),
             refused: None,
@@ -175,17 +123,7 @@ impl FitGroups {
         })
     }
 
-    /// The series in words; an aggregate is not told the key of its group.
-    fn describe(&self, group: &Group) -> String {
-        let format = |time: &i64| self.inputs.time.axis().format(*time);
-        let mut times = group.times.iter().flatten();
-        match (times.next().map(format), times.next_back().map(format)) {
-            (Some(first), Some(last)) => format!("of {} rows from {first} to {last}", group.len()),
-            _ => format!("of {} row(s)", group.len()),
-        }
-    }
-
-    fn take(&mut self, emit: EmitTo) -> Vec<GroupRows> {
+    fn take(&mut self, emit: EmitTo) -> Vec<SeriesRows> {
         emit.take_needed(&mut self.groups)
     }
 }
@@ -204,7 +142,7 @@ impl GroupsAccumulator for FitGroups {
         total: usize,
     ) -> Result<()> {
         self.grow(total);
-        let GroupRows { times, observed, drivers } = self.read(values)?;
+        let SeriesRows { times, observed, drivers } = self.inputs.read(values, self.drivers())?;
         for (row, &group) in groups.iter().enumerate() {
             if filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)) {
                 self.add(group, times[row], observed[row], drivers.iter().map(|values| values[row]));
@@ -228,7 +166,7 @@ impl GroupsAccumulator for FitGroups {
         for group in &groups {
             times.append_value(group.times.iter().copied());
         }
-        let lists = |of: &dyn Fn(&GroupRows) -> Vec<f64>| -> Result<ArrayRef> {
+        let lists = |of: &dyn Fn(&SeriesRows) -> Vec<f64>| -> Result<ArrayRef> {
             let columns = groups.iter().map(of).collect::<Vec<_>>();
             let offsets = OffsetBuffer::from_lengths(columns.iter().map(Vec::len));
             let values = Arc::new(Float64Array::from_iter_values(columns.into_iter().flatten()));
@@ -267,7 +205,7 @@ impl GroupsAccumulator for FitGroups {
     }
 
     fn convert_to_state(&self, values: &[ArrayRef], filter: Option<&BooleanArray>) -> Result<Vec<ArrayRef>> {
-        let GroupRows { times, observed, drivers } = self.read(values)?;
+        let SeriesRows { times, observed, drivers } = self.inputs.read(values, self.drivers())?;
         let rows = times.len();
         let kept: Vec<bool> = (0..rows)
             .map(|row| filter.is_none_or(|filter| filter.is_valid(row) && filter.value(row)))
@@ -290,7 +228,7 @@ impl GroupsAccumulator for FitGroups {
     }
 
     fn size(&self) -> usize {
-        size_of::<Self>() + self.groups.iter().map(GroupRows::bytes).sum::<usize>()
+        size_of::<Self>() + self.groups.iter().map(SeriesRows::bytes).sum::<usize>()
     }
 }
 
@@ -315,11 +253,7 @@ impl Accumulator for FitAccumulator {
     fn evaluate(&mut self) -> Result<ScalarValue> {
         self.groups.grow(1);
         // Asked again (by a window over a growing frame), the rows must still be there.
-        let rows = self.groups.groups.first().map(|rows| GroupRows {
-            times: rows.times.clone(),
-            observed: rows.observed.clone(),
-            drivers: rows.drivers.clone(),
-        });
+        let rows = self.groups.groups.first().cloned();
         let mut fits = FitBuilder::new(self.groups.inputs.time.clone());
         let fit = self.groups.fit(&rows.unwrap_or_default())?;
         fits.push(fit);

@@ -13,11 +13,10 @@ use datafusion::logical_expr::{
 
 use super::accumulator::{FitAccumulator, FitGroups, state_fields};
 use crate::columns::fit_value::fit_type;
-use crate::columns::time::TimeKind;
-use crate::columns::{driver_struct, numbers};
 use crate::sql::arguments::options::{OptionSet, constant};
 use crate::sql::arguments::settings::Settings;
-use crate::sql::error::{Caller, bad_argument, bad_call, counted};
+use crate::sql::error::{Caller, bad_call, counted};
+use crate::sql::series_inputs::{NAMES, SeriesInputs};
 use crate::sql::watch::Watch;
 
 pub(super) const NAME: &str = "structural_fit";
@@ -34,47 +33,19 @@ pub(crate) struct StructuralFit {
 impl StructuralFit {
     pub(crate) fn new(watch: Watch) -> Self {
         let mut signature = Signature::user_defined(Volatility::Immutable);
-        signature.parameter_names =
-            Some(["at", "observed", "options", "drivers"].map(str::to_string).to_vec());
+        signature.parameter_names = Some(NAMES.map(str::to_string).to_vec());
         Self { signature, watch }
     }
 }
 
-/// What the types of the arguments say.
-#[derive(Debug, Clone)]
-pub(super) struct Inputs {
-    pub(super) time: TimeKind,
-    /// Names of the drivers, in the order of their struct.
-    pub(super) drivers: Vec<String>,
-}
-
-impl Inputs {
-    /// # Errors
-    /// Types that an argument does not take, options that are none.
-    fn of<'a>(types: impl IntoIterator<Item = &'a DataType>) -> Result<Self> {
-        let types = types.into_iter().collect::<Vec<_>>();
-        let data_type = |at: usize| types.get(at).copied().unwrap_or(&DataType::Null);
-        let caller = Caller::Expression(NAME);
-        let time =
-            TimeKind::try_new(data_type(0)).map_err(|error| bad_argument(caller, "at", error.to_string()))?;
-        if !numbers::is_number(data_type(1)) {
-            let what = format!("takes {}, but has type {}", numbers::OBSERVED_TYPES, data_type(1));
-            return Err(bad_argument(caller, "observed", what));
-        }
-        OPTIONS.check_type(data_type(2))?;
-        let drivers =
-            driver_struct::names(data_type(3)).map_err(|what| bad_argument(caller, "drivers", what))?;
-        Ok(Self { time, drivers })
-    }
-}
-
 /// Inputs and settings of one call.
-fn read(args: &AccumulatorArgs<'_>) -> Result<(Inputs, Settings)> {
+fn read(args: &AccumulatorArgs<'_>) -> Result<(SeriesInputs, Settings)> {
     if args.ignore_nulls {
         let what = "does not take IGNORE NULLS; a row whose observed is NULL is a missing observation anyway";
         return Err(bad_call(Caller::Expression(NAME), what));
     }
-    let inputs = Inputs::of(args.expr_fields.iter().map(|field| field.data_type()))?;
+    let types = args.expr_fields.iter().map(|field| field.data_type().clone()).collect::<Vec<_>>();
+    let inputs = SeriesInputs::of(OPTIONS, &types)?;
     let options = match args.exprs.get(2) {
         Some(expr) => constant(NAME, "options", expr)?,
         None => ScalarValue::Null,
@@ -99,11 +70,12 @@ impl AggregateUDFImpl for StructuralFit {
 
     fn return_type(&self, types: &[DataType]) -> Result<DataType> {
         counted(NAME, WRITTEN, 2..=4, types.len())?;
-        Ok(fit_type(Inputs::of(types)?.time.data_type()))
+        Ok(fit_type(SeriesInputs::of(OPTIONS, types)?.time.data_type()))
     }
 
     fn state_fields(&self, args: StateFieldsArgs<'_>) -> Result<Vec<FieldRef>> {
-        let inputs = Inputs::of(args.input_fields.iter().map(|field| field.data_type()))?;
+        let types = args.input_fields.iter().map(|field| field.data_type().clone()).collect::<Vec<_>>();
+        let inputs = SeriesInputs::of(OPTIONS, &types)?;
         Ok(state_fields(args.name, inputs.drivers.len()))
     }
 

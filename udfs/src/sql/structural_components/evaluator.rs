@@ -7,17 +7,17 @@ use datafusion::arrow::array::{
 };
 use datafusion::arrow::compute::take;
 use datafusion::arrow::datatypes::DataType;
-use datafusion::error::{DataFusionError, Result};
+use datafusion::error::Result;
 use datafusion::logical_expr::PartitionEvaluator;
 use stillwell_statespace::{Components, Trouble, Workspace};
 
 use super::{Inputs, NAME};
-use crate::columns::groups::{Group, Groups, Rows};
+use crate::columns::components_rows;
+use crate::columns::groups::Group;
 use crate::columns::result::ResultRows;
 use crate::columns::series::{Placed, place};
-use crate::columns::{components_rows, driver_struct, numbers};
 use crate::sql::arguments::settings::Settings;
-use crate::sql::error::{Caller, bad_argument, failed_series};
+use crate::sql::error::{Caller, failed_series};
 use crate::sql::fitting::{fitted, message};
 use crate::sql::watch::Watch;
 
@@ -48,39 +48,10 @@ impl Evaluator {
         self.settings.request.drivers.iter().chain(&self.settings.request.drifting_drivers).collect()
     }
 
-    /// The rows in order of time, NULLs last, and where each of them stood.
-    fn sorted(&self, values: &[ArrayRef]) -> Result<(Option<Group>, Vec<usize>)> {
-        let argument = |at: usize| {
-            values
-                .get(at)
-                .ok_or_else(|| DataFusionError::Internal(format!("{NAME}: argument {at} is missing")))
-        };
-        let times = self.inputs.time.read(argument(0)?);
-        let times = times.map_err(|error| bad_argument(Caller::Expression(NAME), "at", error.to_string()))?;
-        let observed = numbers::to_f64(argument(1)?)?;
-        let drivers = match values.get(3) {
-            Some(drivers) => driver_struct::values(drivers, self.drivers())?,
-            None => Vec::new(),
-        };
-        let mut order = (0..times.len()).collect::<Vec<_>>();
-        order.sort_by_key(|&row| times.get(row).copied().flatten().map_or((true, 0), |time| (false, time)));
-        let pick = |values: &[f64]| order.iter().filter_map(|&row| values.get(row)).copied().collect();
-        let rows = Rows {
-            keys: Vec::new(),
-            times: order.iter().filter_map(|&row| times.get(row)).copied().collect(),
-            observed: pick(&observed),
-            drivers: drivers.iter().map(|values| pick(values)).collect(),
-        };
-        let mut groups = Groups::try_new(&[])?;
-        groups.push(rows)?;
-        groups.close();
-        Ok((groups.pop(), order))
-    }
-
     /// Fits the series.
     fn answers(&self, group: &Group, order: &[usize]) -> Result<Answers> {
         let settings = &self.settings;
-        let placed = place(group, &self.inputs.time, settings.every, settings.request.drivers.len());
+        let placed = place(group, &self.inputs.series.time, settings.every, settings.request.drivers.len());
         let solved = match &placed {
             Ok(placed) => {
                 fitted(placed, settings, &mut Workspace::new(), |fit| fit.components(settings.coverage))
@@ -117,11 +88,16 @@ impl Evaluator {
     ) -> Result<Answers> {
         if self.settings.fail {
             let caller = Caller::Expression(NAME);
-            return Err(failed_series(caller, &self.describe(group), trouble, &message(trouble, placed)));
+            return Err(failed_series(
+                caller,
+                &self.inputs.series.describe(group),
+                trouble,
+                &message(trouble, placed),
+            ));
         }
         let sentence = message(trouble, placed);
         let wrong = (trouble.status(), sentence.as_str());
-        self.watch.record(NAME, group.len(), Some(wrong), || self.describe(group));
+        self.watch.record(NAME, group.len(), Some(wrong), || self.inputs.series.describe(group));
         let mut rows = self.rows();
         components_rows::write_trouble(&mut rows, group, trouble);
         let of_row = in_row_order(order, (0..group.len()).map(Some));
@@ -129,18 +105,7 @@ impl Evaluator {
     }
 
     fn rows(&self) -> ResultRows {
-        ResultRows::new(Arc::clone(&self.inputs.result), self.inputs.time.clone())
-    }
-
-    /// The series in words; a window function is not told the key of its partition.
-    fn describe(&self, group: &Group) -> String {
-        let format = |time: &i64| self.inputs.time.axis().format(*time);
-        let mut times = group.times.iter().flatten();
-        match (times.next().map(format), times.next_back().map(format)) {
-            (Some(first), Some(last)) => format!("of {} rows from {first} to {last}", group.len()),
-            (Some(only), None) => format!("of {} rows at {only}", group.len()),
-            (None, _) => String::new(),
-        }
+        ResultRows::new(Arc::clone(&self.inputs.result), self.inputs.series.time.clone())
     }
 }
 
@@ -158,7 +123,7 @@ fn in_row_order(order: &[usize], sorted: impl Iterator<Item = Option<usize>>) ->
 impl PartitionEvaluator for Evaluator {
     fn evaluate_all(&mut self, values: &[ArrayRef], num_rows: usize) -> Result<ArrayRef> {
         let fields = self.inputs.result.schema().fields();
-        let (Some(group), order) = self.sorted(values)? else {
+        let (Some(group), order) = self.inputs.series.read(values, self.drivers())?.sorted(false)? else {
             return Ok(new_empty_array(&DataType::Struct(fields.clone())));
         };
         let Answers { rows, of_row, status } = self.answers(&group, &order)?;
