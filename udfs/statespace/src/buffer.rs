@@ -1,7 +1,8 @@
 //! Buffers that are reused from series to series.
 
 /// Makes `buffer` hold `len` zeros; allocates only when it has never been that long.
-pub(crate) fn refill(buffer: &mut Vec<f64>, len: usize) {
+#[inline(always)]
+pub(crate) fn refill<T: Copy + Default>(buffer: &mut Vec<T>, len: usize) {
     buffer.clear();
-    buffer.resize(len, 0.0);
+    buffer.resize(len, T::default());
 }

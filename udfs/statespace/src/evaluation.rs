@@ -1,14 +1,14 @@
 //! A model at given parameter values, run over one series: likelihood, smoothed functions of the states, one-step
 //! errors and forecasts, all on the scale of the series as handed in.
 
-use crate::filter::{self, Data, FilterError, Keep, Pass};
+use crate::filter::{End, FilterError, Keep};
 use crate::forecast::{self, Step};
-use crate::information::Information;
+use crate::instructions::Instructions;
+use crate::kernel::{Buffers, Kernel, Width};
 use crate::one_step::{self, OneStep};
 use crate::request::Series;
 use crate::results::State;
-use crate::score::Score;
-use crate::smoother::{self, Functional, Smoothed};
+use crate::smoother::{Functional, Smoothed, Smoothing};
 use crate::structure::{Model, Role};
 use crate::system::System;
 
@@ -53,9 +53,13 @@ impl From<FilterError> for EvaluationError {
 pub struct Evaluation {
     model: Model,
     system: System,
-    pass: Pass,
     series: Series,
+    log_likelihood: f64,
+    observed: usize,
     one_step: OneStep,
+    end: End,
+    /// What has been smoothed already.
+    smoothed: Option<(Vec<Functional>, Smoothing)>,
 }
 
 impl Evaluation {
@@ -74,34 +78,46 @@ impl Evaluation {
     /// # Errors
     /// As [`Self::new`].
     pub fn with_system(model: Model, system: System, series: Series) -> Result<Self, EvaluationError> {
-        let mut pass = Pass::default();
-        filter::run(&system, data_of(&series), Keep::Everything, &mut pass)?;
-        let mut one_step = one_step::errors(&pass);
-        pass.whiten_rows();
-        // Prove the way back now, so that everything asked later can rely on it.
-        if smoother::run(&system, data_of(&series), &pass, &[], None).is_err() {
-            pass.keep_open = true;
-            filter::run(&system, data_of(&series), Keep::Everything, &mut pass)?;
-            one_step = one_step::errors(&pass);
-            pass.whiten_rows();
-        }
-        Ok(Self { model, system, pass, series, one_step })
+        let mut kernel = kernel_of(&model, &system, &series);
+        kernel.filter(Keep::Ends, Instructions::Baseline);
+        Self::of_lane(&kernel, 0, model, system, series)
+    }
+
+    /// What the pass of a lane found, before its rows are whitened. The pass must have kept its ends.
+    pub(crate) fn of_lane<V: Width>(
+        kernel: &Kernel<V>,
+        lane: usize,
+        model: Model,
+        system: System,
+        series: Series,
+    ) -> Result<Self, EvaluationError> {
+        let pass = &kernel.buffers.pass;
+        Ok(Self {
+            model,
+            system,
+            series,
+            log_likelihood: pass.reached(lane)?,
+            observed: pass.observed[lane],
+            one_step: one_step::errors(pass, lane),
+            end: pass.end(lane),
+            smoothed: None,
+        })
     }
 
     /// Diffuse log-likelihood with `-(n - d)/2 log 2 pi`: n observed points, d diffuse elements, identity on them in
     /// the state basis.
     pub fn log_likelihood(&self) -> f64 {
-        self.pass.log_likelihood
+        self.log_likelihood
     }
 
     /// Diffuse elements d.
     pub fn diffuse_elements(&self) -> usize {
-        self.pass.elements
+        self.model.diffuse_elements()
     }
 
     /// Observed points.
     pub fn observed(&self) -> usize {
-        self.pass.observed
+        self.observed
     }
 
     /// Standardised one-step errors.
@@ -111,14 +127,9 @@ impl Evaluation {
 
     /// Score and average information at these values, natural units: gradient (p) and matrix (p x p row-major).
     pub fn score_and_information(&self) -> (Vec<f64>, Vec<f64>) {
-        let data = data_of(&self.series);
-        let (mut score, mut information) = (Score::default(), Information::default());
-        // The pass was proved when it was made: there is a way back.
-        if score.compute(&self.model, &self.system, data, &self.pass).is_err() {
-            return (Vec::new(), Vec::new());
-        }
-        information.compute(&self.model, &self.system, data, &self.pass, &score.paths);
-        (score.gradient, information.matrix)
+        let mut kernel = kernel_of(&self.model, &self.system, &self.series);
+        kernel.score(Instructions::Baseline);
+        (kernel.buffers.score.gradient.clone(), kernel.buffers.information.matrix.clone())
     }
 
     /// Smoothed sum of the loads of one component (mean and standard error along the grid).
@@ -141,11 +152,9 @@ impl Evaluation {
 
     /// Coefficient of a constant driver and its standard error.
     pub fn coefficient(&self, driver: usize) -> (f64, f64) {
-        let n = self.pass.n;
-        let mut columns = vec![0.0; self.pass.width(n)];
-        columns[self.pass.driver_column(driver, self.series.drivers.len())] = 1.0;
-        self.pass.whiten(n, &mut columns);
-        (columns[0], columns[1..].iter().map(|v| v * v).sum::<f64>().sqrt())
+        let width = self.end.width;
+        let row = &self.end.coefficients[driver * width..(driver + 1) * width];
+        (row[0], row[1..].iter().map(|v| v * v).sum::<f64>().sqrt())
     }
 
     /// Forecast of `h` steps: mean of the observation, variance of the observation, variance of the signal. The series must
@@ -156,9 +165,25 @@ impl Evaluation {
         (path.signal.mean, variance, path.signal.variance)
     }
 
-    pub(crate) fn smooth(&self, functionals: &[Functional]) -> smoother::Smoothing {
-        let level = self.model.state_specs().iter().position(|s| s.role == Role::Level);
-        smoother::run(&self.system, data_of(&self.series), &self.pass, functionals, level).unwrap_or_default()
+    pub(crate) fn smooth(&self, functionals: &[Functional]) -> Smoothing {
+        if let Some((smoothed, smoothing)) = &self.smoothed
+            && smoothed == functionals
+        {
+            return smoothing.clone();
+        }
+        let mut kernel = kernel_of(&self.model, &self.system, &self.series);
+        kernel.smooth(functionals, self.level(), Instructions::Baseline, |_| {});
+        kernel.buffers.smoother.lane(0, self.series.observed.len())
+    }
+
+    /// Keeps a smoothing for [`Self::smooth`].
+    pub(crate) fn remember(&mut self, functionals: &[Functional], smoothing: Smoothing) {
+        self.smoothed = Some((functionals.to_vec(), smoothing));
+    }
+
+    /// The state whose shifts are looked for.
+    pub(crate) fn level(&self) -> Option<usize> {
+        self.model.state_specs().iter().position(|s| s.role == Role::Level)
     }
 
     pub(crate) fn ahead(
@@ -167,11 +192,18 @@ impl Evaluation {
         functionals: &[Functional],
         joint: Option<&mut dyn FnMut(Step<'_>)>,
     ) -> forecast::Path {
-        forecast::run(&self.system, data_of(&self.series), &self.pass, h, functionals, joint)
+        let from = forecast::From {
+            system: &self.system,
+            end: &self.end,
+            drivers: &self.series.drivers,
+            drifting: &self.series.drifting_drivers,
+            first: self.series.observed.len(),
+        };
+        forecast::run(from, h, functionals, joint)
     }
 
-    pub(crate) fn pass(&self) -> &Pass {
-        &self.pass
+    pub(crate) fn end(&self) -> &End {
+        &self.end
     }
 
     pub(crate) fn model(&self) -> &Model {
@@ -217,8 +249,11 @@ impl Evaluation {
     }
 }
 
-pub(crate) fn data_of(series: &Series) -> Data<'_> {
-    Data { observed: &series.observed, drivers: &series.drivers, drifting: &series.drifting_drivers }
+/// One series in a kernel of one lane.
+fn kernel_of(model: &Model, system: &System, series: &Series) -> Kernel<f64> {
+    let mut kernel = Kernel::new(model, system, series.drifting_drivers.len(), Buffers::default());
+    kernel.data.load(0, series);
+    kernel
 }
 
 impl From<Smoothed> for State {

@@ -1,42 +1,29 @@
-//! The augmented Kalman filter: one pass forward through a series.
+//! The augmented Kalman filter: one pass forward through a series, or through several side by side.
 //!
 //! The `d` diffuse elements (non-stationary start values and constant driver coefficients) are treated as
 //! regression coefficients: Rosenberg (1973), *Annals of Economic and Social Measurement* 2; de Jong (1991),
 //! *Annals of Statistics* 19, 1073-1083; DK 5.7. The ordinary filter runs on `d + 1` columns, the data and the response
 //! to each element, and the rows are reduced orthogonally ([`crate::reduction`]). The covariance starts at
-//! a multiple of I on the diffuse states ([`System::start_scale`]), which changes nothing in the results but
+//! a multiple of I on the diffuse states ([`crate::System::start_scale`]), which changes nothing in the results but
 //! keeps `F` positive when the irregular variance is zero and lets `P` settle within a few steps. Once the rows determine the
 //! diffuse states, `collapse` takes their columns out.
+//!
+//! **Missing points** have weight zero: gain and inverse of `F` are zero there, and every formula goes on as it stands.
+//!
+//! **Settled.** When no element of `P` has moved by more than rounding, relative to the variances beside it, it is frozen and with it
+//! `F` and the gain (DK 4.3.4), until a gap. A lane freezes on its own and does not wait for, or depend on, its neighbours; the work is
+//! saved once all lanes are frozen.
 
 mod collapse;
+mod end;
+mod pass;
 
-use crate::buffer::refill;
-use crate::reduction::Reduction;
-use crate::system::System;
+pub(crate) use end::End;
+pub(crate) use pass::{Keep, Pass};
 
-/// One series on the model scale, as the filter reads it.
-#[derive(Debug, Clone, Copy)]
-pub(crate) struct Data<'a> {
-    /// Observations, NaN = missing, length n.
-    pub(crate) observed: &'a [f64],
-    /// Constant-coefficient drivers, each at least n long.
-    pub(crate) drivers: &'a [Vec<f64>],
-    /// Drivers that load on states, each at least n long.
-    pub(crate) drifting: &'a [Vec<f64>],
-}
-
-/// How much of the pass is kept.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd)]
-pub(crate) enum Keep {
-    /// Nothing: the likelihood only.
-    Likelihood,
-    /// Gains and innovations: what the score needs.
-    Gains,
-    /// Also the predicted covariance of each step.
-    Covariances,
-    /// Also the predicted columns: what state smoothing needs.
-    Everything,
-}
+use crate::data::Data;
+use crate::dynamics::{Dynamics, add_column, packed_at};
+use crate::lanes::{Mask, Real};
 
 /// Why a likelihood could not be evaluated.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -47,273 +34,200 @@ pub(crate) enum FilterError {
     NotPositive(usize),
 }
 
-/// Buffers and results of one pass; reused from pass to pass without allocation.
-#[derive(Debug, Clone, Default)]
-pub(crate) struct Pass {
-    pub(crate) n: usize,
-    pub(crate) m: usize,
-    /// Diffuse elements d.
-    pub(crate) elements: usize,
-    /// First point whose columns no longer hold the diffuse states; n + 1 when they were never taken in.
-    pub(crate) collapsed_at: usize,
-    /// `m x (diffuse states)`: what each unit of their posterior moves in the predicted state at that point.
-    pub(crate) bridge: Vec<f64>,
-    /// Set when a series turned out too nearly singular for it: columns then stay open.
-    pub(crate) keep_open: bool,
-    /// Observed points.
-    pub(crate) observed: usize,
-    pub(crate) log_likelihood: f64,
-    /// Innovation variance per point; NaN where missing.
-    pub(crate) f: Vec<f64>,
-    /// `n x (d + 1)`: the innovation's data path and its response to each element still open. Where the point is missing,
-    /// the same with zero in place of the observation.
-    pub(crate) rows: Vec<f64>,
-    /// `n x m`: `P_t Z' / F_t`.
-    pub(crate) gains: Vec<f64>,
-    /// `n x m x m` predicted covariances (from [`Keep::Covariances`]).
-    pub(crate) covariances: Vec<f64>,
-    /// `n x m x (d + 1)` predicted columns ([`Keep::Everything`]); at each point, `m` rows of [`Pass::width`].
-    pub(crate) columns: Vec<f64>,
-    /// Columns after the last point: prediction of n + 1.
-    pub(crate) a: Vec<f64>,
-    /// Covariance after the last point: prediction of n + 1.
-    pub(crate) p: Vec<f64>,
-    pub(crate) reduction: Reduction,
-    pz: Vec<f64>,
-    row: Vec<f64>,
-    before: Vec<f64>,
-}
-
 /// Relative change of `P` below which it counts as settled.
 const SETTLED: f64 = 4.0 * f64::EPSILON;
 
-/// Runs the filter over `data`.
+/// Runs the filter over `data`; what each lane reached, or why it did not, stands in `pass`.
 ///
 /// The log-likelihood is the diffuse one with `-(n - d)/2 log 2 pi`, n = observed points, d = diffuse elements
 /// with identity on them in the state basis:
 /// `l = -1/2 [(n - d) log 2 pi + sum log F_t + 2 sum log |R_ii| + rss]`.
-pub(crate) fn run(system: &System, data: Data<'_>, keep: Keep, pass: &mut Pass) -> Result<(), FilterError> {
-    run_from(system, data, Start::Scale(system.start_scale()), keep, pass)
+#[inline(always)]
+pub(crate) fn run<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, keep: Keep, pass: &mut Pass<V>) {
+    run_from(dynamics, data, Start::Scale(dynamics.start_scale), keep, pass);
 }
 
-/// [`run`] from a state that is known up to its covariance: the prediction `a` of the first point and its covariance `p`. Nothing is diffuse then:
-/// the system must have no diffuse states and the data no constant drivers.
-pub(crate) fn resume(
-    system: &System,
-    data: Data<'_>,
-    (a, p): (&[f64], &[f64]),
+/// [`run`] from a state that is known up to its covariance: the prediction `a` of the first point and its packed covariance `p`. Nothing is
+/// diffuse then: the system must have no diffuse states and the data no constant drivers.
+pub(crate) fn resume<V: Real>(
+    dynamics: &Dynamics<V>,
+    data: &Data<V>,
+    (a, p): (&[V], &[V]),
     keep: Keep,
-    pass: &mut Pass,
-) -> Result<(), FilterError> {
-    run_from(system, data, Start::At(a, p), keep, pass)
+    pass: &mut Pass<V>,
+) {
+    run_from(dynamics, data, Start::At(a, p), keep, pass);
 }
 
 /// What the filter starts from.
 #[derive(Debug, Clone, Copy)]
-enum Start<'a> {
+pub(crate) enum Start<'a, V> {
     /// The start of the system, with this variance on its diffuse states. Any changes nothing but rounding.
-    Scale(f64),
+    Scale(V),
     /// A prediction and its covariance.
-    At(&'a [f64], &'a [f64]),
+    At(&'a [V], &'a [V]),
 }
 
 /// [`run`] and [`resume`].
-fn run_from(
-    system: &System,
-    data: Data<'_>,
-    start: Start<'_>,
+#[inline(always)]
+pub(crate) fn run_from<V: Real>(
+    dynamics: &Dynamics<V>,
+    data: &Data<V>,
+    start: Start<'_, V>,
     keep: Keep,
-    pass: &mut Pass,
-) -> Result<(), FilterError> {
-    let (n, m) = (data.observed.len(), system.states);
-    let d = system.diffuse.len() + data.drivers.len();
-    let stride = d + 1;
-    let mut width = stride;
-    pass.prepare(n, m, d, keep);
+    pass: &mut Pass<V>,
+) {
+    pass.prepare(dynamics, data, keep);
     match start {
-        Start::Scale(scale) => system.start_covariance(scale, &mut pass.p),
+        Start::Scale(scale) => dynamics.start_covariance(scale, &mut pass.p),
         Start::At(a, p) => {
-            debug_assert_eq!(d, 0);
+            debug_assert_eq!(pass.elements, 0);
             pass.a.copy_from_slice(a);
             pass.p.copy_from_slice(p);
         }
     }
-    for (j, &state) in system.diffuse.iter().enumerate() {
-        pass.a[state * width + 1 + j] = 1.0;
+    let mut width = pass.elements + 1;
+    for (j, &state) in dynamics.diffuse.iter().enumerate() {
+        pass.a[state * width + 1 + j] = V::splat(1.0);
     }
-    let steady_possible = system.driver_loads.is_empty();
-    let mut settled = false;
+    let may_settle = dynamics.driver_loads.is_empty();
+    let mut settled = Mask::NONE;
+    // Lanes whose F of the step before may be compared with.
+    let mut comparable = Mask::NONE;
+    let (mut f, mut previous_f) = (V::splat(1.0), V::zero());
+    let (mut inverse, mut weight) = (V::zero(), V::zero());
     // log F is summed as the log of a product that is kept in range: one logarithm per several points.
-    let (mut log_f, mut product) = (0.0, 1.0_f64);
-    let mut previous_f = f64::NAN;
-    for t in 0..n {
-        let y = data.observed[t];
-        let Pass { a, p, pz, row, before, .. } = pass;
-        row.truncate(width);
-        row.fill(0.0);
-        system.for_loads(data.drifting, t, |state, load| {
-            for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
-                *r -= load * v;
+    let (mut log_f, mut product) = (V::zero(), V::splat(1.0));
+    for t in 0..pass.n {
+        let alive = data.alive(t);
+        let seen = data.seen[t];
+        settled &= seen | !alive;
+        let steady = may_settle && (settled | !alive).is_all::<V>();
+        innovation(dynamics, data, t, width, pass);
+        if !steady {
+            predicted_variance(dynamics, data, t, pass);
+            f = dynamics.h;
+            dynamics.for_loads(&data.drifting, t, |state, load| f += load * pass.pz[state]);
+            let sound = f.above(V::zero()) & V::splat(f64::MAX).above(f);
+            if !(sound | !seen).is_all::<V>() {
+                pass.fail(seen & !sound, FilterError::NotPositive(t));
             }
-        });
-        let missing = y.is_nan();
-        if !missing {
-            row[0] += y;
+            inverse = V::splat(1.0) / f;
+            if !seen.is_all::<V>() {
+                inverse = V::select(seen, inverse, V::zero());
+            }
+            weight = inverse.sqrt();
+            for (gain, pz) in pass.gain.iter_mut().zip(&pass.pz) {
+                *gain = *pz * inverse;
+            }
+            pass.keep_covariance(keep);
         }
-        for (k, x) in data.drivers.iter().enumerate() {
-            row[width - data.drivers.len() + k] -= x[t];
-        }
-        let f = if settled && !missing {
-            previous_f
+        let (f_here, inverse_here, weight_here) = if seen.is_all::<V>() {
+            (f, inverse, weight)
         } else {
-            pz.fill(0.0);
-            system.for_loads(data.drifting, t, |state, load| {
-                for (r, v) in pz.iter_mut().zip(&p[state * m..(state + 1) * m]) {
-                    *r += load * v;
-                }
-            });
-            let mut f = system.h;
-            system.for_loads(data.drifting, t, |state, load| f += load * pz[state]);
-            f
+            (
+                V::select(seen, f, V::splat(1.0)),
+                V::select(seen, inverse, V::zero()),
+                V::select(seen, weight, V::zero()),
+            )
         };
-        if keep >= Keep::Covariances {
-            pass.covariances[t * m * m..(t + 1) * m * m].copy_from_slice(p);
+        product *= f_here;
+        let beyond = product.above(V::splat(1e100)) | V::splat(1e-100).above(product);
+        if !beyond.is_none() {
+            log_f += V::select(beyond, product.in_lanes(beyond, f64::ln), V::zero());
+            product = V::select(beyond, V::splat(1.0), product);
         }
-        if keep == Keep::Everything {
-            pass.columns[t * m * stride..][..m * width].copy_from_slice(&a[..m * width]);
-        }
-        if missing {
-            if keep >= Keep::Gains {
-                pass.f[t] = f64::NAN;
-                pass.rows[t * stride..][..width].copy_from_slice(row);
-                pass.gains[t * m..(t + 1) * m].fill(0.0);
-            }
-            settled = false;
-        } else {
-            if !(f > 0.0 && f.is_finite()) {
-                return Err(FilterError::NotPositive(t));
-            }
-            pass.observed += 1;
-            product *= f;
-            if !(1e-100..1e100).contains(&product) {
-                log_f += product.ln();
-                product = 1.0;
-            }
-            let inverse = 1.0 / f;
-            for (state, &g) in pz.iter().enumerate() {
-                if g != 0.0 {
-                    let gain = g * inverse;
-                    for (v, r) in a[state * width..(state + 1) * width].iter_mut().zip(row.iter()) {
-                        *v += gain * r;
-                    }
-                }
-            }
-            pass.reduction.push(row, inverse.sqrt());
-            if keep >= Keep::Gains {
-                pass.f[t] = f;
-                pass.rows[t * stride..][..width].copy_from_slice(row);
-                for (k, g) in pass.gains[t * m..(t + 1) * m].iter_mut().zip(pz.iter()) {
-                    *k = g * inverse;
-                }
-            }
-            if !settled {
-                if steady_possible {
-                    before.copy_from_slice(p);
-                }
-                for (state, &g) in pz.iter().enumerate() {
-                    let gain = g * inverse;
-                    for (v, r) in p[state * m..(state + 1) * m].iter_mut().zip(pz.iter()) {
-                        *v -= gain * r;
-                    }
-                }
+        pass.keep_point(t, width, keep, (f, inverse_here, settled & seen));
+        if keep >= Keep::Ends {
+            let ending = alive & !data.alive(t + 1);
+            if !ending.is_none() {
+                pass.keep_ends(ending, width, f_here);
             }
         }
-        system.forward(&mut a[..m * width], width);
-        if !settled {
-            system.propagate(p);
-            system.disturb(p);
-            if steady_possible && !missing && (f - previous_f).abs() <= SETTLED * f {
-                settled = unchanged(before, p, m);
+        let Pass { a, row, gain, .. } = &mut *pass;
+        for (gain, columns) in gain.iter().zip(a.chunks_exact_mut(width)) {
+            for (v, r) in columns.iter_mut().zip(row.iter()) {
+                *v += *gain * *r;
             }
         }
-        previous_f = if missing { f64::NAN } else { f };
-        let states = system.diffuse.len();
-        if !missing && width == stride && pass.may_collapse(t, states) {
-            width = stride - states;
-            pass.collapse(t + 1, states);
-            (settled, previous_f) = (false, f64::NAN);
+        pass.reduction.push(&pass.row[..width], weight_here);
+        dynamics.forward(&mut pass.a[..pass.m * width], width, &mut pass.spare);
+        if !steady {
+            let Pass { p, next, gain, pz, spare, m, .. } = &mut *pass;
+            dynamics.predict(p, gain, pz, next, spare);
+            if may_settle {
+                let close = seen & comparable & !(f - previous_f).abs().above(f.times(SETTLED)) & !settled;
+                if !close.is_none() {
+                    settled |= unchanged(p, next, *m, close);
+                }
+            }
+            pass.freeze(settled, alive);
+            previous_f = f;
+            comparable = seen;
+        }
+        if pass.reduction.at_block_end() {
+            let ready = pass.may_collapse(t, data);
+            if !ready.is_none() {
+                settled &= !ready;
+                comparable &= !ready;
+                if pass.collapse(t + 1, ready) {
+                    width = 1 + pass.elements - pass.states;
+                }
+            }
         }
     }
-    log_f += product.ln();
-    pass.reduction.finish().map_err(FilterError::Undetermined)?;
-    let free = pass.observed as f64 - d as f64;
-    pass.log_likelihood = -0.5
-        * (free * std::f64::consts::TAU.ln()
-            + log_f
-            + 2.0 * pass.reduction.log_diagonal()
-            + pass.reduction.rss());
-    if pass.log_likelihood.is_finite() { Ok(()) } else { Err(FilterError::NotPositive(n)) }
+    log_f += product.in_lanes(Mask::all::<V>(), f64::ln);
+    pass.finish(log_f);
 }
 
-/// True when no element of `P` moved by more than rounding, relative to the variances beside it.
-fn unchanged(before: &[f64], after: &[f64], m: usize) -> bool {
-    (0..m).all(|i| {
-        (0..=i).all(|j| {
-            let size = (after[i * m + i] * after[j * m + j]).sqrt();
-            (after[i * m + j] - before[i * m + j]).abs() <= SETTLED * size
-        })
-    })
+/// Writes the innovation's data path and its response to the elements into `pass.row`.
+#[inline(always)]
+fn innovation<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, t: usize, width: usize, pass: &mut Pass<V>) {
+    let Pass { a, row, .. } = pass;
+    let row = &mut row[..width];
+    row.fill(V::zero());
+    row[0] = data.observed[t];
+    for &(state, load) in &dynamics.fixed_loads {
+        for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
+            *r -= v.times(load);
+        }
+    }
+    for &(state, driver) in &dynamics.driver_loads {
+        let load = data.drifting[driver][t];
+        for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
+            *r -= load * *v;
+        }
+    }
+    let first = width - data.drivers.len();
+    for (r, x) in row[first..].iter_mut().zip(&data.drivers) {
+        *r -= x[t];
+    }
 }
 
-impl Pass {
-    /// Width of the row and of the columns at `t`: the data and the elements still open.
-    #[inline]
-    pub(crate) fn width(&self, t: usize) -> usize {
-        1 + self.elements - if t >= self.collapsed_at { self.reduction.eliminated() } else { 0 }
-    }
+/// Writes `P Z'` into `pass.pz`.
+#[inline(always)]
+fn predicted_variance<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, t: usize, pass: &mut Pass<V>) {
+    let Pass { p, pz, .. } = pass;
+    pz.fill(V::zero());
+    dynamics.for_loads(&data.drifting, t, |state, load| add_column(p, state, load, pz));
+}
 
-    /// The kept row at `t`.
-    #[inline]
-    pub(crate) fn row(&self, t: usize) -> &[f64] {
-        &self.rows[t * (self.elements + 1)..][..self.width(t)]
-    }
-
-    /// The predicted columns of one state at `t`.
-    #[inline]
-    pub(crate) fn state_columns(&self, t: usize, state: usize) -> &[f64] {
-        let width = self.width(t);
-        &self.columns[t * self.m * (self.elements + 1) + state * width..][..width]
-    }
-
-    /// Position of a constant driver's column after the last point.
-    pub(crate) fn driver_column(&self, driver: usize, drivers: usize) -> usize {
-        self.width(self.n) - drivers + driver
-    }
-
-    fn prepare(&mut self, n: usize, m: usize, d: usize, keep: Keep) {
-        let width = d + 1;
-        (self.n, self.m, self.elements, self.observed) = (n, m, d, 0);
-        self.collapsed_at = n + 1;
-        refill(&mut self.a, m * width);
-        refill(&mut self.p, m * m);
-        refill(&mut self.pz, m);
-        refill(&mut self.row, width);
-        refill(&mut self.before, m * m);
-        refill(&mut self.bridge, m * d);
-        // The kept steps are overwritten in full by the pass: only their length matters.
-        if keep >= Keep::Gains {
-            self.f.resize(n, 0.0);
-            self.rows.resize(n * width, 0.0);
-            self.gains.resize(n * m, 0.0);
+/// Lanes of `among` in which no element of a packed covariance moved by more than rounding, relative to the variances beside it.
+#[inline(always)]
+pub(crate) fn unchanged<V: Real>(before: &[V], after: &[V], m: usize, among: Mask) -> Mask {
+    let tolerance = V::splat(SETTLED * SETTLED);
+    let mut same = among;
+    for i in 0..m {
+        for j in 0..=i {
+            let moved = after[packed_at(i, j)] - before[packed_at(i, j)];
+            let size = (after[packed_at(i, i)] * after[packed_at(j, j)]).abs();
+            same &= !(moved * moved).above(tolerance * size);
         }
-        if keep >= Keep::Covariances {
-            self.covariances.resize(n * m * m, 0.0);
+        if same.is_none() {
+            return same;
         }
-        if keep == Keep::Everything {
-            self.columns.resize(n * m * width, 0.0);
-        }
-        self.reduction.reset(d);
     }
+    same
 }
 
 #[cfg(test)]

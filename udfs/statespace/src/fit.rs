@@ -4,7 +4,7 @@ use crate::box_cox;
 use crate::choose::{self, Choice};
 use crate::error::Trouble;
 use crate::estimate::{self, Estimate};
-use crate::evaluation::{Evaluation, EvaluationError, data_of};
+use crate::evaluation::{Evaluation, EvaluationError};
 use crate::objective::{Objective, Workspace};
 use crate::request::{Request, Series};
 use crate::residual_checks as checks;
@@ -89,7 +89,7 @@ pub(crate) fn fit_as(
     {
         return Err(Trouble::ExactFit);
     }
-    let mut objective = Objective::new(model.clone(), data_of(&working), workspace);
+    let mut objective = Objective::new(model.clone(), &working, workspace);
     let trouble = |error| trouble_of(error, &model, request);
     let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
     let evaluation = Evaluation::new(model.clone(), &estimate.values, working).map_err(trouble)?;

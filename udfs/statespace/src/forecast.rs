@@ -3,7 +3,7 @@
 //! DK 4.11, 2.8: the filter runs on with missing observations. The diffuse elements' share of the variance is the sum of
 //! squares of the white columns, as everywhere.
 
-use crate::filter::{Data, Pass};
+use crate::filter::End;
 use crate::smoother::{Functional, Smoothed};
 use crate::system::System;
 
@@ -28,22 +28,33 @@ pub(crate) struct Step<'a> {
     pub(crate) with_earlier: &'a [f64],
 }
 
-/// Runs on from the end of `pass` (whitened) for `h` steps. `data` must hold drivers for `n + h` points. `joint` is
+/// What a forecast goes on from.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct From<'a> {
+    pub(crate) system: &'a System,
+    /// Where the series ends.
+    pub(crate) end: &'a End,
+    /// Drivers with constant coefficients, then those that load on states, from the first step on.
+    pub(crate) drivers: &'a [Vec<f64>],
+    pub(crate) drifting: &'a [Vec<f64>],
+    /// Index of the first step in the drivers.
+    pub(crate) first: usize,
+}
+
+/// Runs on for `h` steps. The drivers must reach that far. `joint` is
 /// called at each step; it costs h^2 m operations in all and h m numbers of memory.
 pub(crate) fn run(
-    system: &System,
-    data: Data<'_>,
-    pass: &Pass,
+    from: From<'_>,
     h: usize,
     functionals: &[Functional],
     mut joint: Option<&mut dyn FnMut(Step<'_>)>,
 ) -> Path {
-    let (n, m, width) = (pass.n, pass.m, pass.width(pass.n));
-    let mut a = pass.a.clone();
-    for row in a.chunks_exact_mut(width) {
-        pass.whiten(n, row);
-    }
-    let mut p = pass.p.clone();
+    let From { system, end, drifting, first, .. } = from;
+    let (m, width) = (system.states, end.width);
+    let (mut a, mut p) = (end.state.clone(), end.covariance.clone());
+    system.forward(&mut a, width);
+    system.propagate(&mut p);
+    system.disturb(&mut p);
     let mut path = Path {
         signal: Smoothed { mean: Vec::with_capacity(h), variance: Vec::with_capacity(h) },
         functionals: functionals.iter().map(|_| Smoothed::default()).collect(),
@@ -57,10 +68,10 @@ pub(crate) fn run(
     let (mut sum_state, mut sum_row, mut sum_variance) = (vec![0.0; m], vec![0.0; width], 0.0);
     let (mut pz, mut row) = (vec![0.0; m], vec![0.0; width]);
     for step in 0..h {
-        let t = n + step;
+        let t = first + step;
         row.fill(0.0);
         pz.fill(0.0);
-        system.for_loads(data.drifting, t, |state, load| {
+        system.for_loads(drifting, t, |state, load| {
             for (to, from) in row.iter_mut().zip(&a[state * width..]) {
                 *to += load * from;
             }
@@ -68,17 +79,12 @@ pub(crate) fn run(
                 *to += load * from;
             }
         });
-        if !data.drivers.is_empty() {
-            let mut columns = vec![0.0; width];
-            for (k, x) in data.drivers.iter().enumerate() {
-                columns[pass.driver_column(k, data.drivers.len())] = x[t];
-            }
-            pass.whiten(n, &mut columns);
-            row.iter_mut().zip(&columns).for_each(|(to, from)| *to += from);
+        for (x, coefficient) in from.drivers.iter().zip(end.coefficients.chunks_exact(width)) {
+            row.iter_mut().zip(coefficient).for_each(|(to, from)| *to += x[t] * from);
         }
         let mut conditional = 0.0;
         let mut with_sum = 0.0;
-        system.for_loads(data.drifting, t, |state, load| {
+        system.for_loads(drifting, t, |state, load| {
             conditional += load * pz[state];
             with_sum += load * sum_state[state];
         });
@@ -91,7 +97,7 @@ pub(crate) fn run(
         sum_row.iter_mut().zip(&row).for_each(|(to, from)| *to += from);
         path.sum_variance.push(sum_variance.max(0.0) + sum_row[1..].iter().map(|v| v * v).sum::<f64>());
         for (functional, out) in functionals.iter().zip(&mut path.functionals) {
-            let (mean, variance) = evaluate(functional, data, t, &a, &p, m, width);
+            let (mean, variance) = evaluate(functional, drifting, t, &a, &p, m, width);
             out.mean.push(mean);
             out.variance.push(variance);
         }
@@ -101,7 +107,7 @@ pub(crate) fn run(
             for (i, earlier) in rows.chunks_exact(width).enumerate() {
                 let state = &mut ahead[i * m..(i + 1) * m];
                 let mut c: f64 = earlier[1..].iter().zip(&row[1..]).map(|(a, b)| a * b).sum();
-                system.for_loads(data.drifting, t, |s, load| c += load * state[s]);
+                system.for_loads(drifting, t, |s, load| c += load * state[s]);
                 with_earlier.push(c);
                 system.forward(state, 1);
             }
@@ -126,7 +132,7 @@ pub(crate) fn run(
 /// Mean and variance of one functional of the predicted state.
 fn evaluate(
     functional: &Functional,
-    data: Data<'_>,
+    drifting: &[Vec<f64>],
     t: usize,
     a: &[f64],
     p: &[f64],
@@ -137,7 +143,7 @@ fn evaluate(
     let weights = match functional {
         Functional::States(weights) => weights.as_slice(),
         Functional::DriverEffect { state, driver } => {
-            one = [(*state, data.drifting[*driver][t])];
+            one = [(*state, drifting[*driver][t])];
             &one
         }
         Functional::Signal => &[],

@@ -10,7 +10,7 @@ mod check;
 
 use crate::error::Trouble;
 use crate::estimate;
-use crate::evaluation::{Evaluation, EvaluationError, data_of};
+use crate::evaluation::{Evaluation, EvaluationError};
 use crate::fit::{ROUNDING, examine, fill_drivers, reproduces};
 use crate::objective::{Objective, Workspace};
 use crate::quantile::normal_quantile;
@@ -129,7 +129,7 @@ impl GeneralForm {
         let (model, known) = self.model(unit);
         let working = Series { observed: rest.iter().map(|v| v / unit).collect(), ..filled };
         let trouble = |error| self.trouble_of(error);
-        let mut objective = Objective::new(model.clone(), data_of(&working), workspace);
+        let mut objective = Objective::new(model.clone(), &working, workspace);
         let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
         let evaluation = Evaluation::new(model, &estimate.values, working).map_err(trouble)?;
         let largest = series.observed.iter().filter(|v| !v.is_nan()).fold(0.0_f64, |a, v| a.max(v.abs()));

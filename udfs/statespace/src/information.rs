@@ -7,188 +7,210 @@
 //! `P y` is the path `u` of the smoothing pass. `q_i` is the model's response to it: for a variance, the signal
 //! driven by the cumulants `r_t` of its states; for a parameter of `T`, the derivative of the two recursions
 //! `r_{t-1} = T' r_t + Z' u_t` and `x_{t+1} = T x_t + Q r_t` that make up `V u`. `P q_j` is one vector pass of filter and
-//! smoother with the gains at hand. No covariance recursion is run again.
+//! smoother with the gains at hand, for all parameters at once. No covariance recursion is run again.
+
+mod shapes;
 
 use crate::buffer::refill;
-use crate::filter::{Data, Pass};
+use crate::data::Data;
+use crate::derivatives::Derivative;
+use crate::dynamics::Dynamics;
+use crate::filter::Pass;
+use crate::lanes::Real;
 use crate::score::Paths;
-use crate::structure::{Effect, Model};
-use crate::system::System;
+use shapes::Shapes;
 
-/// Average information of one series and its buffers.
+/// Average information of each lane's series and its buffers.
 #[derive(Debug, Clone, Default)]
-pub(crate) struct Information {
+pub(crate) struct Information<V> {
     /// `p x p` row-major, natural units.
-    pub(crate) matrix: Vec<f64>,
-    /// `p x n`: the responses `q_i`.
-    responses: Vec<f64>,
-    /// `n`: one projected response.
-    projected: Vec<f64>,
-    /// `n x m`: derivative of `r_t`.
-    dr: Vec<f64>,
-    x: Vec<f64>,
-    dx: Vec<f64>,
-    white: Vec<f64>,
+    pub(crate) matrix: Vec<V>,
+    /// `n x p`: the responses `q_i`.
+    responses: Vec<V>,
+    /// `n x p`: the projected responses.
+    projected: Vec<V>,
+    /// `m x p`.
+    x: Vec<V>,
+    /// `elements x p`.
+    white: Vec<V>,
+    /// `p`.
+    v: Vec<V>,
+    spare: Vec<V>,
+    shapes: Shapes<V>,
 }
 
-impl Information {
+impl<V: Real> Information<V> {
     /// Fills the matrix. `pass` must have kept its gains and had its rows whitened.
+    #[inline(always)]
     pub(crate) fn compute(
         &mut self,
-        model: &Model,
-        system: &System,
-        data: Data<'_>,
-        pass: &Pass,
-        paths: &Paths,
+        derivatives: &[Derivative<V>],
+        dynamics: &Dynamics<V>,
+        data: &Data<V>,
+        pass: &Pass<V>,
+        paths: &Paths<V>,
     ) {
-        let (n, m, p) = (pass.n, pass.m, model.effects.len());
+        let (n, m, p) = (pass.n, pass.m, derivatives.len());
         refill(&mut self.matrix, p * p);
-        refill(&mut self.responses, p * n);
-        refill(&mut self.projected, n);
-        refill(&mut self.x, m);
-        refill(&mut self.dx, m);
-        refill(&mut self.white, pass.elements);
-        if model.has_shapes() {
-            refill(&mut self.dr, (n + 1) * m);
+        refill(&mut self.x, m * p);
+        refill(&mut self.white, pass.elements * p);
+        refill(&mut self.v, p);
+        refill(&mut self.spare, dynamics.spare_len());
+        self.responses.resize(n * p, V::zero());
+        self.projected.resize(n * p, V::zero());
+        self.respond(derivatives, dynamics, data, pass, paths);
+        for (index, derivative) in derivatives.iter().enumerate() {
+            if !(derivative.transition.is_empty() && derivative.start.is_empty()) {
+                let out = &mut self.responses[index..];
+                self.shapes.respond(derivative, dynamics, data, pass, (paths, &mut self.spare), (out, p));
+            }
         }
-        for (i, effect) in model.effects.iter().enumerate() {
-            self.respond(i, effect, system, data, pass, paths);
+        self.project_forward(dynamics, data, pass, p);
+        self.project_backward(dynamics, data, pass, p);
+        for (q, projected) in self.responses.chunks_exact(p).zip(self.projected.chunks_exact(p)).take(n) {
+            for i in 0..p {
+                for j in 0..=i {
+                    self.matrix[i * p + j] += q[j] * projected[i];
+                }
+            }
         }
-        for j in 0..p {
-            self.project(j, system, data, pass);
-            for i in 0..=j {
-                let q = &self.responses[i * n..(i + 1) * n];
-                let value = 0.5 * q.iter().zip(&self.projected).map(|(a, b)| a * b).sum::<f64>();
+        for i in 0..p {
+            for j in 0..=i {
+                let value = self.matrix[i * p + j].times(0.5);
                 self.matrix[i * p + j] = value;
                 self.matrix[j * p + i] = value;
             }
         }
     }
 
-    /// Writes `q_i = V_i u` into `responses`.
+    /// Writes `q_i = V_i u` of the variances into `responses`.
+    #[inline(always)]
     fn respond(
         &mut self,
-        index: usize,
-        effect: &Effect,
-        system: &System,
-        data: Data<'_>,
-        pass: &Pass,
-        paths: &Paths,
+        derivatives: &[Derivative<V>],
+        dynamics: &Dynamics<V>,
+        data: &Data<V>,
+        pass: &Pass<V>,
+        paths: &Paths<V>,
     ) {
-        let (n, m) = (pass.n, pass.m);
-        let out = &mut self.responses[index * n..(index + 1) * n];
-        if effect.irregular {
-            out.copy_from_slice(&paths.u);
-            return;
-        }
-        let through_transition = !effect.transition.is_empty();
-        self.dx.fill(0.0);
-        for &(i, j, value) in &effect.start {
-            self.dx[i] += value * paths.r_first[j];
-        }
-        self.x.fill(0.0);
-        if through_transition {
-            // dr_{t-1} = T' dr_t + dT' r_t; row t + 1 of `dr` holds dr_t, row 0 the start's.
-            self.dr[n * m..].fill(0.0);
-            for t in (0..n).rev() {
-                let (before, after) = self.dr.split_at_mut((t + 1) * m);
-                let row = &mut before[t * m..];
-                row.copy_from_slice(&after[..m]);
-                system.backward(row, 1);
-                for &(i, j, value) in &effect.transition {
-                    row[j] += value * paths.r[t * m + i];
+        let (m, p) = (pass.m, derivatives.len());
+        let Self { responses, x, spare, .. } = self;
+        for (t, q) in responses.chunks_exact_mut(p).enumerate().take(pass.n) {
+            q.fill(V::zero());
+            dynamics.for_loads(&data.drifting, t, |state, load| {
+                for (q, x) in q.iter_mut().zip(&x[state * p..(state + 1) * p]) {
+                    *q += load * *x;
                 }
-            }
-            for start in &system.proper {
-                for i in 0..start.size {
-                    for j in 0..start.size {
-                        let c = start.covariance[i * start.size + j];
-                        self.x[start.offset + i] += c * paths.r_first[start.offset + j];
-                        self.dx[start.offset + i] += c * self.dr[start.offset + j];
+            });
+            dynamics.forward(x, p, spare);
+            let r = &paths.r[t * m..(t + 1) * m];
+            for (index, derivative) in derivatives.iter().enumerate() {
+                if derivative.irregular {
+                    q[index] = paths.u[t];
+                }
+                for &state in &derivative.states {
+                    x[state * p + index] += r[state];
+                }
+                if !derivative.loads.is_empty() {
+                    let mut along = V::zero();
+                    for &(state, load) in &derivative.loads {
+                        along += r[state].times(load);
                     }
-                }
-            }
-        }
-        for (t, q) in out.iter_mut().enumerate() {
-            let mut signal = 0.0;
-            system.for_loads(data.drifting, t, |state, load| signal += load * self.dx[state]);
-            *q = signal;
-            system.forward(&mut self.dx, 1);
-            if through_transition {
-                for &(i, j, value) in &effect.transition {
-                    self.dx[i] += value * self.x[j];
-                }
-                system.forward(&mut self.x, 1);
-                system.add_disturbance(&mut self.x, &paths.r[t * m..(t + 1) * m]);
-                system.add_disturbance(&mut self.dx, &self.dr[(t + 1) * m..(t + 2) * m]);
-            }
-            for &state in &effect.states {
-                self.dx[state] += paths.r[t * m + state];
-            }
-            if !effect.loads.is_empty() {
-                let r = &paths.r[t * m..(t + 1) * m];
-                let along: f64 = effect.loads.iter().map(|&(state, load)| load * r[state]).sum();
-                for &(state, load) in &effect.loads {
-                    self.dx[state] += load * along;
+                    for &(state, load) in &derivative.loads {
+                        x[state * p + index] += along.times(load);
+                    }
                 }
             }
         }
     }
 
-    /// Writes `P q_j` into `projected`: filter and smoother on `q_j` with the gains at hand, the elements' share taken out. Across
-    /// the collapse the elements go into the state with their estimate from `q_j` itself.
-    fn project(&mut self, index: usize, system: &System, data: Data<'_>, pass: &Pass) {
-        let (n, m) = (pass.n, pass.m);
-        let states = pass.reduction.eliminated();
-        let q = &self.responses[index * n..(index + 1) * n];
-        self.x.fill(0.0);
-        self.white.fill(0.0);
-        // `white`: first the elements that collapse, then those that stay open (all of them without a collapse).
-        for t in 0..n {
-            if t == pass.collapsed_at {
-                for (i, x) in self.x.iter_mut().enumerate() {
-                    let moved = pass.bridge[i * states..(i + 1) * states].iter().zip(&self.white);
-                    *x -= moved.map(|(b, w)| b * w).sum::<f64>();
+    /// Filters the responses with the gains at hand and regresses the innovations on the elements: `white`, first the elements that
+    /// collapse, then those that stay open (all of them without a collapse). Across the collapse the elements go into the state with their
+    /// estimate from the response itself.
+    #[inline(always)]
+    fn project_forward(&mut self, dynamics: &Dynamics<V>, data: &Data<V>, pass: &Pass<V>, p: usize) {
+        let states = pass.states;
+        let Self { responses, projected, x, white, v, spare, .. } = self;
+        x.fill(V::zero());
+        for t in 0..pass.n {
+            let collapsing = pass.collapsing(t);
+            if !collapsing.is_none() {
+                for (x, bridge) in x.chunks_exact_mut(p).zip(pass.bridge.chunks_exact(states)) {
+                    for (white, b) in white.chunks_exact(p).zip(bridge) {
+                        let b = V::select(collapsing, *b, V::zero());
+                        for (x, w) in x.iter_mut().zip(white) {
+                            *x -= b * *w;
+                        }
+                    }
                 }
             }
-            let f = pass.f[t];
-            if !f.is_nan() {
-                let mut v = q[t];
-                system.for_loads(data.drifting, t, |state, load| v -= load * self.x[state]);
-                for (x, k) in self.x.iter_mut().zip(&pass.gains[t * m..(t + 1) * m]) {
-                    *x += k * v;
+            v.copy_from_slice(&responses[t * p..(t + 1) * p]);
+            dynamics.for_loads(&data.drifting, t, |state, load| {
+                for (v, x) in v.iter_mut().zip(&x[state * p..(state + 1) * p]) {
+                    *v -= load * *x;
                 }
-                let columns = &pass.row(t)[1..];
-                let open = pass.elements - columns.len();
-                for (w, c) in self.white[open..].iter_mut().zip(columns) {
-                    *w += c * v / f;
-                }
-                self.projected[t] = v;
-            }
-            system.forward(&mut self.x, 1);
-        }
-        self.x.fill(0.0);
-        for t in (0..n).rev() {
-            if t + 1 == pass.collapsed_at {
-                // What the points to come add to the collapsed elements' estimate.
-                for (c, w) in self.white[..states].iter_mut().enumerate() {
-                    *w -= (0..m).map(|i| pass.bridge[i * states + c] * self.x[i]).sum::<f64>();
+            });
+            for (x, gain) in x.chunks_exact_mut(p).zip(pass.gain(t)) {
+                for (x, v) in x.iter_mut().zip(v.iter()) {
+                    *x += *gain * *v;
                 }
             }
-            system.backward(&mut self.x, 1);
-            let f = pass.f[t];
-            if f.is_nan() {
-                self.projected[t] = 0.0;
-                continue;
-            }
+            let inverse = pass.inverse[t];
             let columns = &pass.row(t)[1..];
             let open = pass.elements - columns.len();
-            let fitted: f64 = columns.iter().zip(&self.white[open..]).map(|(c, w)| c * w).sum();
-            let gain = &pass.gains[t * m..(t + 1) * m];
-            let along: f64 = gain.iter().zip(&self.x).map(|(k, x)| k * x).sum();
-            let u = (self.projected[t] - fitted) / f - along;
-            self.projected[t] = u;
-            system.for_loads(data.drifting, t, |state, load| self.x[state] += load * u);
+            for (white, c) in white[open * p..].chunks_exact_mut(p).zip(columns) {
+                let c = *c * inverse;
+                for (w, v) in white.iter_mut().zip(v.iter()) {
+                    *w += c * *v;
+                }
+            }
+            projected[t * p..(t + 1) * p].copy_from_slice(v);
+            dynamics.forward(x, p, spare);
+        }
+    }
+
+    /// Smooths what [`Self::project_forward`] left in `projected`, the elements' share taken out.
+    #[inline(always)]
+    fn project_backward(&mut self, dynamics: &Dynamics<V>, data: &Data<V>, pass: &Pass<V>, p: usize) {
+        let states = pass.states;
+        let Self { projected, x, white, spare, .. } = self;
+        x.fill(V::zero());
+        for t in (0..pass.n).rev() {
+            let collapsing = pass.collapsing(t + 1);
+            if !collapsing.is_none() {
+                // What the points to come add to the collapsed elements' estimate.
+                for (x, bridge) in x.chunks_exact(p).zip(pass.bridge.chunks_exact(states)) {
+                    for (white, b) in white.chunks_exact_mut(p).zip(bridge) {
+                        let b = V::select(collapsing, *b, V::zero());
+                        for (w, x) in white.iter_mut().zip(x) {
+                            *w -= b * *x;
+                        }
+                    }
+                }
+            }
+            dynamics.backward(x, p, spare);
+            let inverse = pass.inverse[t];
+            let columns = &pass.row(t)[1..];
+            let open = pass.elements - columns.len();
+            let u = &mut projected[t * p..(t + 1) * p];
+            for (white, c) in white[open * p..].chunks_exact(p).zip(columns) {
+                for (u, w) in u.iter_mut().zip(white) {
+                    *u -= *c * *w;
+                }
+            }
+            for u in u.iter_mut() {
+                *u *= inverse;
+            }
+            for (x, gain) in x.chunks_exact(p).zip(pass.gain(t)) {
+                for (u, x) in u.iter_mut().zip(x) {
+                    *u -= *gain * *x;
+                }
+            }
+            dynamics.for_loads(&data.drifting, t, |state, load| {
+                for (x, u) in x[state * p..(state + 1) * p].iter_mut().zip(u.iter()) {
+                    *x += load * *u;
+                }
+            });
         }
     }
 }

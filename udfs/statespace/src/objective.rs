@@ -1,11 +1,12 @@
 //! The likelihood of one model on one series as a function of its parameters, with its score and average
 //! information; counts its evaluations and allocates nothing in them once its buffers have grown.
 
-use crate::evaluation::{EvaluationError, data_of};
-use crate::filter::{self, Data, Keep, Pass};
-use crate::information::Information;
+use crate::evaluation::EvaluationError;
+use crate::filter::Keep;
+use crate::instructions::Instructions;
+use crate::kernel::{Buffers, Kernel};
+use crate::lanes::Lanes;
 use crate::request::Series;
-use crate::score::Score;
 use crate::structure::Model;
 use crate::system::System;
 
@@ -14,15 +15,17 @@ use crate::system::System;
 pub struct Likelihood {
     model: Model,
     system: System,
-    series: Series,
-    workspace: Workspace,
+    kernel: Kernel<f64>,
 }
 
 impl Likelihood {
     /// A model and a series with its drivers.
+    #[expect(clippy::needless_pass_by_value, reason = "the interface says that the series is the likelihood's from now on")]
     pub fn new(model: Model, series: Series) -> Self {
         let system = model.system();
-        Self { model, system, series, workspace: Workspace::new() }
+        let mut kernel = Kernel::new(&model, &system, series.drifting_drivers.len(), Buffers::default());
+        kernel.data.load(0, &series);
+        Self { model, system, kernel }
     }
 
     /// Diffuse log-likelihood at parameter values (natural units, order of [`Model::parameters`]).
@@ -30,10 +33,9 @@ impl Likelihood {
     /// # Errors
     /// As [`crate::Evaluation::new`].
     pub fn at(&mut self, values: &[f64]) -> Result<f64, EvaluationError> {
-        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
-        let pass = &mut self.workspace.pass;
-        filter::run(&self.system, data_of(&self.series), Keep::Likelihood, pass)?;
-        Ok(pass.log_likelihood)
+        self.fill(values)?;
+        self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
+        Ok(self.kernel.buffers.pass.reached(0)?)
     }
 
     /// Diffuse log-likelihood, score (length p) and average information (p x p, row-major), natural units.
@@ -41,49 +43,42 @@ impl Likelihood {
     /// # Errors
     /// As [`crate::Evaluation::new`].
     pub fn with_score(&mut self, values: &[f64]) -> Result<(f64, &[f64], &[f64]), EvaluationError> {
+        self.fill(values)?;
+        self.kernel.score(Instructions::Baseline);
+        let Buffers { pass, score, information, .. } = &self.kernel.buffers;
+        Ok((pass.reached(0)?, &score.gradient, &information.matrix))
+    }
+
+    fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
         self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
-        let data = data_of(&self.series);
-        let value = evaluate(&self.model, &self.system, data, &mut self.workspace)?;
-        Ok((value, &self.workspace.score.gradient, &self.workspace.information.matrix))
+        self.kernel.set_lane(0, &self.model, &self.system);
+        Ok(())
     }
 }
 
-/// Likelihood, score and information into the workspace; returns the log-likelihood.
-fn evaluate(
-    model: &Model,
-    system: &System,
-    data: Data<'_>,
-    workspace: &mut Workspace,
-) -> Result<f64, EvaluationError> {
-    let keep = if model.has_shapes() { Keep::Everything } else { Keep::Gains };
-    let Workspace { pass, score, information } = workspace;
-    filter::run(system, data, keep, pass)?;
-    pass.whiten_rows();
-    if score.compute(model, system, data, pass).is_err() {
-        pass.keep_open = true;
-        let again = filter::run(system, data, keep, pass);
-        pass.keep_open = false;
-        again?;
-        pass.whiten_rows();
-        // Without a collapse there is nothing to go back across.
-        score.compute(model, system, data, pass).map_err(|_| EvaluationError::NotPositive)?;
-    }
-    information.compute(model, system, data, pass, &score.paths);
-    Ok(pass.log_likelihood)
-}
-
-/// Buffers that pass from series to series.
-#[derive(Debug, Clone, Default)]
+/// Buffers that pass from series to series, and the vector instructions to work with.
+#[derive(Debug, Clone)]
 pub struct Workspace {
-    pass: Pass,
-    score: Score,
-    information: Information,
+    pub(crate) single: Buffers<f64>,
+    pub(crate) lanes: Buffers<Lanes>,
+    pub(crate) instructions: Instructions,
+}
+
+impl Default for Workspace {
+    fn default() -> Self {
+        Self::new()
+    }
 }
 
 impl Workspace {
-    /// Empty buffers; they grow with the first series.
+    /// Empty buffers; they grow with the first series. The widest instructions that the processor has.
     pub fn new() -> Self {
-        Self::default()
+        Self::with_instructions(Instructions::widest())
+    }
+
+    /// The same with these instructions. They change the time that things take and nothing else.
+    pub fn with_instructions(instructions: Instructions) -> Self {
+        Self { single: Buffers::default(), lanes: Buffers::default(), instructions }
     }
 }
 
@@ -91,7 +86,7 @@ impl Workspace {
 pub(crate) struct Objective<'a> {
     pub(crate) model: Model,
     system: System,
-    data: Data<'a>,
+    kernel: Kernel<f64>,
     workspace: &'a mut Workspace,
     /// Likelihood evaluations so far, with or without derivatives.
     pub(crate) evaluations: usize,
@@ -108,46 +103,57 @@ pub(crate) struct Value {
 }
 
 impl<'a> Objective<'a> {
-    pub(crate) fn new(model: Model, data: Data<'a>, workspace: &'a mut Workspace) -> Self {
+    pub(crate) fn new(model: Model, series: &Series, workspace: &'a mut Workspace) -> Self {
         let system = model.system();
-        Self { model, system, data, workspace, evaluations: 0 }
+        let buffers = std::mem::take(&mut workspace.single);
+        let mut kernel = Kernel::new(&model, &system, series.drifting_drivers.len(), buffers);
+        kernel.data.load(0, series);
+        Self { model, system, kernel, workspace, evaluations: 0 }
     }
 
     /// The likelihood alone.
     pub(crate) fn value(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
         self.fill(values)?;
-        filter::run(&self.system, self.data, Keep::Likelihood, &mut self.workspace.pass)?;
-        Ok(self.reached())
+        self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
+        self.reached()
     }
 
     /// The likelihood with score and information, which then stand in [`Self::gradient`] and [`Self::information`].
     pub(crate) fn full(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
         self.fill(values)?;
-        evaluate(&self.model, &self.system, self.data, self.workspace)?;
-        Ok(self.reached())
+        self.kernel.score(Instructions::Baseline);
+        self.reached()
     }
 
     fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
         self.evaluations += 1;
-        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)
+        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
+        self.kernel.set_lane(0, &self.model, &self.system);
+        Ok(())
     }
 
-    fn reached(&self) -> Value {
-        let pass = &self.workspace.pass;
-        Value {
-            log_likelihood: pass.log_likelihood,
+    fn reached(&self) -> Result<Value, EvaluationError> {
+        let pass = &self.kernel.buffers.pass;
+        Ok(Value {
+            log_likelihood: pass.reached(0)?,
             rss: pass.reduction.rss(),
-            degrees: pass.observed as f64 - pass.elements as f64,
-        }
+            degrees: pass.observed[0] as f64 - pass.elements as f64,
+        })
     }
 
     /// Score at the last [`Self::full`] point, natural units.
     pub(crate) fn gradient(&self) -> &[f64] {
-        &self.workspace.score.gradient
+        &self.kernel.buffers.score.gradient
     }
 
     /// Average information at the last [`Self::full`] point, row-major, natural units.
     pub(crate) fn information(&self) -> &[f64] {
-        &self.workspace.information.matrix
+        &self.kernel.buffers.information.matrix
+    }
+}
+
+impl Drop for Objective<'_> {
+    fn drop(&mut self) {
+        self.workspace.single = std::mem::take(&mut self.kernel.buffers);
     }
 }

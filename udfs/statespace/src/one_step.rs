@@ -6,6 +6,7 @@
 //! recursion). A point that only serves to determine a diffuse element has no error.
 
 use crate::filter::Pass;
+use crate::lanes::Real;
 
 /// Elements of a row below this share of the row's own size are rounding, not information on an element that is
 /// still open. Start-ups of reference cases that are nearly singular have true elements of 1e-6.
@@ -20,18 +21,18 @@ pub struct OneStep {
     pub variance: Vec<f64>,
 }
 
-/// Rotates the kept rows (not yet whitened) into a triangle, one by one.
-pub(crate) fn errors(pass: &Pass) -> OneStep {
-    let n = pass.n;
+/// Rotates the kept rows of one lane (not yet whitened) into a triangle, one by one.
+pub(crate) fn errors<V: Real>(pass: &Pass<V>, lane: usize) -> OneStep {
+    let n = pass.lengths[lane];
     let mut d = pass.elements;
     let mut width = d + 1;
     let mut triangle = vec![0.0; d * width];
     let mut row = vec![0.0; width];
     let mut out = OneStep { standardised: vec![f64::NAN; n], variance: vec![f64::NAN; n] };
     for t in 0..n {
-        if t == pass.collapsed_at {
+        if t == pass.collapsed_at[lane] {
             // The collapsed elements' rows leave the triangle: what is left concerns the open ones alone.
-            let gone = width - pass.width(t);
+            let gone = pass.states;
             let narrow = width - gone;
             for i in 0..narrow - 1 {
                 let from = (gone + i) * width + gone;
@@ -39,16 +40,17 @@ pub(crate) fn errors(pass: &Pass) -> OneStep {
             }
             (d, width) = (narrow - 1, narrow);
         }
-        let f = pass.f[t];
-        if f.is_nan() {
+        if pass.inverse[t].lane(lane) == 0.0 {
             continue;
         }
+        let f = pass.f[t].lane(lane);
         let kept = pass.row(t);
         let weight = 1.0 / f.sqrt();
-        for (to, from) in row.iter_mut().zip(&kept[1..]) {
-            *to = -from * weight;
+        // The row may still have room for elements that other lanes hold open.
+        for (to, from) in row.iter_mut().zip(&kept[kept.len() - d..]) {
+            *to = -from.lane(lane) * weight;
         }
-        row[d] = kept[0] * weight;
+        row[d] = kept[0].lane(lane) * weight;
         let size = row[..d].iter().fold(0.0_f64, |a, v| a.max(v.abs()));
         let mut shrink = 1.0;
         let mut opened = false;

@@ -5,9 +5,12 @@
 //! (Harvey & Koopman 1992, *JBES* 10, 377-389; de Jong & Penzer 1998, *JASA* 93, 796-806), defined also where the
 //! variance is zero.
 
-use crate::backward::{self, Basis, Cumulants, NearlySingular, Visitor};
-use crate::filter::{Data, Pass};
-use crate::system::System;
+use crate::backward::{self, Basis, Cumulants, Visitor};
+use crate::buffer::refill;
+use crate::data::Data;
+use crate::dynamics::{Dynamics, add_column, packed_at, times_vector};
+use crate::filter::Pass;
+use crate::lanes::{Mask, Real};
 
 /// A linear function of the states at a point.
 #[derive(Debug, Clone, PartialEq)]
@@ -32,7 +35,7 @@ pub(crate) struct Smoothed {
     pub(crate) variance: Vec<f64>,
 }
 
-/// Everything one smoothing pass gives.
+/// Everything one smoothing pass gives about one series.
 #[derive(Debug, Clone, Default)]
 pub(crate) struct Smoothing {
     /// One entry per functional.
@@ -43,128 +46,165 @@ pub(crate) struct Smoothing {
     pub(crate) shift_t: Vec<f64>,
 }
 
-/// Smooths `functionals`. `pass` must have kept everything and had its rows whitened. `level`: the state whose
-/// disturbance `shift_t` is about.
-///
-/// # Errors
-/// As [`backward::run`].
-pub(crate) fn run(
-    system: &System,
-    data: Data<'_>,
-    pass: &Pass,
-    functionals: &[Functional],
-    level: Option<usize>,
-) -> Result<Smoothing, NearlySingular> {
-    let n = pass.n;
-    let blank = || Smoothed { mean: vec![f64::NAN; n], variance: vec![f64::NAN; n] };
-    let mut collect = Collect {
-        system,
-        data,
-        pass,
-        functionals,
-        level,
-        out: Smoothing {
-            functionals: functionals.iter().map(|_| blank()).collect(),
-            outlier_t: vec![f64::NAN; n],
-            shift_t: vec![f64::NAN; n],
-        },
-        pg: vec![0.0; pass.m],
-        white: vec![0.0; pass.elements + 1],
-    };
-    backward::run(system, data, pass, &mut Cumulants::default(), &mut collect)?;
-    Ok(collect.out)
+/// What a smoothing pass over several series gives, and its buffers. Vectors hold one functional after another, `n` numbers each.
+#[derive(Debug, Clone, Default)]
+pub(crate) struct Smoother<V> {
+    n: usize,
+    mean: Vec<V>,
+    variance: Vec<V>,
+    outlier_t: Vec<V>,
+    shift_t: Vec<V>,
+    pg: Vec<V>,
+    npg: Vec<V>,
+    white: Vec<V>,
+    cumulants: Cumulants<V>,
 }
 
-struct Collect<'a> {
-    system: &'a System,
-    data: Data<'a>,
-    pass: &'a Pass,
+impl<V: Real> Smoother<V> {
+    /// Smooths `functionals`. `pass` must have kept everything and had its rows whitened. `level`: the state whose
+    /// disturbance `shift_t` is about. Returns the lanes in which it failed, as [`backward::run`].
+    #[inline(always)]
+    pub(crate) fn run(
+        &mut self,
+        dynamics: &Dynamics<V>,
+        data: &Data<V>,
+        pass: &Pass<V>,
+        functionals: &[Functional],
+        level: Option<usize>,
+    ) -> Mask {
+        let n = pass.n;
+        self.n = n;
+        self.mean.resize(functionals.len() * n, V::zero());
+        self.variance.resize(functionals.len() * n, V::zero());
+        for errors in [&mut self.outlier_t, &mut self.shift_t] {
+            errors.clear();
+            errors.resize(n, V::splat(f64::NAN));
+        }
+        refill(&mut self.pg, pass.m);
+        refill(&mut self.npg, pass.m);
+        refill(&mut self.white, pass.elements + 1);
+        let Self { mean, variance, outlier_t, shift_t, pg, npg, white, cumulants, .. } = self;
+        let mut collect =
+            Collect { dynamics, data, pass, functionals, level, mean, variance, outlier_t, shift_t, pg, npg, white };
+        backward::run(dynamics, data, pass, cumulants, &mut collect)
+    }
+
+    /// What was found about the series of one lane, `len` points long.
+    pub(crate) fn lane(&self, lane: usize, len: usize) -> Smoothing {
+        let of = |numbers: &[V]| numbers[..len].iter().map(|x| x.lane(lane)).collect::<Vec<f64>>();
+        let functionals = self.mean.chunks_exact(self.n.max(1)).zip(self.variance.chunks_exact(self.n.max(1)));
+        Smoothing {
+            functionals: functionals
+                .map(|(mean, variance)| Smoothed { mean: of(mean), variance: of(variance) })
+                .collect(),
+            outlier_t: of(&self.outlier_t),
+            shift_t: of(&self.shift_t),
+        }
+    }
+}
+
+struct Collect<'a, V> {
+    dynamics: &'a Dynamics<V>,
+    data: &'a Data<V>,
+    pass: &'a Pass<V>,
     functionals: &'a [Functional],
     level: Option<usize>,
-    out: Smoothing,
-    pg: Vec<f64>,
-    white: Vec<f64>,
+    mean: &'a mut [V],
+    variance: &'a mut [V],
+    outlier_t: &'a mut [V],
+    shift_t: &'a mut [V],
+    pg: &'a mut [V],
+    npg: &'a mut [V],
+    white: &'a mut [V],
 }
 
 /// Share of the uncorrected cumulant's variance below which the corrected one is rounding.
 const UNDEFINED: f64 = 1e-10;
 
-impl Visitor for Collect<'_> {
-    fn disturbance(&mut self, t: usize, r: &[f64], n: &[f64]) {
+impl<V: Real> Visitor<V> for Collect<'_, V> {
+    #[inline(always)]
+    fn disturbance(&mut self, t: usize, r: &[V], n: &[V]) {
         let Some(level) = self.level else { return };
         if t + 1 < self.pass.n {
-            let m = self.pass.m;
-            let width = r.len() / m.max(1);
-            self.out.shift_t[t + 1] =
-                standardised(&r[level * width..(level + 1) * width], n[level * m + level]);
+            let width = r.len() / self.pass.m.max(1);
+            self.shift_t[t + 1] =
+                standardised(&r[level * width..(level + 1) * width], n[packed_at(level, level)]);
         }
     }
 
-    fn irregular(&mut self, t: usize, u: &[f64], weight: f64) {
-        self.out.outlier_t[t] = standardised(u, weight);
+    #[inline(always)]
+    fn irregular(&mut self, t: usize, u: &[V], weight: V) {
+        self.outlier_t[t] = standardised(u, weight);
     }
 
-    fn state(&mut self, t: usize, r: &[f64], n: &[f64], basis: &Basis<'_>) {
-        let (m, width) = (self.pass.m, self.pass.width(t));
-        let p = &self.pass.covariances[t * m * m..(t + 1) * m * m];
+    #[inline(always)]
+    fn state(&mut self, t: usize, r: &[V], n: &[V], basis: &Basis<'_, V>) {
+        let width = self.pass.width(t);
+        let points = self.pass.n;
+        let p = self.pass.covariance(t);
         for (index, functional) in self.functionals.iter().enumerate() {
-            self.pg.fill(0.0);
-            self.white.fill(0.0);
-            let (pg, white) = (&mut self.pg, &mut self.white[..width]);
-            let mut add = |state: usize, weight: f64| {
-                for (to, from) in pg.iter_mut().zip(&p[state * m..(state + 1) * m]) {
-                    *to += weight * from;
-                }
-                for (to, from) in white.iter_mut().zip(self.pass.state_columns(t, state)) {
-                    *to += weight * from;
+            let (pg, white) = (&mut *self.pg, &mut self.white[..width]);
+            pg.fill(V::zero());
+            white.fill(V::zero());
+            let mut add = |state: usize, weight: V| {
+                add_column(p, state, weight, pg);
+                if *functional != Functional::Signal {
+                    for (to, from) in white.iter_mut().zip(self.pass.state_columns(t, state)) {
+                        *to += weight * *from;
+                    }
                 }
             };
-            let mut prior = 0.0;
+            let mut prior = V::zero();
             match functional {
                 Functional::States(weights) => {
-                    weights.iter().for_each(|&(state, weight)| add(state, weight));
-                    prior += weights.iter().map(|&(state, weight)| weight * self.pg[state]).sum::<f64>();
-                    basis.whiten(&mut self.white[..width]);
+                    weights.iter().for_each(|&(state, weight)| add(state, V::splat(weight)));
+                    for &(state, weight) in weights {
+                        prior += pg[state].times(weight);
+                    }
+                    basis.whiten(white);
                 }
                 Functional::DriverEffect { state, driver } => {
                     let x = self.data.drifting[*driver][t];
                     add(*state, x);
-                    prior += x * self.pg[*state];
-                    basis.whiten(&mut self.white[..width]);
+                    prior += x * pg[*state];
+                    basis.whiten(white);
                 }
                 Functional::Signal => {
-                    self.system.for_loads(self.data.drifting, t, &mut add);
-                    self.system
-                        .for_loads(self.data.drifting, t, |state, load| prior += load * self.pg[state]);
-                    // The kept row is (y - prediction) with its columns.
-                    basis.row(&mut self.white[..width]);
-                    self.white[..width].iter_mut().for_each(|x| *x = -*x);
-                    let y = self.data.observed[t];
-                    if !y.is_nan() {
-                        self.white[0] += y;
-                    }
+                    self.dynamics.for_loads(&self.data.drifting, t, &mut add);
+                    self.dynamics.for_loads(&self.data.drifting, t, |state, load| prior += load * pg[state]);
+                    // The kept row is (y - prediction) with its columns, y = 0 where missing.
+                    basis.row(white);
+                    white.iter_mut().for_each(|x| *x = -*x);
+                    white[0] += self.data.observed[t];
                 }
             }
-            let mut reduction = 0.0;
-            for (i, &g) in self.pg.iter().enumerate() {
-                if g != 0.0 {
-                    for (to, from) in self.white[..width].iter_mut().zip(&r[i * width..(i + 1) * width]) {
-                        *to += g * from;
-                    }
-                    let along: f64 = self.pg.iter().zip(&n[i * m..(i + 1) * m]).map(|(a, b)| a * b).sum();
-                    reduction += g * along;
+            times_vector(n, pg, self.npg);
+            let mut reduction = V::zero();
+            for (i, g) in pg.iter().enumerate() {
+                for (to, from) in white.iter_mut().zip(&r[i * width..(i + 1) * width]) {
+                    *to += *g * *from;
                 }
+                reduction += *g * self.npg[i];
             }
-            let diffuse: f64 = self.white[1..width].iter().map(|v| v * v).sum();
-            let out = &mut self.out.functionals[index];
-            out.mean[t] = self.white[0];
-            out.variance[t] = (prior - reduction).max(0.0) + diffuse;
+            let mut diffuse = V::zero();
+            for x in &white[1..] {
+                diffuse += *x * *x;
+            }
+            let conditional = prior - reduction;
+            let positive = conditional.above(V::zero());
+            self.mean[index * points + t] = white[0];
+            self.variance[index * points + t] = V::select(positive, conditional, V::zero()) + diffuse;
         }
     }
 }
 
-fn standardised(columns: &[f64], variance: f64) -> f64 {
-    let white: f64 = columns[1..].iter().map(|v| v * v).sum();
-    let rest = variance - white;
-    if rest > UNDEFINED * variance { columns[0] / rest.sqrt() } else { f64::NAN }
+#[inline(always)]
+fn standardised<V: Real>(columns: &[V], variance: V) -> V {
+    let mut rest = variance;
+    for x in &columns[1..] {
+        rest -= *x * *x;
+    }
+    let defined = rest.above(variance.times(UNDEFINED));
+    let safe = V::select(defined, rest, V::splat(1.0));
+    V::select(defined, columns[0] / safe.sqrt(), V::splat(f64::NAN))
 }

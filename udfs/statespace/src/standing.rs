@@ -11,7 +11,9 @@
 use crate::components::ForecastScale;
 use crate::error::Trouble;
 use crate::evaluation::Evaluation;
-use crate::filter::{self, Data, Keep, Pass};
+use crate::data::Data;
+use crate::dynamics::{Dynamics, packed_at};
+use crate::filter::{self, End, Keep, Pass};
 use crate::fit::Fit;
 use crate::forecast;
 use crate::quantile::normal_quantile;
@@ -119,40 +121,19 @@ impl Fit {
     }
 }
 
-/// Mean and covariance of the last point's state given all observations, coefficients of constant drivers behind the states. The last point is
-/// observed: a history ends with an observation.
+/// Mean and covariance of the last point's state given all observations, coefficients of constant drivers behind the states.
 fn filtered_end(evaluation: &Evaluation, drivers: usize) -> (Vec<f64>, Vec<f64>) {
-    let pass = evaluation.pass();
-    let (m, last) = (pass.m, pass.n.saturating_sub(1));
+    let end = evaluation.end();
+    let m = evaluation.model().states();
     let size = m + drivers;
-    let gain = &pass.gains[last * m..(last + 1) * m];
-    // Rows of the pass are whitened already, its columns are not.
-    let innovation = pass.row(last);
-    let mut rows: Vec<Vec<f64>> = Vec::with_capacity(size);
-    for i in 0..m {
-        let mut row = pass.state_columns(last, i).to_vec();
-        pass.whiten(last, &mut row);
-        row.iter_mut().zip(innovation).for_each(|(to, from)| *to += gain[i] * from);
-        rows.push(row);
-    }
-    for driver in 0..drivers {
-        let mut row = vec![0.0; pass.width(pass.n)];
-        row[pass.driver_column(driver, drivers)] = 1.0;
-        pass.whiten(pass.n, &mut row);
-        rows.push(row);
-    }
+    let rows: Vec<&[f64]> =
+        end.state.chunks_exact(end.width).chain(end.coefficients.chunks_exact(end.width)).collect();
     let mut covariance = vec![0.0; size * size];
-    let p = &pass.covariances[last * m * m..(last + 1) * m * m];
-    for i in 0..m {
-        for j in 0..m {
-            covariance[i * size + j] = p[i * m + j] - gain[i] * gain[j] * pass.f[last];
-        }
-    }
     for i in 0..size {
         for j in 0..=i {
             let white: f64 = rows[i][1..].iter().zip(&rows[j][1..]).map(|(a, b)| a * b).sum();
-            let value = covariance[i * size + j] + white;
-            (covariance[i * size + j], covariance[j * size + i]) = (value, value);
+            let given = if i < m { end.covariance[i * m + j] } else { 0.0 };
+            (covariance[i * size + j], covariance[j * size + i]) = (given + white, given + white);
         }
     }
     (rows.iter().map(|row| row[0]).collect(), covariance)
@@ -176,7 +157,7 @@ impl Standing {
             }
         }
         let (_, system) = self.model_and_system()?;
-        let pass = self.predicted(&system);
+        let end = self.end();
         let scale = ForecastScale {
             transform: self.transform,
             unit: 1.0,
@@ -184,9 +165,10 @@ impl Standing {
             h: system.h,
             z: normal_quantile(0.5 + 0.5 * coverage),
         };
-        let data = Data { observed: &[], drivers: &[], drifting: plan };
+        let from =
+            forecast::From { system: &system, end: &end, drivers: &[], drifting: plan, first: 0 };
         scale
-            .forecast(horizon, |joint| forecast::run(&system, data, &pass, horizon, &[], joint))
+            .forecast(horizon, |joint| forecast::run(from, horizon, &[], joint))
             .map(|(forecast, _)| forecast)
     }
 
@@ -216,28 +198,32 @@ impl Standing {
             })
             .collect();
         let (_, system) = self.model_and_system()?;
-        let start = self.predicted(&system);
         // All points but the last run through the filter, of which only its end is kept; the last is taken in here, up to its filtered
         // state.
-        let data = Data { observed: &modelled[..seen - 1], drivers: &[], drifting: &filled };
-        let mut pass = Pass::default();
+        let mut data = Data::<f64>::default();
+        data.clear(0, filled.len());
+        data.load_columns(0, &modelled[..seen - 1], &[], &filled);
         let beyond = Trouble::Numerical {
             what: "the new observations take the likelihood out of the range of double precision; fit the series again",
         };
-        filter::resume(&system, data, (&start.a, &start.p), Keep::Likelihood, &mut pass)
-            .map_err(|_| beyond.clone())?;
-        let (mut state, mut covariance) = (pass.a, pass.p);
+        let (a, p) = self.predicted(&system);
+        let mut pass = Pass::default();
+        filter::resume(&Dynamics::new(&system), &data, (&a, &packed(&p, a.len())), Keep::Likelihood, &mut pass);
+        let reached = if seen > 1 { pass.reached(0) } else { Ok(0.0) };
+        let before = reached.map_err(|_| beyond.clone())?;
+        let (mut state, size) = (pass.a, a.len());
+        let mut covariance: Vec<f64> =
+            (0..size * size).map(|ij| pass.p[packed_at(ij / size, ij % size)]).collect();
         let last = taken_in(&system, (&mut state, &mut covariance), modelled[seen - 1], (&filled, seen - 1));
-        let log_likelihood = self.log_likelihood + pass.log_likelihood + last;
+        let log_likelihood = self.log_likelihood + before + last;
         if !(log_likelihood.is_finite() && state.iter().chain(&covariance).all(|v| v.is_finite())) {
             return Err(beyond);
         }
-        let size = state.len();
         Ok(Self {
             state,
             covariance: packed(&covariance, size),
             points: self.points + seen,
-            n: self.n + pass.observed + 1,
+            n: self.n + pass.observed[0] + 1,
             log_likelihood,
             plan: rest(seen),
             ..self.clone()
@@ -405,17 +391,24 @@ impl Standing {
         Ok((model, system))
     }
 
-    /// The prediction of the next point, as the end of a pass over no points.
-    fn predicted(&self, system: &System) -> Pass {
+    /// The last point, as a series that ends there.
+    fn end(&self) -> End {
         let size = self.state.len();
-        let mut pass = Pass::default();
-        pass.m = size;
-        pass.a = self.state.clone();
-        pass.p = (0..size * size).map(|ij| self.covariance_of(ij / size, ij % size)).collect();
-        system.forward(&mut pass.a, 1);
-        system.propagate(&mut pass.p);
-        system.disturb(&mut pass.p);
-        pass
+        End {
+            width: 1,
+            state: self.state.clone(),
+            covariance: (0..size * size).map(|ij| self.covariance_of(ij / size, ij % size)).collect(),
+            coefficients: Vec::new(),
+        }
+    }
+
+    /// State and covariance predicted for the next point.
+    fn predicted(&self, system: &System) -> (Vec<f64>, Vec<f64>) {
+        let End { state: mut a, covariance: mut p, .. } = self.end();
+        system.forward(&mut a, 1);
+        system.propagate(&mut p);
+        system.disturb(&mut p);
+        (a, p)
     }
 
     /// What is wrong with new observations as such.

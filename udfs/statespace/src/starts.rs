@@ -5,7 +5,7 @@
 //! whole ray. The best points become starts: one where all parameters are variances, more where a cycle or an
 //! autoregression makes several optima likely.
 
-use crate::evaluation::{EvaluationError, data_of};
+use crate::evaluation::EvaluationError;
 use crate::objective::{Objective, Workspace};
 use crate::request::Series;
 use crate::structure::{Link, Model, Role};
@@ -97,7 +97,7 @@ pub(crate) fn is_exact(model: &Model, series: &Series, rounding: f64, workspace:
             _ => 0.0,
         })
         .collect();
-    let mut objective = Objective::new(model.clone(), data_of(series), workspace);
+    let mut objective = Objective::new(model.clone(), series, workspace);
     let limit = EXACT.max(rounding * rounding);
     objective.value(&values).is_ok_and(|value| value.degrees > 0.0 && value.rss <= value.degrees * limit)
 }
