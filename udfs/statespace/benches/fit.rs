@@ -6,7 +6,9 @@ use std::hint::black_box;
 
 use criterion::{Criterion, criterion_group, criterion_main};
 use stillwell_statespace::structure::{Season, Structure, Trend};
-use stillwell_statespace::{Likelihood, Request, SeasonRequest, Series, TransformRequest, Workspace, fit};
+use stillwell_statespace::{
+    Instructions, Likelihood, Likelihoods, Request, SeasonRequest, Series, TransformRequest, Workspace, fit,
+};
 
 #[path = "../tests/support/simulate.rs"]
 mod simulate;
@@ -82,6 +84,17 @@ fn benches(c: &mut Criterion) {
                 (black_box(fit.components(0.9)), black_box(fit.forecast(12, 0.9)))
             });
         });
+        let at: Vec<&[f64]> = vec![&setting.values; Likelihoods::MOST];
+        for instructions in Instructions::available() {
+            let mut lanes =
+                Likelihoods::new(setting.structure.model(), &many[..Likelihoods::MOST], instructions);
+            c.bench_function(&format!("likelihood x 8, {instructions:?}, {}", setting.name), |b| {
+                b.iter(|| black_box(lanes.at(black_box(&at))));
+            });
+            c.bench_function(&format!("likelihood and score x 8, {instructions:?}, {}", setting.name), |b| {
+                b.iter(|| black_box(lanes.with_score(black_box(&at)).len()));
+            });
+        }
         let mut likelihood = Likelihood::new(setting.structure.model(), many[0].clone());
         c.bench_function(&format!("likelihood, {}", setting.name), |b| {
             b.iter(|| black_box(likelihood.at(black_box(&setting.values))));

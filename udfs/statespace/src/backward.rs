@@ -153,22 +153,21 @@ pub(crate) fn run<V: Real>(
                 weight += *k * *v;
             }
             // N <- N - z kn' - kn z' + weight z z'
-            dynamics.for_loads(&data.drifting, t, |state, load| {
+            for (i, a) in dynamics.loads(&data.drifting, t) {
                 for (j, v) in kn.iter().enumerate() {
-                    n[packed_at(state, j)] -= load * *v;
+                    n[packed_at(i, j)] -= a * *v;
                 }
-                n[packed_at(state, state)] -= load * kn[state];
-            });
-            dynamics.for_loads(&data.drifting, t, |i, a| {
-                dynamics.for_loads(&data.drifting, t, |j, b| {
+                n[packed_at(i, i)] -= a * kn[i];
+                for (j, b) in dynamics.loads(&data.drifting, t) {
                     if j <= i {
                         n[packed_at(i, j)] += weight * (a * b);
                     }
-                });
-            });
+                }
+            }
             if keep {
-                let close =
-                    same & !settled & !(weight - previous_weight).abs().above(weight.times(4.0 * f64::EPSILON));
+                let close = same
+                    & !settled
+                    & !(weight - previous_weight).abs().above(weight.times(4.0 * f64::EPSILON));
                 if !close.is_none() {
                     settled |= unchanged(before, n, m, close);
                 }
@@ -181,11 +180,11 @@ pub(crate) fn run<V: Real>(
             previous_weight = weight;
         }
         visitor.irregular(t, u, weight);
-        dynamics.for_loads(&data.drifting, t, |state, load| {
+        for (state, load) in dynamics.loads(&data.drifting, t) {
             for (to, from) in r[state * width..(state + 1) * width].iter_mut().zip(u.iter()) {
                 *to += load * *from;
             }
-        });
+        }
         visitor.state(t, r, n, &basis);
     }
     singular

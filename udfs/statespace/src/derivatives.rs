@@ -39,9 +39,7 @@ impl<V: Real> Derivative<V> {
     /// Puts the numbers of effects of the same model into one lane.
     pub(crate) fn set_lane(derivatives: &mut [Self], lane: usize, effects: &[Effect]) {
         for (to, effect) in derivatives.iter_mut().zip(effects) {
-            for (to, from) in
-                [(&mut to.transition, &effect.transition), (&mut to.start, &effect.start)]
-            {
+            for (to, from) in [(&mut to.transition, &effect.transition), (&mut to.start, &effect.start)] {
                 to.resize(from.len(), (0, 0, V::zero()));
                 for (to, &(row, column, value)) in to.iter_mut().zip(from) {
                     (to.0, to.1) = (row, column);

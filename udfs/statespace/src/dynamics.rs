@@ -38,7 +38,7 @@ pub(crate) struct Dynamics<V> {
     /// Where each element of a packed matrix goes in the shift forward, and back; empty without a shift.
     forward_moves: Vec<u32>,
     backward_moves: Vec<u32>,
-    pub(crate) fixed_loads: Vec<(usize, f64)>,
+    fixed_loads: Vec<(usize, V)>,
     pub(crate) driver_loads: Vec<(usize, usize)>,
     pub(crate) h: V,
     /// Variance of each state's disturbance.
@@ -68,7 +68,7 @@ impl<V: Real> Dynamics<V> {
             forward_moves: moves(&blocks, system.states, true),
             backward_moves: moves(&blocks, system.states, false),
             blocks,
-            fixed_loads: system.fixed_loads.clone(),
+            fixed_loads: system.fixed_loads.iter().map(|&(state, load)| (state, V::splat(load))).collect(),
             driver_loads: system.driver_loads.clone(),
             h: V::zero(),
             q: vec![V::zero(); system.states],
@@ -81,7 +81,11 @@ impl<V: Real> Dynamics<V> {
             proper: system
                 .proper
                 .iter()
-                .map(|p| ProperOf { offset: p.offset, size: p.size, covariance: vec![V::zero(); p.size * p.size] })
+                .map(|p| ProperOf {
+                    offset: p.offset,
+                    size: p.size,
+                    covariance: vec![V::zero(); p.size * p.size],
+                })
                 .collect(),
             start_scale: V::zero(),
         };
@@ -109,15 +113,11 @@ impl<V: Real> Dynamics<V> {
         self.start_scale.set_lane(lane, system.start_scale());
     }
 
-    /// Calls `f(state, load)` for each non-zero element of `Z_t`.
+    /// State and load of each non-zero element of `Z_t`.
     #[inline(always)]
-    pub(crate) fn for_loads(&self, drifting: &[Vec<V>], t: usize, mut f: impl FnMut(usize, V)) {
-        for &(state, load) in &self.fixed_loads {
-            f(state, V::splat(load));
-        }
-        for &(state, driver) in &self.driver_loads {
-            f(state, drifting[driver][t]);
-        }
+    pub(crate) fn loads(&self, drifting: &[Vec<V>], t: usize) -> impl Iterator<Item = (usize, V)> {
+        let of_drivers = self.driver_loads.iter().map(move |&(state, driver)| (state, drifting[driver][t]));
+        self.fixed_loads.iter().copied().chain(of_drivers)
     }
 
     /// `x <- T x` for an `m x width` row-major matrix.
@@ -337,5 +337,8 @@ fn moves<V: Real>(blocks: &[(usize, Block<V>)], states: usize, forward: bool) ->
             to[offset + i] = offset + if forward { (i + 1) % len } else { (i + len - 1) % len };
         }
     }
-    (0..states).flat_map(|i| (0..=i).map(move |j| (i, j))).map(|(i, j)| packed_at(to[i], to[j]) as u32).collect()
+    (0..states)
+        .flat_map(|i| (0..=i).map(move |j| (i, j)))
+        .map(|(i, j)| packed_at(to[i], to[j]) as u32)
+        .collect()
 }

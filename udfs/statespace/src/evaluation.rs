@@ -56,6 +56,7 @@ pub struct Evaluation {
     series: Series,
     log_likelihood: f64,
     observed: usize,
+    elements: usize,
     one_step: OneStep,
     end: End,
     /// What has been smoothed already.
@@ -98,6 +99,7 @@ impl Evaluation {
             series,
             log_likelihood: pass.reached(lane)?,
             observed: pass.observed[lane],
+            elements: pass.elements,
             one_step: one_step::errors(pass, lane),
             end: pass.end(lane),
             smoothed: None,
@@ -112,7 +114,7 @@ impl Evaluation {
 
     /// Diffuse elements d.
     pub fn diffuse_elements(&self) -> usize {
-        self.model.diffuse_elements()
+        self.elements
     }
 
     /// Observed points.

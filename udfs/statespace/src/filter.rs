@@ -107,7 +107,9 @@ pub(crate) fn run_from<V: Real>(
         if !steady {
             predicted_variance(dynamics, data, t, pass);
             f = dynamics.h;
-            dynamics.for_loads(&data.drifting, t, |state, load| f += load * pass.pz[state]);
+            for (state, load) in dynamics.loads(&data.drifting, t) {
+                f += load * pass.pz[state];
+            }
             let sound = f.above(V::zero()) & V::splat(f64::MAX).above(f);
             if !(sound | !seen).is_all::<V>() {
                 pass.fail(seen & !sound, FilterError::NotPositive(t));
@@ -187,13 +189,7 @@ fn innovation<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, t: usize, width: 
     let row = &mut row[..width];
     row.fill(V::zero());
     row[0] = data.observed[t];
-    for &(state, load) in &dynamics.fixed_loads {
-        for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
-            *r -= v.times(load);
-        }
-    }
-    for &(state, driver) in &dynamics.driver_loads {
-        let load = data.drifting[driver][t];
+    for (state, load) in dynamics.loads(&data.drifting, t) {
         for (r, v) in row.iter_mut().zip(&a[state * width..(state + 1) * width]) {
             *r -= load * *v;
         }
@@ -209,7 +205,9 @@ fn innovation<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, t: usize, width: 
 fn predicted_variance<V: Real>(dynamics: &Dynamics<V>, data: &Data<V>, t: usize, pass: &mut Pass<V>) {
     let Pass { p, pz, .. } = pass;
     pz.fill(V::zero());
-    dynamics.for_loads(&data.drifting, t, |state, load| add_column(p, state, load, pz));
+    for (state, load) in dynamics.loads(&data.drifting, t) {
+        add_column(p, state, load, pz);
+    }
 }
 
 /// Lanes of `among` in which no element of a packed covariance moved by more than rounding, relative to the variances beside it.

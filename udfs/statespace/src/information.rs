@@ -97,11 +97,11 @@ impl<V: Real> Information<V> {
         let Self { responses, x, spare, .. } = self;
         for (t, q) in responses.chunks_exact_mut(p).enumerate().take(pass.n) {
             q.fill(V::zero());
-            dynamics.for_loads(&data.drifting, t, |state, load| {
+            for (state, load) in dynamics.loads(&data.drifting, t) {
                 for (q, x) in q.iter_mut().zip(&x[state * p..(state + 1) * p]) {
                     *q += load * *x;
                 }
-            });
+            }
             dynamics.forward(x, p, spare);
             let r = &paths.r[t * m..(t + 1) * m];
             for (index, derivative) in derivatives.iter().enumerate() {
@@ -145,11 +145,11 @@ impl<V: Real> Information<V> {
                 }
             }
             v.copy_from_slice(&responses[t * p..(t + 1) * p]);
-            dynamics.for_loads(&data.drifting, t, |state, load| {
+            for (state, load) in dynamics.loads(&data.drifting, t) {
                 for (v, x) in v.iter_mut().zip(&x[state * p..(state + 1) * p]) {
                     *v -= load * *x;
                 }
-            });
+            }
             for (x, gain) in x.chunks_exact_mut(p).zip(pass.gain(t)) {
                 for (x, v) in x.iter_mut().zip(v.iter()) {
                     *x += *gain * *v;
@@ -206,11 +206,11 @@ impl<V: Real> Information<V> {
                     *u -= *gain * *x;
                 }
             }
-            dynamics.for_loads(&data.drifting, t, |state, load| {
+            for (state, load) in dynamics.loads(&data.drifting, t) {
                 for (x, u) in x[state * p..(state + 1) * p].iter_mut().zip(u.iter()) {
                     *x += load * *u;
                 }
-            });
+            }
         }
     }
 }

@@ -56,12 +56,18 @@ impl Instructions {
         #[cfg(target_arch = "x86_64")]
         match self {
             Self::Avx512 if self.is_available() => {
-                #[expect(unsafe_code, reason = "a function with target features is called from one without")]
+                #[expect(
+                    unsafe_code,
+                    reason = "a function with target features is called from one without"
+                )]
                 // SAFETY: the processor has just been found to have the features that `avx512` enables.
                 return unsafe { avx512(task) };
             }
             Self::Avx2 if self.is_available() => {
-                #[expect(unsafe_code, reason = "a function with target features is called from one without")]
+                #[expect(
+                    unsafe_code,
+                    reason = "a function with target features is called from one without"
+                )]
                 // SAFETY: the processor has just been found to have the feature that `avx2` enables.
                 return unsafe { avx2(task) };
             }

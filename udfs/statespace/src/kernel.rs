@@ -59,15 +59,18 @@ impl<V: Width> Kernel<V> {
     pub(crate) fn score(&mut self, instructions: Instructions) {
         let Self { dynamics, derivatives, data, buffers } = self;
         buffers.pass.keep_open = Mask::NONE;
-        let failed = V::perform(
-            instructions,
-            ScorePass { dynamics, derivatives, data, buffers },
-        );
+        let failed = V::perform(instructions, ScorePass { dynamics, derivatives, data, buffers });
         if !failed.is_none() {
             // The other lanes come out as they did: to the last bit.
             buffers.pass.keep_open = failed;
             V::perform(instructions, ScorePass { dynamics, derivatives, data, buffers });
         }
+    }
+
+    /// Score (length p) and average information (p x p row-major) of a lane after [`Self::score`], natural units.
+    pub(crate) fn derivatives_of(&self, lane: usize) -> (Vec<f64>, Vec<f64>) {
+        let of = |numbers: &[V]| numbers.iter().map(|x| x.lane(lane)).collect();
+        (of(&self.buffers.score.gradient), of(&self.buffers.information.matrix))
     }
 
     /// Runs the filter, keeping everything, and smooths; `filtered` sees the pass before its rows are whitened (again, where the way back
@@ -85,7 +88,8 @@ impl<V: Width> Kernel<V> {
         loop {
             V::perform(instructions, Filter { dynamics, data, keep: Keep::Everything, pass });
             filtered(pass);
-            let failed = V::perform(instructions, Smooth { dynamics, data, functionals, level, pass, smoother });
+            let failed =
+                V::perform(instructions, Smooth { dynamics, data, functionals, level, pass, smoother });
             if failed.is_none() || pass.keep_open == failed {
                 return;
             }

@@ -10,52 +10,6 @@ use crate::request::Series;
 use crate::structure::Model;
 use crate::system::System;
 
-/// The likelihood of a model on a series, to be evaluated many times: no allocation from the second call on.
-#[derive(Debug)]
-pub struct Likelihood {
-    model: Model,
-    system: System,
-    kernel: Kernel<f64>,
-}
-
-impl Likelihood {
-    /// A model and a series with its drivers.
-    #[expect(clippy::needless_pass_by_value, reason = "the interface says that the series is the likelihood's from now on")]
-    pub fn new(model: Model, series: Series) -> Self {
-        let system = model.system();
-        let mut kernel = Kernel::new(&model, &system, series.drifting_drivers.len(), Buffers::default());
-        kernel.data.load(0, &series);
-        Self { model, system, kernel }
-    }
-
-    /// Diffuse log-likelihood at parameter values (natural units, order of [`Model::parameters`]).
-    ///
-    /// # Errors
-    /// As [`crate::Evaluation::new`].
-    pub fn at(&mut self, values: &[f64]) -> Result<f64, EvaluationError> {
-        self.fill(values)?;
-        self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
-        Ok(self.kernel.buffers.pass.reached(0)?)
-    }
-
-    /// Diffuse log-likelihood, score (length p) and average information (p x p, row-major), natural units.
-    ///
-    /// # Errors
-    /// As [`crate::Evaluation::new`].
-    pub fn with_score(&mut self, values: &[f64]) -> Result<(f64, &[f64], &[f64]), EvaluationError> {
-        self.fill(values)?;
-        self.kernel.score(Instructions::Baseline);
-        let Buffers { pass, score, information, .. } = &self.kernel.buffers;
-        Ok((pass.reached(0)?, &score.gradient, &information.matrix))
-    }
-
-    fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
-        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
-        self.kernel.set_lane(0, &self.model, &self.system);
-        Ok(())
-    }
-}
-
 /// Buffers that pass from series to series, and the vector instructions to work with.
 #[derive(Debug, Clone)]
 pub struct Workspace {

@@ -68,13 +68,7 @@ impl<V: Real> Reduction<V> {
         refill(&mut gone.inverse, states);
     }
 
-    /// Elements that can be or have been eliminated.
-    #[inline(always)]
-    pub(crate) fn eliminable(&self) -> usize {
-        self.eliminated.count
-    }
-
-    /// Lanes in which they have been.
+    /// Lanes in which the first elements have been eliminated.
     #[inline(always)]
     pub(crate) fn eliminated(&self) -> Mask {
         self.eliminated.lanes

@@ -81,8 +81,14 @@ impl<V: Real> Score<V> {
         refill(&mut moments.smoothed, width);
         refill(&mut moments.vector, m);
         refill(&mut moments.spare, dynamics.spare_len());
-        let mut collect =
-            Collect { dynamics, pass, derivatives, shapes, paths: &mut self.paths, moments: &mut self.moments };
+        let mut collect = Collect {
+            dynamics,
+            pass,
+            derivatives,
+            shapes,
+            paths: &mut self.paths,
+            moments: &mut self.moments,
+        };
         let failed = backward::run(dynamics, data, pass, &mut self.cumulants, &mut collect);
         let (r, n0) = self.cumulants.first();
         let width = pass.width(0);

@@ -84,15 +84,28 @@ impl<V: Real> Smoother<V> {
         refill(&mut self.npg, pass.m);
         refill(&mut self.white, pass.elements + 1);
         let Self { mean, variance, outlier_t, shift_t, pg, npg, white, cumulants, .. } = self;
-        let mut collect =
-            Collect { dynamics, data, pass, functionals, level, mean, variance, outlier_t, shift_t, pg, npg, white };
+        let mut collect = Collect {
+            dynamics,
+            data,
+            pass,
+            functionals,
+            level,
+            mean,
+            variance,
+            outlier_t,
+            shift_t,
+            pg,
+            npg,
+            white,
+        };
         backward::run(dynamics, data, pass, cumulants, &mut collect)
     }
 
     /// What was found about the series of one lane, `len` points long.
     pub(crate) fn lane(&self, lane: usize, len: usize) -> Smoothing {
         let of = |numbers: &[V]| numbers[..len].iter().map(|x| x.lane(lane)).collect::<Vec<f64>>();
-        let functionals = self.mean.chunks_exact(self.n.max(1)).zip(self.variance.chunks_exact(self.n.max(1)));
+        let functionals =
+            self.mean.chunks_exact(self.n.max(1)).zip(self.variance.chunks_exact(self.n.max(1)));
         Smoothing {
             functionals: functionals
                 .map(|(mean, variance)| Smoothed { mean: of(mean), variance: of(variance) })
@@ -146,18 +159,13 @@ impl<V: Real> Visitor<V> for Collect<'_, V> {
             let (pg, white) = (&mut *self.pg, &mut self.white[..width]);
             pg.fill(V::zero());
             white.fill(V::zero());
-            let mut add = |state: usize, weight: V| {
-                add_column(p, state, weight, pg);
-                if *functional != Functional::Signal {
-                    for (to, from) in white.iter_mut().zip(self.pass.state_columns(t, state)) {
-                        *to += weight * *from;
-                    }
-                }
-            };
             let mut prior = V::zero();
             match functional {
                 Functional::States(weights) => {
-                    weights.iter().for_each(|&(state, weight)| add(state, V::splat(weight)));
+                    for &(state, weight) in weights {
+                        let columns = self.pass.state_columns(t, state);
+                        add(p, state, V::splat(weight), pg, columns, white);
+                    }
                     for &(state, weight) in weights {
                         prior += pg[state].times(weight);
                     }
@@ -165,13 +173,17 @@ impl<V: Real> Visitor<V> for Collect<'_, V> {
                 }
                 Functional::DriverEffect { state, driver } => {
                     let x = self.data.drifting[*driver][t];
-                    add(*state, x);
+                    add(p, *state, x, pg, self.pass.state_columns(t, *state), white);
                     prior += x * pg[*state];
                     basis.whiten(white);
                 }
                 Functional::Signal => {
-                    self.dynamics.for_loads(&self.data.drifting, t, &mut add);
-                    self.dynamics.for_loads(&self.data.drifting, t, |state, load| prior += load * pg[state]);
+                    for (state, load) in self.dynamics.loads(&self.data.drifting, t) {
+                        add_column(p, state, load, pg);
+                    }
+                    for (state, load) in self.dynamics.loads(&self.data.drifting, t) {
+                        prior += load * pg[state];
+                    }
                     // The kept row is (y - prediction) with its columns, y = 0 where missing.
                     basis.row(white);
                     white.iter_mut().for_each(|x| *x = -*x);
@@ -195,6 +207,15 @@ impl<V: Real> Visitor<V> for Collect<'_, V> {
             self.mean[index * points + t] = white[0];
             self.variance[index * points + t] = V::select(positive, conditional, V::zero()) + diffuse;
         }
+    }
+}
+
+/// Adds `weight` times a state: its covariance with all states, its columns.
+#[inline(always)]
+fn add<V: Real>(p: &[V], state: usize, weight: V, pg: &mut [V], columns: &[V], white: &mut [V]) {
+    add_column(p, state, weight, pg);
+    for (to, from) in white.iter_mut().zip(columns) {
+        *to += weight * *from;
     }
 }
 

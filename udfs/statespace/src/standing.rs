@@ -9,10 +9,10 @@
 //! keep their digits.
 
 use crate::components::ForecastScale;
-use crate::error::Trouble;
-use crate::evaluation::Evaluation;
 use crate::data::Data;
 use crate::dynamics::{Dynamics, packed_at};
+use crate::error::Trouble;
+use crate::evaluation::Evaluation;
 use crate::filter::{self, End, Keep, Pass};
 use crate::fit::Fit;
 use crate::forecast;
@@ -165,8 +165,7 @@ impl Standing {
             h: system.h,
             z: normal_quantile(0.5 + 0.5 * coverage),
         };
-        let from =
-            forecast::From { system: &system, end: &end, drivers: &[], drifting: plan, first: 0 };
+        let from = forecast::From { system: &system, end: &end, drivers: &[], drifting: plan, first: 0 };
         scale
             .forecast(horizon, |joint| forecast::run(from, horizon, &[], joint))
             .map(|(forecast, _)| forecast)
@@ -208,7 +207,13 @@ impl Standing {
         };
         let (a, p) = self.predicted(&system);
         let mut pass = Pass::default();
-        filter::resume(&Dynamics::new(&system), &data, (&a, &packed(&p, a.len())), Keep::Likelihood, &mut pass);
+        filter::resume(
+            &Dynamics::new(&system),
+            &data,
+            (&a, &packed(&p, a.len())),
+            Keep::Likelihood,
+            &mut pass,
+        );
         let reached = if seen > 1 { pass.reached(0) } else { Ok(0.0) };
         let before = reached.map_err(|_| beyond.clone())?;
         let (mut state, size) = (pass.a, a.len());

@@ -112,20 +112,6 @@ impl System {
         }
     }
 
-    /// `x <- x + Q r` for a vector.
-    #[inline]
-    pub(crate) fn add_disturbance(&self, x: &mut [f64], r: &[f64]) {
-        for (i, x) in x.iter_mut().enumerate() {
-            *x += self.q[i] * r[i];
-        }
-        for noise in &self.shared {
-            let along: f64 = noise.loads.iter().map(|&(i, a)| a * r[i]).sum();
-            for &(i, a) in &noise.loads {
-                x[i] += noise.variance * a * along;
-            }
-        }
-    }
-
     /// Start covariance of the diffuse states: the largest noise variance. Any value gives the same
     /// results (a flat prior convolved with a proper one is flat); this one is near the size that the
     /// covariance settles at.
@@ -136,22 +122,6 @@ impl System {
             .flat_map(|noise| noise.loads.iter().map(|&(_, load)| noise.variance * load * load));
         let largest = self.q.iter().copied().chain(shared).fold(self.h, f64::max);
         self.proper.iter().flat_map(|p| p.covariance.iter()).fold(largest, |a, &b| a.max(b))
-    }
-
-    /// Writes `P_1`: `scale` on diffuse states, the proper starts elsewhere.
-    pub(crate) fn start_covariance(&self, scale: f64, p: &mut [f64]) {
-        let m = self.states;
-        p.fill(0.0);
-        for start in &self.proper {
-            for i in 0..start.size {
-                for j in 0..start.size {
-                    p[(start.offset + i) * m + start.offset + j] = start.covariance[i * start.size + j];
-                }
-            }
-        }
-        for &i in &self.diffuse {
-            p[i * m + i] = scale;
-        }
     }
 
     /// Calls `f(state, load)` for each non-zero element of `Z_t`.

@@ -23,7 +23,8 @@ impl<V: Real> Pass<V> {
         if self.states == 0 || 2 * self.states < self.elements {
             return Mask::NONE;
         }
-        let worthwhile = self.live & data.alive(t + WORTHWHILE) & !self.keep_open & !self.reduction.eliminated();
+        let worthwhile =
+            self.live & data.alive(t + WORTHWHILE) & !self.keep_open & !self.reduction.eliminated();
         if worthwhile.is_none() { worthwhile } else { self.reduction.ready(worthwhile) }
     }
 

@@ -134,7 +134,13 @@ impl<V: Real> Pass<V> {
 
     /// Keeps what every point has.
     #[inline(always)]
-    pub(super) fn keep_point(&mut self, t: usize, width: usize, keep: Keep, (f, inverse, steady): (V, V, Mask)) {
+    pub(super) fn keep_point(
+        &mut self,
+        t: usize,
+        width: usize,
+        keep: Keep,
+        (f, inverse, steady): (V, V, Mask),
+    ) {
         if keep >= Keep::Gains {
             self.f[t] = f;
             self.inverse[t] = inverse;
@@ -233,12 +239,6 @@ impl<V: Real> Pass<V> {
     #[inline(always)]
     pub(crate) fn gain(&self, t: usize) -> &[V] {
         &self.gains[self.entry[t] as usize * self.m..][..self.m]
-    }
-
-    /// The gain at `t` is the one kept at `t - 1`, in every lane.
-    #[inline(always)]
-    pub(crate) fn repeats(&self, t: usize) -> bool {
-        t > 0 && self.entry[t] == self.entry[t - 1]
     }
 
     /// The kept packed covariance at `t`.

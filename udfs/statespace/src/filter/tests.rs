@@ -5,8 +5,8 @@ use crate::instructions::Instructions;
 use crate::kernel::{Buffers, Kernel};
 use crate::request::Series;
 use crate::structure::Model;
-use crate::system::System;
 use crate::structure::{Season, Structure, Trend};
+use crate::system::System;
 use proptest::prelude::*;
 
 fn kernel(model: &Model, system: &System, series: &Series) -> Kernel<f64> {

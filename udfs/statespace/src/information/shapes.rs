@@ -61,7 +61,9 @@ impl<V: Real> Shapes<V> {
         }
         for (t, q) in out.iter_mut().step_by(stride).enumerate().take(n) {
             let mut signal = V::zero();
-            dynamics.for_loads(&data.drifting, t, |state, load| signal += load * dx[state]);
+            for (state, load) in dynamics.loads(&data.drifting, t) {
+                signal += load * dx[state];
+            }
             *q = signal;
             dynamics.forward(dx, 1, spare);
             if through_transition {

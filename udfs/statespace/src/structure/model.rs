@@ -133,11 +133,6 @@ impl Model {
         })
     }
 
-    /// True when some parameter is not a variance.
-    pub(crate) fn has_shapes(&self) -> bool {
-        !self.assembly.shapes.is_empty()
-    }
-
     /// A system of this model with all that does not depend on parameters filled in.
     pub fn system(&self) -> System {
         let states = &self.assembly.states;
