@@ -1,6 +1,7 @@
 //! The likelihood of one model on one series as a function of its parameters, with its score and average
-//! information; counts its evaluations and allocates nothing in them once its buffers have grown.
+//! information; allocates nothing in an evaluation once its buffers have grown.
 
+use crate::estimate::{Answer, Question};
 use crate::evaluation::{EvaluationError, data_of};
 use crate::filter::{self, Data, Keep, Pass};
 use crate::information::Information;
@@ -87,67 +88,36 @@ impl Workspace {
     }
 }
 
-/// The function that estimation climbs.
+/// A likelihood that answers the questions of a search.
 pub(crate) struct Objective<'a> {
     pub(crate) model: Model,
     system: System,
     data: Data<'a>,
     workspace: &'a mut Workspace,
-    /// Likelihood evaluations so far, with or without derivatives.
-    pub(crate) evaluations: usize,
-}
-
-/// The likelihood at one point and what its shape needs.
-#[derive(Debug, Clone, Copy)]
-pub(crate) struct Value {
-    pub(crate) log_likelihood: f64,
-    /// Residual sum of squares of the reduced rows: `n - d` at the best common scale of all variances.
-    pub(crate) rss: f64,
-    /// n - d.
-    pub(crate) degrees: f64,
 }
 
 impl<'a> Objective<'a> {
     pub(crate) fn new(model: Model, data: Data<'a>, workspace: &'a mut Workspace) -> Self {
         let system = model.system();
-        Self { model, system, data, workspace, evaluations: 0 }
+        Self { model, system, data, workspace }
     }
 
-    /// The likelihood alone.
-    pub(crate) fn value(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
-        self.fill(values)?;
-        filter::run(&self.system, self.data, Keep::Likelihood, &mut self.workspace.pass)?;
-        Ok(self.reached())
-    }
-
-    /// The likelihood with score and information, which then stand in [`Self::gradient`] and [`Self::information`].
-    pub(crate) fn full(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
-        self.fill(values)?;
-        evaluate(&self.model, &self.system, self.data, self.workspace)?;
-        Ok(self.reached())
-    }
-
-    fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
-        self.evaluations += 1;
-        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)
-    }
-
-    fn reached(&self) -> Value {
-        let pass = &self.workspace.pass;
-        Value {
+    /// The likelihood at the point in question, with score and information where they are asked for.
+    pub(crate) fn answer(&mut self, question: Question<'_>) -> Result<Answer<'_>, EvaluationError> {
+        self.model.fill(question.values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
+        let with = question.derivatives;
+        if with {
+            evaluate(&self.model, &self.system, self.data, self.workspace)?;
+        } else {
+            filter::run(&self.system, self.data, Keep::Likelihood, &mut self.workspace.pass)?;
+        }
+        let Workspace { pass, score, information } = &*self.workspace;
+        Ok(Answer {
             log_likelihood: pass.log_likelihood,
             rss: pass.reduction.rss(),
             degrees: pass.observed as f64 - pass.elements as f64,
-        }
-    }
-
-    /// Score at the last [`Self::full`] point, natural units.
-    pub(crate) fn gradient(&self) -> &[f64] {
-        &self.workspace.score.gradient
-    }
-
-    /// Average information at the last [`Self::full`] point, row-major, natural units.
-    pub(crate) fn information(&self) -> &[f64] {
-        &self.workspace.information.matrix
+            gradient: if with { &score.gradient } else { &[] },
+            information: if with { &information.matrix } else { &[] },
+        })
     }
 }
