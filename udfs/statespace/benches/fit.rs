@@ -4,7 +4,7 @@
 
 use std::hint::black_box;
 
-use criterion::{Criterion, criterion_group, criterion_main};
+use criterion::{Criterion, Throughput, criterion_group, criterion_main};
 use stillwell_statespace::structure::{Season, Structure, Trend};
 use stillwell_statespace::{
     Instructions, Likelihood, Likelihoods, Request, SeasonRequest, Series, TransformRequest, Workspace, fit,
@@ -84,6 +84,18 @@ fn benches(c: &mut Criterion) {
                 (black_box(fit.components(0.9)), black_box(fit.forecast(12, 0.9)))
             });
         });
+        let side_by_side: Vec<&Series> = many.iter().cycle().take(120).collect();
+        let mut group = c.benchmark_group("in lock step");
+        group.throughput(Throughput::Elements(side_by_side.len() as u64)).sample_size(20);
+        group.bench_function(format!("120 fits, {}", setting.name), |b| {
+            b.iter(|| {
+                for fit in fit_many(&side_by_side, &request, true, &mut workspace) {
+                    let fit = fit.expect("a fit");
+                    black_box((fit.components(0.9), fit.forecast(12, 0.9)));
+                }
+            });
+        });
+        group.finish();
         let at: Vec<&[f64]> = vec![&setting.values; Likelihoods::MOST];
         for instructions in Instructions::available() {
             let mut lanes =

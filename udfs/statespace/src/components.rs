@@ -6,7 +6,8 @@ use crate::forecast::{Path, Step};
 use crate::quantile::normal_quantile;
 use crate::results::{Components, Forecast, State};
 use crate::smoother::{Functional, Smoothed};
-use crate::structure::Role;
+use crate::structure::{Model, Role};
+use crate::system::System;
 use crate::totals::Totals;
 use crate::transform::{Transform, Unit};
 
@@ -84,6 +85,31 @@ impl ForecastScale {
     }
 }
 
+/// The functionals whose smoothing [`Fit::components`] asks for.
+pub(crate) fn of_components(model: &Model, system: &System) -> Vec<Functional> {
+    functionals(model, system, true).1
+}
+
+/// The functionals of all components of a model, and what each is for.
+fn functionals(model: &Model, system: &System, signal: bool) -> (Vec<Part>, Vec<Functional>) {
+    let of = |role| Functional::of(role, model, system);
+    let mut list: Vec<(Part, Option<Functional>)> = vec![
+        (Part::Level, of(Role::Level)),
+        (Part::Slope, of(Role::Slope)),
+        (Part::Seasonal, of(Role::Season)),
+        (Part::Cycle, of(Role::Cycle)),
+        (Part::Autoregression, of(Role::Autoregression)),
+    ];
+    for &(state, driver) in &system.driver_loads {
+        list.push((Part::Effect(driver), Some(Functional::DriverEffect { state, driver })));
+        list.push((Part::Coefficient(driver), of(Role::Driver(driver))));
+    }
+    if signal {
+        list.push((Part::Signal, Some(Functional::Signal)));
+    }
+    list.into_iter().filter_map(|(part, f)| f.map(|f| (part, f))).unzip()
+}
+
 impl Fit {
     /// Smoothed components along the grid of the history. `coverage` of the interval of the signal, between 0 and 1.
     ///
@@ -143,22 +169,7 @@ impl Fit {
 
     /// The functionals of all components this fit has, and what each is for.
     fn functionals(&self, signal: bool) -> (Vec<Part>, Vec<Functional>) {
-        let evaluation = &self.evaluation;
-        let mut list: Vec<(Part, Option<Functional>)> = vec![
-            (Part::Level, evaluation.functional(Role::Level)),
-            (Part::Slope, evaluation.functional(Role::Slope)),
-            (Part::Seasonal, evaluation.functional(Role::Season)),
-            (Part::Cycle, evaluation.functional(Role::Cycle)),
-            (Part::Autoregression, evaluation.functional(Role::Autoregression)),
-        ];
-        for driver in 0..self.drivers.1.len() {
-            list.push((Part::Effect(driver), evaluation.effect(driver)));
-            list.push((Part::Coefficient(driver), evaluation.functional(Role::Driver(driver))));
-        }
-        if signal {
-            list.push((Part::Signal, Some(Functional::Signal)));
-        }
-        list.into_iter().filter_map(|(part, f)| f.map(|f| (part, f))).unzip()
+        functionals(self.evaluation.model(), self.evaluation.system(), signal)
     }
 
     /// Components from smoothed or predicted functionals; `first` is the grid point of their first element.

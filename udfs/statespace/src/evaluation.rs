@@ -1,10 +1,13 @@
 //! A model at given parameter values, run over one series: likelihood, smoothed functions of the states, one-step
 //! errors and forecasts, all on the scale of the series as handed in.
 
-use crate::filter::{End, FilterError, Keep};
+use std::sync::Arc;
+
+use crate::filter::{End, FilterError, Keep, Pass};
 use crate::forecast::{self, Step};
 use crate::instructions::Instructions;
-use crate::kernel::{Buffers, Kernel, Width};
+use crate::kernel::{Buffers, Kernel};
+use crate::lanes::Real;
 use crate::one_step::{self, OneStep};
 use crate::request::Series;
 use crate::results::State;
@@ -51,7 +54,7 @@ impl From<FilterError> for EvaluationError {
 /// One filtered series.
 #[derive(Debug, Clone)]
 pub struct Evaluation {
-    model: Model,
+    model: Arc<Model>,
     system: System,
     series: Series,
     log_likelihood: f64,
@@ -60,7 +63,7 @@ pub struct Evaluation {
     one_step: OneStep,
     end: End,
     /// What has been smoothed already.
-    smoothed: Option<(Vec<Functional>, Smoothing)>,
+    smoothed: Option<(Arc<[Functional]>, Smoothing)>,
 }
 
 impl Evaluation {
@@ -81,18 +84,17 @@ impl Evaluation {
     pub fn with_system(model: Model, system: System, series: Series) -> Result<Self, EvaluationError> {
         let mut kernel = kernel_of(&model, &system, &series);
         kernel.filter(Keep::Ends, Instructions::Baseline);
-        Self::of_lane(&kernel, 0, model, system, series)
+        Self::of_lane(&kernel.buffers.pass, 0, Arc::new(model), system, series)
     }
 
     /// What the pass of a lane found, before its rows are whitened. The pass must have kept its ends.
-    pub(crate) fn of_lane<V: Width>(
-        kernel: &Kernel<V>,
+    pub(crate) fn of_lane<V: Real>(
+        pass: &Pass<V>,
         lane: usize,
-        model: Model,
+        model: Arc<Model>,
         system: System,
         series: Series,
     ) -> Result<Self, EvaluationError> {
-        let pass = &kernel.buffers.pass;
         Ok(Self {
             model,
             system,
@@ -136,7 +138,7 @@ impl Evaluation {
 
     /// Smoothed sum of the loads of one component (mean and standard error along the grid).
     pub fn component(&self, role: Role) -> Option<State> {
-        let functional = self.functional(role)?;
+        let functional = Functional::of(role, &self.model, &self.system)?;
         let smoothing = self.smooth(&[functional]);
         smoothing.functionals.into_iter().next().map(State::from)
     }
@@ -169,23 +171,18 @@ impl Evaluation {
 
     pub(crate) fn smooth(&self, functionals: &[Functional]) -> Smoothing {
         if let Some((smoothed, smoothing)) = &self.smoothed
-            && smoothed == functionals
+            && **smoothed == *functionals
         {
             return smoothing.clone();
         }
         let mut kernel = kernel_of(&self.model, &self.system, &self.series);
-        kernel.smooth(functionals, self.level(), Instructions::Baseline, |_| {});
+        kernel.smooth(functionals, self.model.level(), Instructions::Baseline, |_| {});
         kernel.buffers.smoother.lane(0, self.series.observed.len())
     }
 
     /// Keeps a smoothing for [`Self::smooth`].
-    pub(crate) fn remember(&mut self, functionals: &[Functional], smoothing: Smoothing) {
-        self.smoothed = Some((functionals.to_vec(), smoothing));
-    }
-
-    /// The state whose shifts are looked for.
-    pub(crate) fn level(&self) -> Option<usize> {
-        self.model.state_specs().iter().position(|s| s.role == Role::Level)
+    pub(crate) fn remember(&mut self, functionals: &Arc<[Functional]>, smoothing: Smoothing) {
+        self.smoothed = Some((Arc::clone(functionals), smoothing));
     }
 
     pub(crate) fn ahead(
@@ -218,36 +215,6 @@ impl Evaluation {
 
     pub(crate) fn series(&self) -> &Series {
         &self.series
-    }
-
-    /// What a component adds to the signal, or for the slope and a coefficient its state.
-    pub(crate) fn functional(&self, role: Role) -> Option<Functional> {
-        let states = self.model.state_specs();
-        let of_role = || states.iter().enumerate().filter(move |(_, s)| s.role == role);
-        match role {
-            Role::Irregular => None,
-            Role::Slope => of_role().next().map(|(i, _)| Functional::States(vec![(i, 1.0)])),
-            Role::Driver(_) => of_role().next().map(|(i, _)| Functional::States(vec![(i, 1.0)])),
-            _ => {
-                let loads: Vec<(usize, f64)> = self
-                    .system
-                    .fixed_loads
-                    .iter()
-                    .copied()
-                    .filter(|&(state, _)| states[state].role == role)
-                    .collect();
-                (!loads.is_empty()).then_some(Functional::States(loads))
-            }
-        }
-    }
-
-    /// The effect of a drifting driver.
-    pub(crate) fn effect(&self, driver: usize) -> Option<Functional> {
-        self.system
-            .driver_loads
-            .iter()
-            .find(|&&(_, d)| d == driver)
-            .map(|&(state, driver)| Functional::DriverEffect { state, driver })
     }
 }
 

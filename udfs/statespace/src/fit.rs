@@ -1,5 +1,7 @@
 //! A fitted series: from the request to the estimate, and the diagnostics of it.
 
+mod exactness;
+
 use crate::box_cox;
 use crate::choose::{self, Choice};
 use crate::error::Trouble;
@@ -50,8 +52,7 @@ pub fn fit(series: &Series, request: &Request, workspace: &mut Workspace) -> Res
     }
     let power = box_cox::power(series, request, &choice, workspace)?;
     let choice = Choice { transform: Transform::BoxCox(power), ..choice };
-    let fit = fit_as(series, request, &choice, workspace)?;
-    Ok(Fit { power_estimated: true, ..fit })
+    Ok(fit_as(series, request, &choice, workspace)?.with_power(true))
 }
 
 /// Fits one series in the structure and on the scale of `choice`.
@@ -64,6 +65,58 @@ pub(crate) fn fit_as(
     choice: &Choice,
     workspace: &mut Workspace,
 ) -> Result<Fit, Trouble> {
+    fit_prepared(prepare(series, request, choice, workspace)?, request, workspace)
+}
+
+/// Fits a prepared series.
+///
+/// # Errors
+/// As [`fit`].
+pub(crate) fn fit_prepared(
+    prepared: Prepared,
+    request: &Request,
+    workspace: &mut Workspace,
+) -> Result<Fit, Trouble> {
+    let model = prepared.structure.model();
+    let mut objective = Objective::new(model.clone(), &prepared.working, workspace);
+    let trouble = |error| trouble_of(error, &model, request);
+    let estimate =
+        estimate::maximise(&mut objective, &prepared.known, &prepared.working.observed).map_err(trouble)?;
+    drop(objective);
+    let evaluation =
+        Evaluation::new(model.clone(), &estimate.values, prepared.working.clone()).map_err(trouble)?;
+    finish(prepared, request, estimate, evaluation)
+}
+
+/// A series that is ready to be estimated.
+#[derive(Debug, Clone)]
+pub(crate) struct Prepared {
+    pub(crate) structure: Structure,
+    transform: Transform,
+    modelled: Vec<f64>,
+    unknown: Vec<bool>,
+    plan: Vec<Vec<f64>>,
+    scaling: Scaling,
+    /// The series on the scale that is worked on.
+    pub(crate) working: Series,
+    /// Known parameters on that scale.
+    pub(crate) known: Vec<Option<f64>>,
+    /// What takes each parameter to the model's scale.
+    factors: Vec<f64>,
+    /// Size of an error of the data's own last digits, on the model's scale.
+    rounding: f64,
+}
+
+/// Transforms, checks and scales one series for the structure of `choice`.
+///
+/// # Errors
+/// As [`fit`].
+pub(crate) fn prepare(
+    series: &Series,
+    request: &Request,
+    choice: &Choice,
+    workspace: &mut Workspace,
+) -> Result<Prepared, Trouble> {
     let Choice { structure, transform, .. } = choice.clone();
     let modelled: Vec<f64> = series.observed.iter().map(|&v| transform.forward(v)).collect();
     let (filled, unknown) = fill_drivers(series, request, &modelled)?;
@@ -85,21 +138,35 @@ pub(crate) fn fit_as(
     let known: Vec<Option<f64>> = known.iter().zip(&factors).map(|(k, f)| k.map(|v| v / f)).collect();
     let rounding = ROUNDING * modelled.iter().filter(|v| !v.is_nan()).fold(0.0_f64, |a, v| a.max(v.abs()));
     if structure.trend == Trend::Damped
+        && exactness::may_be_exact(&structure, &working, rounding / scaling.unit)
         && starts::is_exact(&straightened(&structure), &working, rounding / scaling.unit, workspace)
     {
         return Err(Trouble::ExactFit);
     }
-    let mut objective = Objective::new(model.clone(), &working, workspace);
-    let trouble = |error| trouble_of(error, &model, request);
-    let estimate = estimate::maximise(&mut objective, &known, &working.observed).map_err(trouble)?;
-    let evaluation = Evaluation::new(model.clone(), &estimate.values, working).map_err(trouble)?;
+    let plan = series.drivers.iter().chain(&series.drifting_drivers).cloned().collect();
+    Ok(Prepared { structure, transform, modelled, unknown, plan, scaling, working, known, factors, rounding })
+}
+
+/// The fit of a prepared series from its estimate and the evaluation there.
+///
+/// # Errors
+/// As [`fit`].
+pub(crate) fn finish(
+    prepared: Prepared,
+    request: &Request,
+    estimate: Estimate,
+    evaluation: Evaluation,
+) -> Result<Fit, Trouble> {
+    let Prepared { structure, transform, modelled, unknown, plan, scaling, known, factors, rounding, .. } =
+        prepared;
     if reproduces(&evaluation, rounding, scaling.unit) {
         return Err(Trouble::ExactFit);
     }
+    let model = evaluation.model();
     let parameters: Vec<Parameter> = (0..factors.len())
         .map(|i| Parameter {
             name: model.parameters()[i].name.clone(),
-            value: if means_nothing(&model, &known, &estimate.values, i) {
+            value: if means_nothing(model, &known, &estimate.values, i) {
                 f64::NAN
             } else {
                 estimate.values[i] * factors[i]
@@ -122,7 +189,7 @@ pub(crate) fn fit_as(
         modelled,
         drivers: (request.drivers.clone(), request.drifting_drivers.clone()),
         unknown,
-        plan: series.drivers.iter().chain(&series.drifting_drivers).cloned().collect(),
+        plan,
         parameters,
         estimate,
     })
@@ -226,7 +293,7 @@ fn known_values(model: &Model, request: &Request) -> Vec<Option<f64>> {
     model.parameters().iter().map(|p| value_of(&p.name)).collect()
 }
 
-fn trouble_of(error: EvaluationError, model: &Model, request: &Request) -> Trouble {
+pub(crate) fn trouble_of(error: EvaluationError, model: &Model, request: &Request) -> Trouble {
     match error {
         EvaluationError::Undetermined(element) => {
             let states = model.diffuse_elements() - request.drivers.len();
@@ -255,6 +322,11 @@ fn trouble_of(error: EvaluationError, model: &Model, request: &Request) -> Troub
 }
 
 impl Fit {
+    /// Notes whether the power of the transform was estimated.
+    pub(crate) fn with_power(self, estimated: bool) -> Self {
+        Self { power_estimated: estimated, ..self }
+    }
+
     /// The structure that was fitted.
     pub fn structure(&self) -> &Structure {
         &self.structure

@@ -3,7 +3,7 @@
 use crate::evaluation::EvaluationError;
 use crate::filter::Keep;
 use crate::instructions::Instructions;
-use crate::kernel::{Buffers, Kernel, Width};
+use crate::kernel::{Buffers, Kernel};
 use crate::lanes::{Lanes, MOST_LANES};
 use crate::request::Series;
 use crate::structure::Model;

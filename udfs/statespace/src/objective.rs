@@ -1,6 +1,7 @@
 //! The likelihood of one model on one series as a function of its parameters, with its score and average
-//! information; counts its evaluations and allocates nothing in them once its buffers have grown.
+//! information; allocates nothing in an evaluation once its buffers have grown.
 
+use crate::estimate::{Answer, Question};
 use crate::evaluation::EvaluationError;
 use crate::filter::Keep;
 use crate::instructions::Instructions;
@@ -36,24 +37,12 @@ impl Workspace {
     }
 }
 
-/// The function that estimation climbs.
+/// A likelihood that answers the questions of a search.
 pub(crate) struct Objective<'a> {
     pub(crate) model: Model,
     system: System,
     kernel: Kernel<f64>,
     workspace: &'a mut Workspace,
-    /// Likelihood evaluations so far, with or without derivatives.
-    pub(crate) evaluations: usize,
-}
-
-/// The likelihood at one point and what its shape needs.
-#[derive(Debug, Clone, Copy)]
-pub(crate) struct Value {
-    pub(crate) log_likelihood: f64,
-    /// Residual sum of squares of the reduced rows: `n - d` at the best common scale of all variances.
-    pub(crate) rss: f64,
-    /// n - d.
-    pub(crate) degrees: f64,
 }
 
 impl<'a> Objective<'a> {
@@ -62,47 +51,27 @@ impl<'a> Objective<'a> {
         let buffers = std::mem::take(&mut workspace.single);
         let mut kernel = Kernel::new(&model, &system, series.drifting_drivers.len(), buffers);
         kernel.data.load(0, series);
-        Self { model, system, kernel, workspace, evaluations: 0 }
+        Self { model, system, kernel, workspace }
     }
 
-    /// The likelihood alone.
-    pub(crate) fn value(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
-        self.fill(values)?;
-        self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
-        self.reached()
-    }
-
-    /// The likelihood with score and information, which then stand in [`Self::gradient`] and [`Self::information`].
-    pub(crate) fn full(&mut self, values: &[f64]) -> Result<Value, EvaluationError> {
-        self.fill(values)?;
-        self.kernel.score(Instructions::Baseline);
-        self.reached()
-    }
-
-    fn fill(&mut self, values: &[f64]) -> Result<(), EvaluationError> {
-        self.evaluations += 1;
-        self.model.fill(values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
+    /// The likelihood at the point in question, with score and information where they are asked for.
+    pub(crate) fn answer(&mut self, question: Question<'_>) -> Result<Answer<'_>, EvaluationError> {
+        self.model.fill(question.values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;
         self.kernel.set_lane(0, &self.model, &self.system);
-        Ok(())
-    }
-
-    fn reached(&self) -> Result<Value, EvaluationError> {
-        let pass = &self.kernel.buffers.pass;
-        Ok(Value {
+        let with = question.derivatives;
+        if with {
+            self.kernel.score(Instructions::Baseline);
+        } else {
+            self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
+        }
+        let Buffers { pass, score, information, .. } = &self.kernel.buffers;
+        Ok(Answer {
             log_likelihood: pass.reached(0)?,
             rss: pass.reduction.rss(),
             degrees: pass.observed[0] as f64 - pass.elements as f64,
+            gradient: if with { &score.gradient } else { &[] },
+            information: if with { &information.matrix } else { &[] },
         })
-    }
-
-    /// Score at the last [`Self::full`] point, natural units.
-    pub(crate) fn gradient(&self) -> &[f64] {
-        &self.kernel.buffers.score.gradient
-    }
-
-    /// Average information at the last [`Self::full`] point, row-major, natural units.
-    pub(crate) fn information(&self) -> &[f64] {
-        &self.kernel.buffers.information.matrix
     }
 }
 

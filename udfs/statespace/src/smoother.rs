@@ -11,6 +11,8 @@ use crate::data::Data;
 use crate::dynamics::{Dynamics, add_column, packed_at, times_vector};
 use crate::filter::Pass;
 use crate::lanes::{Mask, Real};
+use crate::structure::{Model, Role};
+use crate::system::System;
 
 /// A linear function of the states at a point.
 #[derive(Debug, Clone, PartialEq)]
@@ -26,6 +28,26 @@ pub(crate) enum Functional {
     },
     /// `Z_t a_t + x_t b`: the observation without its irregular.
     Signal,
+}
+
+impl Functional {
+    /// What a component adds to the signal, or for the slope and a coefficient its state; `None` where the model has no such component.
+    pub(crate) fn of(role: Role, model: &Model, system: &System) -> Option<Self> {
+        let states = model.state_specs();
+        match role {
+            Role::Irregular => None,
+            Role::Slope | Role::Driver(_) => {
+                let state = states.iter().position(|s| s.role == role)?;
+                Some(Self::States(vec![(state, 1.0)]))
+            }
+            _ => {
+                let loads = system.fixed_loads.iter().copied();
+                let loads: Vec<(usize, f64)> =
+                    loads.filter(|&(state, _)| states[state].role == role).collect();
+                (!loads.is_empty()).then_some(Self::States(loads))
+            }
+        }
+    }
 }
 
 /// Mean and variance along the grid.

@@ -5,6 +5,7 @@
 //! whole ray. The best points become starts: one where all parameters are variances, more where a cycle or an
 //! autoregression makes several optima likely.
 
+use crate::estimate::{Answer, Question};
 use crate::evaluation::EvaluationError;
 use crate::objective::{Objective, Workspace};
 use crate::request::Series;
@@ -21,68 +22,116 @@ const RATIOS: [[f64; 5]; 6] = [
 ];
 
 /// One-step errors below the square root of this share of the series' own movement are rounding.
-const EXACT: f64 = 1e-22;
+pub(crate) const EXACT: f64 = 1e-22;
 
-/// Starts in order of promise, natural units.
-///
-/// # Errors
-/// When no point of the grid can be evaluated; the last reason.
-pub(crate) fn choose(
-    objective: &mut Objective<'_>,
-    known: &[Option<f64>],
-    observed: &[f64],
-) -> Result<Vec<Vec<f64>>, EvaluationError> {
-    let scale = difference_variance(observed);
-    let shapes = shape_grid(objective);
-    let rescale = !known.iter().flatten().any(|v| *v > 0.0) || only_shapes_known(objective, known);
-    let mut found: Vec<(f64, Vec<f64>, usize)> = Vec::new();
-    let mut trouble = EvaluationError::NotPositive;
-    for ratios in RATIOS {
-        for (group, shape) in shapes.iter().enumerate() {
-            let mut values = point(objective, known, ratios, scale, shape);
-            match objective.value(&values) {
-                Ok(value) => {
-                    let mut log_likelihood = value.log_likelihood;
-                    if value.rss <= value.degrees * EXACT {
-                        return Err(EvaluationError::ExactFit);
-                    }
-                    if rescale && value.rss > 0.0 && value.degrees > 0.0 {
-                        let s = value.rss / value.degrees;
-                        log_likelihood -= 0.5 * (value.degrees * s.ln() + value.rss / s - value.rss);
-                        for (i, v) in values.iter_mut().enumerate() {
-                            if known[i].is_none() && is_variance(objective, i) {
-                                *v *= s;
-                            }
-                        }
-                    }
-                    found.push((log_likelihood, values, group));
-                }
-                Err(error) => trouble = error,
+/// One point of the grid.
+#[derive(Debug, Clone)]
+struct Point {
+    values: Vec<f64>,
+    /// Which combination of shapes it has.
+    shape: usize,
+    /// At the best scale; minus infinity where it could not be evaluated.
+    log_likelihood: f64,
+}
+
+/// The grid of starts, evaluated point by point.
+#[derive(Debug, Clone)]
+pub(crate) struct Starts {
+    points: Vec<Point>,
+    /// Point that is asked about.
+    at: usize,
+    /// The open variances, to be brought to their best scale; empty where known ones fix the scale.
+    scaled: Vec<usize>,
+    /// How many starts are worth a climb.
+    most: usize,
+    several_shapes: bool,
+    trouble: EvaluationError,
+}
+
+impl Starts {
+    /// The grid of a model for a series.
+    pub(crate) fn new(model: &Model, known: &[Option<f64>], observed: &[f64]) -> Self {
+        let scale = difference_variance(observed);
+        let shapes = shape_grid(model);
+        let rescale = !known.iter().flatten().any(|v| *v > 0.0) || only_shapes_known(model, known);
+        let open = |&i: &usize| known[i].is_none() && is_variance(model, i);
+        let points = RATIOS
+            .iter()
+            .flat_map(|ratios| shapes.iter().enumerate().map(move |(shape, values)| (ratios, shape, values)))
+            .map(|(ratios, shape, values)| Point {
+                values: point(model, known, *ratios, scale, values),
+                shape,
+                log_likelihood: f64::NEG_INFINITY,
+            })
+            .collect();
+        // A cycle or an autoregression has optima of its own for each period and sign; a damped slope seldom has.
+        let several = model
+            .parameters()
+            .iter()
+            .any(|p| matches!(p.role, Role::Cycle | Role::Autoregression | Role::General));
+        Self {
+            points,
+            at: 0,
+            scaled: if rescale { (0..known.len()).filter(open).collect() } else { Vec::new() },
+            most: if several { 4 } else { 1 },
+            several_shapes: shapes.len() > 1,
+            trouble: EvaluationError::NotPositive,
+        }
+    }
+
+    /// The next point to be evaluated.
+    pub(crate) fn ask(&self) -> Option<Question<'_>> {
+        self.points.get(self.at).map(|point| Question { values: &point.values, derivatives: false })
+    }
+
+    /// Takes the likelihood at that point.
+    pub(crate) fn tell(&mut self, answer: Result<Answer<'_>, EvaluationError>) {
+        let Some(point) = self.points.get_mut(self.at) else { return };
+        self.at += 1;
+        let answer = match answer {
+            Ok(answer) => answer,
+            Err(error) => {
+                self.trouble = error;
+                return;
+            }
+        };
+        if answer.rss <= answer.degrees * EXACT {
+            self.trouble = EvaluationError::ExactFit;
+            self.points.clear();
+            return;
+        }
+        point.log_likelihood = answer.log_likelihood;
+        if !self.scaled.is_empty() && answer.rss > 0.0 && answer.degrees > 0.0 {
+            let s = answer.rss / answer.degrees;
+            point.log_likelihood -= 0.5 * (answer.degrees * s.ln() + answer.rss / s - answer.rss);
+            for &i in &self.scaled {
+                point.values[i] *= s;
             }
         }
     }
-    found.sort_by(|a, b| b.0.total_cmp(&a.0));
-    // A cycle or an autoregression has optima of its own for each period and sign; a damped slope seldom has.
-    let several = objective
-        .model
-        .parameters()
-        .iter()
-        .any(|p| matches!(p.role, Role::Cycle | Role::Autoregression | Role::General));
-    let most = if several { 4 } else { 1 };
-    let mut starts: Vec<Vec<f64>> = Vec::new();
-    let mut groups: Vec<usize> = Vec::new();
-    for (_, values, group) in &found {
-        // With shapes, starts of different shape: optima lie apart in period and damping.
-        if shapes.len() > 1 && groups.contains(group) {
-            continue;
+
+    /// Starts in order of promise, natural units.
+    ///
+    /// # Errors
+    /// When no point of the grid could be evaluated, or the series is fitted exactly; the last reason.
+    pub(crate) fn best(&mut self) -> Result<Vec<Vec<f64>>, EvaluationError> {
+        self.points.retain(|point| point.log_likelihood > f64::NEG_INFINITY);
+        self.points.sort_by(|a, b| b.log_likelihood.total_cmp(&a.log_likelihood));
+        let mut starts: Vec<Vec<f64>> = Vec::new();
+        let mut taken: Vec<usize> = Vec::new();
+        for point in &self.points {
+            // With shapes, starts of different shape: optima lie apart in period and damping.
+            if self.several_shapes && taken.contains(&point.shape) {
+                continue;
+            }
+            taken.push(point.shape);
+            starts.push(point.values.clone());
+            if starts.len() == self.most {
+                break;
+            }
         }
-        groups.push(*group);
-        starts.push(values.clone());
-        if starts.len() == most {
-            break;
-        }
+        if starts.is_empty() { Err(self.trouble) } else { Ok(starts) }
     }
-    if starts.is_empty() { Err(trouble) } else { Ok(starts) }
 }
 
 /// True when the model, with an irregular and nothing that drifts, reproduces the series to rounding. `rounding`: size of an error
@@ -99,28 +148,23 @@ pub(crate) fn is_exact(model: &Model, series: &Series, rounding: f64, workspace:
         .collect();
     let mut objective = Objective::new(model.clone(), series, workspace);
     let limit = EXACT.max(rounding * rounding);
-    objective.value(&values).is_ok_and(|value| value.degrees > 0.0 && value.rss <= value.degrees * limit)
+    objective
+        .answer(Question { values: &values, derivatives: false })
+        .is_ok_and(|answer| answer.degrees > 0.0 && answer.rss <= answer.degrees * limit)
 }
 
-fn is_variance(objective: &Objective<'_>, i: usize) -> bool {
-    objective.model.parameters()[i].link == Link::Variance
+fn is_variance(model: &Model, i: usize) -> bool {
+    model.parameters()[i].link == Link::Variance
 }
 
-fn only_shapes_known(objective: &Objective<'_>, known: &[Option<f64>]) -> bool {
-    known.iter().enumerate().all(|(i, k)| !is_variance(objective, i) || k.is_none_or(|v| v == 0.0))
+fn only_shapes_known(model: &Model, known: &[Option<f64>]) -> bool {
+    known.iter().enumerate().all(|(i, k)| !is_variance(model, i) || k.is_none_or(|v| v == 0.0))
 }
 
 /// Parameter values of one grid point.
-fn point(
-    objective: &Objective<'_>,
-    known: &[Option<f64>],
-    ratios: [f64; 5],
-    scale: f64,
-    shape: &[f64],
-) -> Vec<f64> {
+fn point(model: &Model, known: &[Option<f64>], ratios: [f64; 5], scale: f64, shape: &[f64]) -> Vec<f64> {
     let mut shapes = shape.iter();
-    objective
-        .model
+    model
         .parameters()
         .iter()
         .enumerate()
@@ -135,7 +179,7 @@ fn point(
                             Role::Slope => ratios[2],
                             Role::Season => ratios[3],
                             Role::Driver(_) => ratios[4],
-                            Role::General => general_ratio(objective, i, ratios),
+                            Role::General => general_ratio(model, i, ratios),
                             Role::Cycle | Role::Autoregression => 0.5,
                         }
                 }
@@ -148,8 +192,8 @@ fn point(
 
 /// Ratio of a disturbance of a system given as matrices: a level's, taken to the size that it has on the observation; a slope's where it
 /// does not reach the observation at once.
-fn general_ratio(objective: &Objective<'_>, parameter: usize, ratios: [f64; 5]) -> f64 {
-    let assembly = &objective.model.assembly;
+fn general_ratio(model: &Model, parameter: usize, ratios: [f64; 5]) -> f64 {
+    let assembly = &model.assembly;
     let loads =
         assembly.shared.iter().find(|noise| noise.parameter == Some(parameter)).map(|noise| &noise.loads);
     let reach: f64 = loads
@@ -164,9 +208,9 @@ fn general_ratio(objective: &Objective<'_>, parameter: usize, ratios: [f64; 5]) 
 }
 
 /// Combinations of values for the parameters that are not variances, each in the order of the parameters.
-fn shape_grid(objective: &Objective<'_>) -> Vec<Vec<f64>> {
+fn shape_grid(model: &Model) -> Vec<Vec<f64>> {
     let mut grid: Vec<Vec<f64>> = vec![Vec::new()];
-    for spec in objective.model.parameters() {
+    for spec in model.parameters() {
         let values: Vec<f64> = match (spec.link, spec.role) {
             (Link::Variance, _) => continue,
             (Link::Between { .. }, Role::Slope) => vec![0.9, 0.6],

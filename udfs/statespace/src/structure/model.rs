@@ -118,6 +118,11 @@ impl Model {
         &self.assembly.states
     }
 
+    /// The state whose shifts are looked for.
+    pub(crate) fn level(&self) -> Option<usize> {
+        self.assembly.states.iter().position(|s| s.role == Role::Level)
+    }
+
     /// Diffuse elements d: non-stationary states and constant driver coefficients.
     pub fn diffuse_elements(&self) -> usize {
         self.assembly.states.iter().filter(|s| s.diffuse).count() + self.drivers

@@ -1,0 +1,182 @@
+//! The stages of a search: the starts, a climb from each that is worth it, and a second look where none ended.
+
+use super::climb::Climb;
+use super::layout::Layout;
+use super::{Answer, Estimate, Question};
+use crate::evaluation::EvaluationError;
+use crate::starts::Starts;
+use crate::structure::Model;
+
+/// Where a search stands.
+#[derive(Debug, Clone)]
+enum Stage {
+    /// Nothing is open: one evaluation at the values that are known.
+    Known(Vec<f64>),
+    /// The starts are compared.
+    Starts,
+    /// A climb from a start.
+    Climb(Climb),
+    /// A climb with one variance less, for a best climb that did not end.
+    Without(Climb),
+    Done,
+}
+
+/// A search for the maximum of one likelihood that it does not own: it asks and is told.
+#[derive(Debug, Clone)]
+pub(crate) struct Search {
+    layout: Layout,
+    starts: Starts,
+    stage: Stage,
+    /// Starts that are still to be climbed from, the last one first.
+    waiting: Vec<Vec<f64>>,
+    /// Variances that are still to be left out, the last one first.
+    leaving: Vec<usize>,
+    best: Option<Climb>,
+    known: Option<Estimate>,
+    trouble: Option<EvaluationError>,
+    evaluations: usize,
+}
+
+impl Search {
+    /// A search for the parameters of `model` that `known` leaves open (`None`). `observed`: the series, for the size of the starts.
+    pub(crate) fn new(model: &Model, known: &[Option<f64>], observed: &[f64]) -> Self {
+        let stage = if known.iter().all(Option::is_some) {
+            Stage::Known(known.iter().map(|k| k.unwrap_or(0.0)).collect())
+        } else {
+            Stage::Starts
+        };
+        Self {
+            layout: Layout::new(model, known),
+            starts: Starts::new(model, known, observed),
+            stage,
+            waiting: Vec::new(),
+            leaving: Vec::new(),
+            best: None,
+            known: None,
+            trouble: None,
+            evaluations: 0,
+        }
+    }
+
+    /// The next question; `None` when the search has ended.
+    pub(crate) fn ask(&self) -> Option<Question<'_>> {
+        match &self.stage {
+            Stage::Known(values) => Some(Question { values, derivatives: false }),
+            Stage::Starts => self.starts.ask(),
+            Stage::Climb(climb) | Stage::Without(climb) => climb.ask(),
+            Stage::Done => None,
+        }
+    }
+
+    /// Takes the answer to the last question.
+    pub(crate) fn tell(&mut self, answer: Result<Answer<'_>, EvaluationError>) {
+        self.evaluations += 1;
+        match &mut self.stage {
+            Stage::Known(values) => {
+                match answer {
+                    Ok(answer) => {
+                        self.known = Some(Estimate {
+                            std_errors: vec![f64::NAN; values.len()],
+                            values: std::mem::take(values),
+                            log_likelihood: answer.log_likelihood,
+                            converged: true,
+                            evaluations: 1,
+                        });
+                    }
+                    Err(error) => self.trouble = Some(error),
+                }
+                self.stage = Stage::Done;
+            }
+            Stage::Starts => {
+                self.starts.tell(answer);
+                if self.starts.ask().is_none() {
+                    match self.starts.best() {
+                        Ok(starts) => self.waiting = starts,
+                        Err(error) => self.trouble = Some(error),
+                    }
+                    self.waiting.reverse();
+                    self.next_climb();
+                }
+            }
+            Stage::Climb(climb) => {
+                climb.tell(&self.layout, answer);
+                if climb.ask().is_none() {
+                    self.keep_better();
+                    self.next_climb();
+                }
+            }
+            Stage::Without(climb) => {
+                climb.tell(&self.layout, answer);
+                if climb.ask().is_none() {
+                    self.keep_as_good();
+                    self.next_without();
+                }
+            }
+            Stage::Done => {}
+        }
+    }
+
+    /// The estimate, once nothing is asked any more.
+    ///
+    /// # Errors
+    /// When the likelihood could not be evaluated at any start.
+    pub(crate) fn finish(self) -> Result<Estimate, EvaluationError> {
+        if let Some(trouble) = self.trouble {
+            return Err(trouble);
+        }
+        if let Some(known) = self.known {
+            return Ok(known);
+        }
+        let best = self.best.ok_or(EvaluationError::NotPositive)?;
+        Ok(Estimate {
+            std_errors: best.std_errors(&self.layout),
+            log_likelihood: best.log_likelihood,
+            converged: best.converged,
+            values: best.values,
+            evaluations: self.evaluations,
+        })
+    }
+
+    fn next_climb(&mut self) {
+        if let Some(start) = self.waiting.pop() {
+            self.stage = Stage::Climb(Climb::new(start, None));
+            return;
+        }
+        if let Some(best) = self.best.as_ref().filter(|best| !best.converged) {
+            self.leaving = best.falling(&self.layout);
+            self.leaving.reverse();
+        }
+        self.next_without();
+    }
+
+    /// A climb that did not end may creep along a ridge towards a variance of zero, where the other parameters would have to move
+    /// too before the likelihood is higher. Each variance that still falls is held at zero in turn, the others climb, and the best of
+    /// all is taken.
+    fn next_without(&mut self) {
+        self.stage = match (self.leaving.pop(), &self.best) {
+            (Some(i), Some(best)) => {
+                let mut values = best.values.clone();
+                values[i] = 0.0;
+                Stage::Without(Climb::new(values, Some(i)))
+            }
+            _ => Stage::Done,
+        };
+    }
+
+    fn keep_better(&mut self) {
+        let Stage::Climb(climb) = std::mem::replace(&mut self.stage, Stage::Done) else { return };
+        let than = self.best.as_ref().map_or(f64::NEG_INFINITY, |best| best.log_likelihood);
+        if climb.log_likelihood > than {
+            self.best = Some(climb);
+        }
+    }
+
+    fn keep_as_good(&mut self) {
+        let Stage::Without(climb) = std::mem::replace(&mut self.stage, Stage::Done) else { return };
+        let Some(best) = &self.best else { return };
+        let as_good = climb.log_likelihood >= best.log_likelihood - 1e-9;
+        if climb.log_likelihood > best.log_likelihood || as_good && climb.converged && !best.converged {
+            self.best = Some(climb);
+        }
+    }
+}
