@@ -8,6 +8,7 @@ use criterion::{Criterion, Throughput, criterion_group, criterion_main};
 use stillwell_statespace::structure::{Season, Structure, Trend};
 use stillwell_statespace::{
     Instructions, Likelihood, Likelihoods, Request, SeasonRequest, Series, TransformRequest, Workspace, fit,
+    fit_many,
 };
 
 #[path = "../tests/support/simulate.rs"]
