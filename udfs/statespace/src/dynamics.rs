@@ -6,6 +6,7 @@
 
 mod block;
 mod packed;
+mod season;
 
 pub(crate) use packed::{add_column, packed_at, packed_len, times_vector};
 
@@ -116,20 +117,22 @@ impl<V: Real> Dynamics<V> {
     /// State and load of each non-zero element of `Z_t`.
     #[inline(always)]
     pub(crate) fn loads(&self, drifting: &[Vec<V>], t: usize) -> impl Iterator<Item = (usize, V)> {
-        let of_drivers = self.driver_loads.iter().map(move |&(state, driver)| (state, drifting[driver][t]));
-        self.fixed_loads.iter().copied().chain(of_drivers)
+        let fixed = self.fixed_loads.len();
+        (0..fixed + self.driver_loads.len()).map(move |i| {
+            if i < fixed {
+                self.fixed_loads[i]
+            } else {
+                let (state, driver) = self.driver_loads[i - fixed];
+                (state, drifting[driver][t])
+            }
+        })
     }
 
     /// `x <- T x` for an `m x width` row-major matrix.
     #[inline(always)]
     pub(crate) fn forward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
         for (offset, block) in &self.blocks {
-            if block.shifts() {
-                x[offset * width..(offset + block.len()) * width].rotate_right(width);
-            }
-            for c in 0..width {
-                block.forward(x, |i| (offset + i) * width + c, spare);
-            }
+            block.forward(&mut x[offset * width..(offset + block.len()) * width], width, spare);
         }
     }
 
@@ -137,12 +140,7 @@ impl<V: Real> Dynamics<V> {
     #[inline(always)]
     pub(crate) fn backward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
         for (offset, block) in &self.blocks {
-            if block.shifts() {
-                x[offset * width..(offset + block.len()) * width].rotate_left(width);
-            }
-            for c in 0..width {
-                block.backward(x, |i| (offset + i) * width + c, spare);
-            }
+            block.backward(&mut x[offset * width..(offset + block.len()) * width], width, spare);
         }
     }
 
@@ -163,7 +161,9 @@ impl<V: Real> Dynamics<V> {
             }
             at += i + 1;
         }
-        self.congruence(next, spare, true);
+        for (first, block) in &self.blocks {
+            block.congruence(next, *first, self.states, spare, true);
+        }
         for (i, q) in self.q.iter().enumerate() {
             next[packed_at(i, i)] += *q;
         }
@@ -185,29 +185,8 @@ impl<V: Real> Dynamics<V> {
             }
             std::mem::swap(n, other);
         }
-        self.congruence(n, spare, false);
-    }
-
-    /// `p <- E p E'` block by block, `E` the block's forward or backward operation, its shift done already.
-    #[inline(always)]
-    fn congruence(&self, p: &mut [V], spare: &mut [V], forward: bool) {
-        for (offset, block) in &self.blocks {
-            let (first, len) = (*offset, block.len());
-            if matches!(block, Block::Keep) {
-                continue;
-            }
-            for other in 0..first {
-                let at = |i: usize| packed_at(first + i, 0) + other;
-                if forward { block.forward(p, at, spare) } else { block.backward(p, at, spare) }
-            }
-            for other in first + len..self.states {
-                let row = packed_at(other, first);
-                let at = |i: usize| row + i;
-                if forward { block.forward(p, at, spare) } else { block.backward(p, at, spare) }
-            }
-            if !matches!(block, Block::Negate) {
-                diagonal(block, p, first, spare, forward);
-            }
+        for (first, block) in &self.blocks {
+            block.congruence(n, *first, self.states, spare, false);
         }
     }
 
@@ -248,80 +227,6 @@ impl<V: Real> Dynamics<V> {
     pub(crate) fn spare_len(&self) -> usize {
         let largest = self.blocks.iter().map(|(_, block)| block.len()).max().unwrap_or(0);
         largest * (largest + 1)
-    }
-}
-
-/// `D <- E D E'` for the block's own part of a packed matrix: the whole square is written out, its columns changed, then its rows.
-#[inline(always)]
-fn diagonal<V: Real>(block: &Block<V>, p: &mut [V], first: usize, spare: &mut [V], forward: bool) {
-    let len = block.len();
-    if let Block::Season(len) = block {
-        return season_diagonal(p, first, *len, spare, forward);
-    }
-    let (square, spare) = spare.split_at_mut(len * len);
-    for i in 0..len {
-        for j in 0..=i {
-            let value = p[packed_at(first + i, first + j)];
-            square[i * len + j] = value;
-            square[j * len + i] = value;
-        }
-    }
-    for j in 0..len {
-        let column = |i: usize| i * len + j;
-        if forward { block.forward(square, column, spare) } else { block.backward(square, column, spare) }
-    }
-    for i in 0..len {
-        let row = |j: usize| i * len + j;
-        if forward { block.forward(square, row, spare) } else { block.backward(square, row, spare) }
-    }
-    for i in 0..len {
-        for j in 0..=i {
-            p[packed_at(first + i, first + j)] = square[i * len + j];
-        }
-    }
-}
-
-/// [`diagonal`] of a dummy season, where it takes additions alone.
-#[inline(always)]
-fn season_diagonal<V: Real>(p: &mut [V], first: usize, len: usize, spare: &mut [V], forward: bool) {
-    if forward {
-        // The first row becomes minus the sum of all rows.
-        let sums = &mut spare[..len];
-        sums.fill(V::zero());
-        for i in 0..len {
-            let start = packed_at(first + i, first);
-            let (above, own) = sums.split_at_mut(i);
-            for (j, to) in above.iter_mut().enumerate() {
-                let value = p[start + j];
-                *to += value;
-                own[0] += value;
-            }
-            own[0] += p[start + i];
-        }
-        let mut total = sums[0];
-        for sum in &sums[1..] {
-            total += *sum;
-        }
-        p[packed_at(first, first)] = total;
-        for j in 1..len {
-            p[packed_at(first + j, first)] = -sums[j];
-        }
-    } else {
-        // Every row less the last, the last negated; then the columns.
-        let last = packed_at(first + len - 1, first);
-        let corner = p[last + len - 1];
-        for i in 0..len - 1 {
-            let start = packed_at(first + i, first);
-            let shared = p[last + i] - corner;
-            for j in 0..=i {
-                let from_last = p[last + j];
-                p[start + j] -= from_last + shared;
-            }
-        }
-        for j in 0..len - 1 {
-            let value = p[last + j];
-            p[last + j] = corner - value;
-        }
     }
 }
 

@@ -1,9 +1,10 @@
-//! One diagonal block of the transition, with the numbers of every lane, and what it does to a vector.
+//! One diagonal block of the transition, with the numbers of every lane, and what it does to vectors and to covariances.
 //!
-//! A block changes `len` numbers in place, wherever they stand: a state's column in an array, a strip of a packed covariance. Blocks that
-//! shift (dummy season, autoregression) expect the shift to have been done: the caller moves indices instead of sums, see
-//! [`Block::shifts`].
+//! Most blocks have two states and are one operation on a pair of numbers. Blocks that shift (dummy season, autoregression) expect a
+//! covariance whose states have been shifted already: see [`Block::shifts`].
 
+use super::packed::packed_at;
+use super::season;
 use crate::lanes::Real;
 use crate::system::Op;
 
@@ -77,39 +78,152 @@ impl<V: Real> Block<V> {
         }
     }
 
-    /// True when the states of the block move down by one place, the last to the front, before [`Self::forward`], and up by one, the first to
-    /// the end, before [`Self::backward`].
+    /// True when the states of the block move down by one place, the last to the front, before a congruence forward, and up by one, the
+    /// first to the end, before one backward.
     #[inline(always)]
     pub(super) fn shifts(&self) -> bool {
         matches!(self, Self::Season(_) | Self::Autoregression(_))
     }
 
-    /// `x <- T x` for the numbers at `at(0)`, `at(1)`, …, shifted already.
+    /// `x <- T x` on the `len x width` rows of the block.
     #[inline(always)]
-    pub(super) fn forward(&self, x: &mut [V], at: impl Fn(usize) -> usize, spare: &mut [V]) {
+    pub(super) fn forward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
         match self {
             Self::Keep => {}
-            Self::Negate => x[at(0)] = -x[at(0)],
-            Self::Line => {
-                let slope = x[at(1)];
-                x[at(0)] += slope;
-            }
+            Self::Negate => x.iter_mut().for_each(|x| *x = -*x),
+            Self::Line => pairs(x, width, |a, b| (a + b, b)),
             Self::Damped(damping) => {
-                let slope = x[at(1)];
-                x[at(0)] += slope;
-                x[at(1)] = slope * *damping;
+                let damping = *damping;
+                pairs(x, width, |a, b| (a + b, b * damping));
             }
+            Self::Rotate(cos, sin) => {
+                let (cos, sin) = (*cos, *sin);
+                pairs(x, width, |a, b| (cos * a + sin * b, cos * b - sin * a));
+            }
+            Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
+                if self.shifts() {
+                    x.rotate_right(width);
+                }
+                for c in 0..width {
+                    self.long_forward(x, |i| i * width + c, spare);
+                }
+            }
+        }
+    }
+
+    /// `x <- T' x` on the `len x width` rows of the block.
+    #[inline(always)]
+    pub(super) fn backward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
+        match self {
+            Self::Keep => {}
+            Self::Negate => x.iter_mut().for_each(|x| *x = -*x),
+            Self::Line => pairs(x, width, |a, b| (a, a + b)),
+            Self::Damped(damping) => {
+                let damping = *damping;
+                pairs(x, width, |a, b| (a, a + damping * b));
+            }
+            Self::Rotate(cos, sin) => {
+                let (cos, sin) = (*cos, *sin);
+                pairs(x, width, |a, b| (cos * a - sin * b, cos * b + sin * a));
+            }
+            Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
+                if self.shifts() {
+                    x.rotate_left(width);
+                }
+                for c in 0..width {
+                    self.long_backward(x, |i| i * width + c, spare);
+                }
+            }
+        }
+    }
+
+    /// `p <- E p E'` on a packed `m x m` matrix, `E` the operation of this block on its states from `first` on, its shift done already.
+    #[inline(always)]
+    pub(super) fn congruence(&self, p: &mut [V], first: usize, m: usize, spare: &mut [V], forward: bool) {
+        match (self, forward) {
+            (Self::Keep, _) => {}
+            (Self::Negate, _) => {
+                let start = packed_at(first, 0);
+                p[start..start + first].iter_mut().for_each(|x| *x = -*x);
+                for other in first + 1..m {
+                    let at = packed_at(other, first);
+                    p[at] = -p[at];
+                }
+            }
+            (Self::Line, true) => pair_congruence(p, first, m, |a, b| (a + b, b)),
+            (Self::Line, false) => pair_congruence(p, first, m, |a, b| (a, a + b)),
+            (Self::Damped(damping), true) => {
+                let damping = *damping;
+                pair_congruence(p, first, m, |a, b| (a + b, b * damping));
+            }
+            (Self::Damped(damping), false) => {
+                let damping = *damping;
+                pair_congruence(p, first, m, |a, b| (a, a + damping * b));
+            }
+            (Self::Rotate(cos, sin), true) => {
+                let (cos, sin) = (*cos, *sin);
+                pair_congruence(p, first, m, |a, b| (cos * a + sin * b, cos * b - sin * a));
+            }
+            (Self::Rotate(cos, sin), false) => {
+                let (cos, sin) = (*cos, *sin);
+                pair_congruence(p, first, m, |a, b| (cos * a - sin * b, cos * b + sin * a));
+            }
+            (Self::Season(len), _) => season::congruence(p, first, *len, m, spare, forward),
+            (Self::Autoregression(_) | Self::Matrix(..), _) => {
+                self.long_congruence(p, first, m, spare, forward);
+            }
+        }
+    }
+
+    /// [`Self::congruence`] of a block of any length: strip by strip, then the block's own square, written out.
+    #[inline(always)]
+    fn long_congruence(&self, p: &mut [V], first: usize, m: usize, spare: &mut [V], forward: bool) {
+        let len = self.len();
+        let apply = |x: &mut [V], start: usize, step: usize, spare: &mut [V]| {
+            let at = |i: usize| start + i * step;
+            if forward { self.long_forward(x, at, spare) } else { self.long_backward(x, at, spare) }
+        };
+        let (square, spare) = spare.split_at_mut(len * len);
+        for other in (0..first).chain(first + len..m) {
+            let column = &mut square[..len];
+            for (i, x) in column.iter_mut().enumerate() {
+                *x = p[packed_at(first + i, other)];
+            }
+            apply(column, 0, 1, spare);
+            for (i, x) in column.iter().enumerate() {
+                p[packed_at(first + i, other)] = *x;
+            }
+        }
+        for i in 0..len {
+            for j in 0..=i {
+                let value = p[packed_at(first + i, first + j)];
+                square[i * len + j] = value;
+                square[j * len + i] = value;
+            }
+        }
+        for j in 0..len {
+            apply(square, j, len, spare);
+        }
+        for i in 0..len {
+            apply(square, i * len, 1, spare);
+        }
+        for i in 0..len {
+            for j in 0..=i {
+                p[packed_at(first + i, first + j)] = square[i * len + j];
+            }
+        }
+    }
+
+    /// `x <- T x` for the numbers at `at(0)`, `at(1)`, …, shifted already; blocks of more than two states.
+    #[inline(always)]
+    fn long_forward(&self, x: &mut [V], at: impl Fn(usize) -> usize, spare: &mut [V]) {
+        match self {
             Self::Season(len) => {
                 let mut sum = x[at(0)];
                 for i in 1..*len {
                     sum += x[at(i)];
                 }
                 x[at(0)] = -sum;
-            }
-            Self::Rotate(cos, sin) => {
-                let (a, b) = (x[at(0)], x[at(1)]);
-                x[at(0)] = *cos * a + *sin * b;
-                x[at(1)] = *cos * b - *sin * a;
             }
             Self::Autoregression(coefficients) => {
                 let order = coefficients.len();
@@ -120,34 +234,20 @@ impl<V: Real> Block<V> {
                 x[at(0)] = new;
             }
             Self::Matrix(size, values) => multiply(x, at, spare, *size, |i, j| values[i * size + j]),
+            _ => {}
         }
     }
 
-    /// `x <- T' x`, shifted already.
+    /// `x <- T' x` likewise.
     #[inline(always)]
-    pub(super) fn backward(&self, x: &mut [V], at: impl Fn(usize) -> usize, spare: &mut [V]) {
+    fn long_backward(&self, x: &mut [V], at: impl Fn(usize) -> usize, spare: &mut [V]) {
         match self {
-            Self::Keep => {}
-            Self::Negate => x[at(0)] = -x[at(0)],
-            Self::Line => {
-                let level = x[at(0)];
-                x[at(1)] += level;
-            }
-            Self::Damped(damping) => {
-                let level = x[at(0)];
-                x[at(1)] = level + *damping * x[at(1)];
-            }
             Self::Season(len) => {
                 let first = x[at(len - 1)];
                 for i in 0..len - 1 {
                     x[at(i)] -= first;
                 }
                 x[at(len - 1)] = -first;
-            }
-            Self::Rotate(cos, sin) => {
-                let (a, b) = (x[at(0)], x[at(1)]);
-                x[at(0)] = *cos * a - *sin * b;
-                x[at(1)] = *cos * b + *sin * a;
             }
             Self::Autoregression(coefficients) => {
                 let last = coefficients.len() - 1;
@@ -158,7 +258,38 @@ impl<V: Real> Block<V> {
                 x[at(last)] = coefficients[last] * first;
             }
             Self::Matrix(size, values) => multiply(x, at, spare, *size, |i, j| values[j * size + i]),
+            _ => {}
         }
+    }
+}
+
+/// The same operation on each pair of two rows.
+#[inline(always)]
+fn pairs<V: Real>(x: &mut [V], width: usize, f: impl Fn(V, V) -> (V, V)) {
+    let (first, second) = x.split_at_mut(width);
+    for (a, b) in first.iter_mut().zip(second) {
+        (*a, *b) = f(*a, *b);
+    }
+}
+
+/// [`Block::congruence`] of a block of two states: on its two rows, on the pairs in the rows below, on its own three numbers.
+#[inline(always)]
+fn pair_congruence<V: Real>(p: &mut [V], first: usize, m: usize, f: impl Fn(V, V) -> (V, V)) {
+    let start = packed_at(first, 0);
+    let (above, below) = p[start..].split_at_mut(2 * first + 3);
+    let (upper, lower) = above.split_at_mut(first + 1);
+    for (a, b) in upper[..first].iter_mut().zip(&mut lower[..first]) {
+        (*a, *b) = f(*a, *b);
+    }
+    let (x, y, z) = (upper[first], lower[first], lower[first + 1]);
+    let ((a0, a1), (b0, b1)) = (f(x, y), f(y, z));
+    upper[first] = f(a0, b0).0;
+    (lower[first], lower[first + 1]) = f(a1, b1);
+    let mut rest = below;
+    for other in first + 2..m {
+        let (row, next) = rest.split_at_mut(other + 1);
+        (row[first], row[first + 1]) = f(row[first], row[first + 1]);
+        rest = next;
     }
 }
 
