@@ -5,62 +5,14 @@
 use std::hint::black_box;
 
 use criterion::{Criterion, Throughput, criterion_group, criterion_main};
-use stillwell_statespace::structure::{Season, Structure, Trend};
-use stillwell_statespace::{
-    Instructions, Likelihood, Likelihoods, Request, SeasonRequest, Series, TransformRequest, Workspace, fit,
-    fit_many,
-};
+use stillwell_statespace::{Instructions, Likelihood, Likelihoods, Series, Workspace, fit, fit_many};
 
+#[path = "support/settings.rs"]
+mod settings;
 #[path = "../tests/support/simulate.rs"]
 mod simulate;
 
-struct Setting {
-    name: &'static str,
-    n: usize,
-    structure: Structure,
-    values: Vec<f64>,
-}
-
-fn settings() -> Vec<Setting> {
-    let season = |period, harmonics| vec![Season { period, harmonics, fixed: false }];
-    let structure = |trend, seasons| Structure { trend, seasons, ..Structure::default() };
-    vec![
-        Setting {
-            name: "local level, n 100",
-            n: 100,
-            structure: structure(Trend::LocalLevel, Vec::new()),
-            values: vec![1.0, 0.2],
-        },
-        Setting {
-            name: "local linear, n 156",
-            n: 156,
-            structure: structure(Trend::LocalLinear, Vec::new()),
-            values: vec![1.0, 0.2, 0.01],
-        },
-        Setting {
-            name: "local linear + dummy season 12, n 144",
-            n: 144,
-            structure: structure(Trend::LocalLinear, season(12.0, None)),
-            values: vec![1.0, 0.2, 0.005, 0.05],
-        },
-        Setting {
-            name: "local linear + 3 harmonics of 52, n 156",
-            n: 156,
-            structure: structure(Trend::LocalLinear, season(52.0, Some(3))),
-            values: vec![1.0, 0.2, 0.005, 0.005],
-        },
-    ]
-}
-
-fn request(structure: &Structure) -> Request {
-    Request {
-        trend: Some(structure.trend),
-        season: SeasonRequest::Given(structure.seasons.iter().map(|s| s.period).collect()),
-        harmonics: structure.seasons.first().and_then(|s| s.harmonics).map(|h| vec![h]),
-        transform: TransformRequest::None,
-        ..Request::default()
-    }
-}
+use settings::{request, settings};
 
 fn benches(c: &mut Criterion) {
     let mut workspace = Workspace::new();

@@ -15,6 +15,8 @@ pub(crate) struct Data<V> {
     pub(crate) observed: Vec<V>,
     /// Which lanes are observed, per point.
     pub(crate) seen: Vec<Mask>,
+    /// Which lanes' series reach a point.
+    reaching: Vec<Mask>,
     /// Constant-coefficient drivers, each at least n long.
     pub(crate) drivers: Vec<Vec<V>>,
     /// Drivers that load on states, each at least n long.
@@ -28,6 +30,7 @@ impl<V: Real> Default for Data<V> {
             lengths: [0; MOST_LANES],
             observed: Vec::new(),
             seen: Vec::new(),
+            reaching: Vec::new(),
             drivers: Vec::new(),
             drifting: Vec::new(),
         }
@@ -40,6 +43,7 @@ impl<V: Real> Data<V> {
         (self.n, self.lengths) = (0, [0; MOST_LANES]);
         self.observed.clear();
         self.seen.clear();
+        self.reaching.clear();
         self.drivers.resize_with(drivers, Vec::new);
         self.drifting.resize_with(drifting, Vec::new);
         self.drivers.iter_mut().chain(&mut self.drifting).for_each(Vec::clear);
@@ -64,12 +68,14 @@ impl<V: Real> Data<V> {
         let reach = self.n.max(self.observed.len());
         self.observed.resize(reach, V::zero());
         self.seen.resize(reach, Mask::NONE);
+        self.reaching.resize(reach, Mask::NONE);
         let bit = Mask::only(lane);
         for t in 0..reach {
             let y = observed.get(t).copied().unwrap_or(f64::NAN);
             let missing = y.is_nan();
             self.observed[t].set_lane(lane, if missing { 0.0 } else { y });
             self.seen[t] = if missing { self.seen[t] & !bit } else { self.seen[t] | bit };
+            self.reaching[t] = if t < len { self.reaching[t] | bit } else { self.reaching[t] & !bit };
         }
         for (columns, from) in [(&mut self.drivers, drivers), (&mut self.drifting, drifting)] {
             for (column, from) in columns.iter_mut().zip(from) {
@@ -89,6 +95,7 @@ impl<V: Real> Data<V> {
         for t in 0..self.observed.len() {
             self.observed[t].set_lane(lane, 0.0);
             self.seen[t] &= !Mask::only(lane);
+            self.reaching[t] &= !Mask::only(lane);
         }
         for column in self.drivers.iter_mut().chain(&mut self.drifting) {
             column.iter_mut().for_each(|x| x.set_lane(lane, 0.0));
@@ -98,10 +105,6 @@ impl<V: Real> Data<V> {
     /// Lanes whose series reaches point `t`.
     #[inline(always)]
     pub(crate) fn alive(&self, t: usize) -> Mask {
-        let mut bits = 0;
-        for lane in 0..V::LANES {
-            bits |= u8::from(self.lengths[lane] > t) << lane;
-        }
-        Mask(bits)
+        self.reaching.get(t).copied().unwrap_or(Mask::NONE)
     }
 }

@@ -10,6 +10,8 @@ mod season;
 
 pub(crate) use packed::{add_column, packed_at, packed_len, times_vector};
 
+use std::ops::Range;
+
 use crate::lanes::Real;
 use crate::system::System;
 use block::Block;
@@ -133,6 +135,26 @@ impl<V: Real> Dynamics<V> {
     pub(crate) fn forward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
         for (offset, block) in &self.blocks {
             block.forward(&mut x[offset * width..(offset + block.len()) * width], width, spare);
+        }
+    }
+
+    /// The states of each block.
+    pub(crate) fn extents(&self) -> impl Iterator<Item = Range<usize>> {
+        self.blocks.iter().map(|(offset, block)| *offset..offset + block.len())
+    }
+
+    /// [`Self::forward`] where each block has numbers other than zero in these columns alone.
+    #[inline(always)]
+    pub(crate) fn forward_columns(
+        &self,
+        x: &mut [V],
+        width: usize,
+        columns: &[Range<usize>],
+        spare: &mut [V],
+    ) {
+        for ((offset, block), columns) in self.blocks.iter().zip(columns) {
+            let rows = &mut x[offset * width..(offset + block.len()) * width];
+            block.forward_columns(rows, width, columns.clone(), spare);
         }
     }
 

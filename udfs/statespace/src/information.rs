@@ -11,6 +11,8 @@
 
 mod shapes;
 
+use std::ops::Range;
+
 use crate::buffer::refill;
 use crate::data::Data;
 use crate::derivatives::Derivative;
@@ -35,6 +37,8 @@ pub(crate) struct Information<V> {
     white: Vec<V>,
     /// `p`.
     v: Vec<V>,
+    /// Columns of `x` that are not zero in each block of states.
+    columns: Vec<Range<usize>>,
     spare: Vec<V>,
     shapes: Shapes<V>,
 }
@@ -58,6 +62,8 @@ impl<V: Real> Information<V> {
         refill(&mut self.spare, dynamics.spare_len());
         self.responses.resize(n * p, V::zero());
         self.projected.resize(n * p, V::zero());
+        self.columns.clear();
+        self.columns.extend(dynamics.extents().map(|states| touching(derivatives, states)));
         self.respond(derivatives, dynamics, data, pass, paths);
         for (index, derivative) in derivatives.iter().enumerate() {
             if !(derivative.transition.is_empty() && derivative.start.is_empty()) {
@@ -94,7 +100,7 @@ impl<V: Real> Information<V> {
         paths: &Paths<V>,
     ) {
         let (m, p) = (pass.m, derivatives.len());
-        let Self { responses, x, spare, .. } = self;
+        let Self { responses, x, spare, columns, .. } = self;
         for (t, q) in responses.chunks_exact_mut(p).enumerate().take(pass.n) {
             q.fill(V::zero());
             for (state, load) in dynamics.loads(&data.drifting, t) {
@@ -102,7 +108,7 @@ impl<V: Real> Information<V> {
                     *q += load * *x;
                 }
             }
-            dynamics.forward(x, p, spare);
+            dynamics.forward_columns(x, p, columns, spare);
             let r = &paths.r[t * m..(t + 1) * m];
             for (index, derivative) in derivatives.iter().enumerate() {
                 if derivative.irregular {
@@ -213,4 +219,13 @@ impl<V: Real> Information<V> {
             }
         }
     }
+}
+
+/// The parameters, from the first to the last, that disturb some of these states.
+fn touching<V: Real>(derivatives: &[Derivative<V>], states: Range<usize>) -> Range<usize> {
+    let touches = |d: &Derivative<V>| {
+        d.states.iter().chain(d.loads.iter().map(|(state, _)| state)).any(|state| states.contains(state))
+    };
+    let first = derivatives.iter().position(touches).unwrap_or(0);
+    first..derivatives.iter().rposition(touches).map_or(0, |last| last + 1)
 }

@@ -3,6 +3,8 @@
 //! Most blocks have two states and are one operation on a pair of numbers. Blocks that shift (dummy season, autoregression) expect a
 //! covariance whose states have been shifted already: see [`Block::shifts`].
 
+use std::ops::Range;
+
 use super::packed::packed_at;
 use super::season;
 use crate::lanes::Real;
@@ -88,23 +90,29 @@ impl<V: Real> Block<V> {
     /// `x <- T x` on the `len x width` rows of the block.
     #[inline(always)]
     pub(super) fn forward(&self, x: &mut [V], width: usize, spare: &mut [V]) {
+        self.forward_columns(x, width, 0..width, spare);
+    }
+
+    /// The same on some columns alone; the others are zero.
+    #[inline(always)]
+    pub(super) fn forward_columns(&self, x: &mut [V], width: usize, columns: Range<usize>, spare: &mut [V]) {
         match self {
             Self::Keep => {}
-            Self::Negate => x.iter_mut().for_each(|x| *x = -*x),
-            Self::Line => pairs(x, width, |a, b| (a + b, b)),
+            Self::Negate => x[columns].iter_mut().for_each(|x| *x = -*x),
+            Self::Line => pairs(x, width, columns, |a, b| (a + b, b)),
             Self::Damped(damping) => {
                 let damping = *damping;
-                pairs(x, width, |a, b| (a + b, b * damping));
+                pairs(x, width, columns, |a, b| (a + b, b * damping));
             }
             Self::Rotate(cos, sin) => {
                 let (cos, sin) = (*cos, *sin);
-                pairs(x, width, |a, b| (cos * a + sin * b, cos * b - sin * a));
+                pairs(x, width, columns, |a, b| (cos * a + sin * b, cos * b - sin * a));
             }
             Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
                 if self.shifts() {
                     x.rotate_right(width);
                 }
-                for c in 0..width {
+                for c in columns {
                     self.long_forward(x, |i| i * width + c, spare);
                 }
             }
@@ -117,14 +125,14 @@ impl<V: Real> Block<V> {
         match self {
             Self::Keep => {}
             Self::Negate => x.iter_mut().for_each(|x| *x = -*x),
-            Self::Line => pairs(x, width, |a, b| (a, a + b)),
+            Self::Line => pairs(x, width, 0..width, |a, b| (a, a + b)),
             Self::Damped(damping) => {
                 let damping = *damping;
-                pairs(x, width, |a, b| (a, a + damping * b));
+                pairs(x, width, 0..width, |a, b| (a, a + damping * b));
             }
             Self::Rotate(cos, sin) => {
                 let (cos, sin) = (*cos, *sin);
-                pairs(x, width, |a, b| (cos * a - sin * b, cos * b + sin * a));
+                pairs(x, width, 0..width, |a, b| (cos * a - sin * b, cos * b + sin * a));
             }
             Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
                 if self.shifts() {
@@ -265,9 +273,9 @@ impl<V: Real> Block<V> {
 
 /// The same operation on each pair of two rows.
 #[inline(always)]
-fn pairs<V: Real>(x: &mut [V], width: usize, f: impl Fn(V, V) -> (V, V)) {
+fn pairs<V: Real>(x: &mut [V], width: usize, columns: Range<usize>, f: impl Fn(V, V) -> (V, V)) {
     let (first, second) = x.split_at_mut(width);
-    for (a, b) in first.iter_mut().zip(second) {
+    for (a, b) in first[columns.clone()].iter_mut().zip(&mut second[columns]) {
         (*a, *b) = f(*a, *b);
     }
 }

@@ -35,6 +35,7 @@ impl<V: Real> Pass<V> {
         for lane in lanes.lanes() {
             self.collapsed_at[lane] = at;
         }
+        self.collapses[at] |= lanes;
         let everywhere = self.reduction.eliminate(lanes);
         for i in 0..m {
             let row = &mut self.row[..width];

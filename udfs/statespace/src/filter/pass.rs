@@ -35,6 +35,8 @@ pub(crate) struct Pass<V> {
     pub(crate) live: Mask,
     /// First point of each lane whose columns no longer hold the diffuse states; beyond n when they were never taken in.
     pub(crate) collapsed_at: [usize; MOST_LANES],
+    /// Lanes that collapse, per point.
+    pub(super) collapses: Vec<Mask>,
     /// First point at which no lane has them, so that rows and columns are narrower.
     pub(crate) narrow_from: usize,
     /// `m x (diffuse states)`: what each unit of their posterior moves in the predicted state at the collapse.
@@ -86,6 +88,7 @@ impl<V: Real> Pass<V> {
         self.live = data.alive(0);
         self.collapsed_at = [n + 1; MOST_LANES];
         self.narrow_from = n + 1;
+        refill(&mut self.collapses, n + 1);
         self.failure = [None; MOST_LANES];
         let seen = &data.seen[..n];
         for lane in 0..V::LANES {
@@ -209,11 +212,7 @@ impl<V: Real> Pass<V> {
     /// Lanes that collapse at `t`.
     #[inline(always)]
     pub(crate) fn collapsing(&self, t: usize) -> Mask {
-        let mut bits = 0;
-        for lane in 0..V::LANES {
-            bits |= u8::from(t == self.collapsed_at[lane]) << lane;
-        }
-        Mask(bits)
+        self.collapses[t]
     }
 
     /// Width of the row and of the columns at `t`: the data and the elements still open in some lane.
