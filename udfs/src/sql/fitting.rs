@@ -1,8 +1,8 @@
-//! Fitting one series, whoever asks for it: an operator, a window, an aggregate.
+//! Fitting series, whoever asks for it: an operator many at once, a window or an aggregate one.
 
 use std::panic::{AssertUnwindSafe, catch_unwind};
 
-use stillwell_statespace::{Fit, Trouble, Workspace, fit};
+use stillwell_statespace::{Fit, Request, Trouble, Workspace, fit, fit_many};
 
 use super::arguments::settings::Settings;
 use crate::columns::series::Placed;
@@ -21,6 +21,48 @@ pub(crate) fn fitted<T>(
         let request = settings.request_for(placed.grid().grid(), placed.len());
         ask(fit(&placed.series, &request, workspace)?)
     })
+}
+
+/// Fits many series; the results stand in their order. `smoothed`: the fits will be asked for their components.
+///
+/// Should one of them make the core panic, they are fitted one by one, so that it is the trouble of that series alone.
+pub(crate) fn fitted_together(
+    placed: &[&Placed],
+    settings: &Settings,
+    smoothed: bool,
+    workspace: &mut Workspace,
+) -> Vec<Result<Fit, Trouble>> {
+    let mut fits = Vec::with_capacity(placed.len());
+    for (request, members) in by_request(placed, settings) {
+        let series = members.iter().map(|&at| &placed[at].series).collect::<Vec<_>>();
+        let together =
+            catch_unwind(AssertUnwindSafe(|| fit_many(&series, &request, smoothed, &mut *workspace)));
+        let results = together.unwrap_or_else(|_| {
+            *workspace = Workspace::new();
+            let alone = |series| guarded(workspace, |workspace| fit(series, &request, workspace));
+            series.into_iter().map(alone).collect()
+        });
+        fits.extend(members.into_iter().zip(results));
+    }
+    fits.sort_unstable_by_key(|(at, _)| *at);
+    fits.into_iter().map(|(_, fit)| fit).collect()
+}
+
+/// The requests of the series, each with the places of those that have it. Mostly there is one; what is left to the grid
+/// or to the number of points makes several.
+fn by_request(placed: &[&Placed], settings: &Settings) -> Vec<(Request, Vec<usize>)> {
+    if settings.one_request() {
+        return vec![(settings.request.clone(), (0..placed.len()).collect())];
+    }
+    let mut found: Vec<(Request, Vec<usize>)> = Vec::new();
+    for (at, placed) in placed.iter().enumerate() {
+        let request = settings.request_for(placed.grid().grid(), placed.len());
+        match found.iter_mut().find(|(known, _)| *known == request) {
+            Some((_, members)) => members.push(at),
+            None => found.push((request, vec![at])),
+        }
+    }
+    found
 }
 
 /// Does the work on one series; a panic in it becomes the trouble of that series.
