@@ -35,17 +35,29 @@ pub(crate) fn fitted_together(
     let mut fits = Vec::with_capacity(placed.len());
     for (request, members) in by_request(placed, settings) {
         let series = members.iter().map(|&at| &placed[at].series).collect::<Vec<_>>();
-        let together =
-            catch_unwind(AssertUnwindSafe(|| fit_many(&series, &request, smoothed, &mut *workspace)));
-        let results = together.unwrap_or_else(|_| {
-            *workspace = Workspace::new();
-            let alone = |series| guarded(workspace, |workspace| fit(series, &request, workspace));
-            series.into_iter().map(alone).collect()
-        });
+        let results = together_or_alone(
+            workspace,
+            series.len(),
+            |workspace| fit_many(&series, &request, smoothed, workspace),
+            |at, workspace| fit(series[at], &request, workspace),
+        );
         fits.extend(members.into_iter().zip(results));
     }
     fits.sort_unstable_by_key(|(at, _)| *at);
     fits.into_iter().map(|(_, fit)| fit).collect()
+}
+
+/// The work on `count` series at once, or on one after the other should that panic.
+fn together_or_alone<T>(
+    workspace: &mut Workspace,
+    count: usize,
+    together: impl FnOnce(&mut Workspace) -> Vec<Result<T, Trouble>>,
+    alone: impl Fn(usize, &mut Workspace) -> Result<T, Trouble>,
+) -> Vec<Result<T, Trouble>> {
+    catch_unwind(AssertUnwindSafe(|| together(workspace))).unwrap_or_else(|_| {
+        *workspace = Workspace::new();
+        (0..count).map(|at| guarded(workspace, |workspace| alone(at, workspace))).collect()
+    })
 }
 
 /// The requests of the series, each with the places of those that have it. Mostly there is one; what is left to the grid
@@ -105,5 +117,19 @@ mod tests {
         let trouble = guarded(&mut workspace, |_| Ok(none[none.len()])).unwrap_err();
         assert_eq!(trouble.status(), "numerical trouble");
         assert_eq!(guarded(&mut workspace, |_| Ok(7)), Ok(7), "the next series goes on with new buffers");
+    }
+
+    #[test]
+    fn a_panic_among_many_is_the_trouble_of_its_series_alone() {
+        let mut workspace = Workspace::new();
+        let none: [f64; 0] = [];
+        let answers = together_or_alone(
+            &mut workspace,
+            3,
+            |_| vec![Ok(none[none.len()])],
+            |at, _| if at == 1 { Ok(none[at]) } else { Ok(at as f64) },
+        );
+        assert_eq!((&answers[0], &answers[2]), (&Ok(0.0), &Ok(2.0)));
+        assert_eq!(answers[1].as_ref().unwrap_err().status(), "numerical trouble");
     }
 }
