@@ -10,6 +10,7 @@ use datafusion::execution::runtime_env::RuntimeEnvBuilder;
 use datafusion::logical_expr::LogicalPlan;
 use datafusion::prelude::SessionConfig;
 use datafusion::sql::parser::Statement;
+use stillwell::InPlace;
 
 use crate::args::EngineArgs;
 use crate::errors;
@@ -22,6 +23,10 @@ use crate::threads;
 /// How many consumers of memory an out-of-memory message names.
 const CONSUMERS_NAMED: std::num::NonZeroUsize = std::num::NonZeroUsize::new(3).unwrap();
 
+/// Rows of a row group that is written. The writer holds one for each open file, and a folder per value of PARTITIONED BY
+/// makes many of them; the engine's own 1,048,576 would take gigabytes for some dozens of folders.
+const ROW_GROUP: usize = 131_072;
+
 /// A session with stillwell's functions, files as tables, and the limits and settings of the command line.
 ///
 /// # Errors
@@ -31,7 +36,13 @@ pub(crate) async fn open(options: &EngineArgs, config: SessionConfig) -> Outcome
     let config = config
         .with_target_partitions(threads::number(options))
         .with_information_schema(true)
-        .set_usize("datafusion.execution.minimum_parallel_output_files", 1);
+        .set_usize("datafusion.execution.minimum_parallel_output_files", 1)
+        .set_usize("datafusion.execution.parquet.max_row_group_size", ROW_GROUP);
+    // What works on one thread must not fit on a second one meanwhile.
+    let config = match threads::number(options) {
+        1 => config.with_extension(Arc::new(InPlace)),
+        _ => config,
+    };
     let mut runtime = RuntimeEnvBuilder::new()
         .with_object_store_registry(Arc::new(Stores::default()))
         // A job reads folders that it has just replaced: a remembered list of files would be the old one.

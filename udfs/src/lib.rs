@@ -28,7 +28,8 @@
 //! ```
 //!
 //! [`register`] adds the functions to a session, [`extend`] to one that is still being built. A host with a
-//! query planner of its own adds [`StructuralExtensionPlanner`] to it. [`Progress`] lets a host watch.
+//! query planner of its own adds [`StructuralExtensionPlanner`] to it. [`Progress`] lets a host watch,
+//! [`InPlace`] says on which threads the fits are done.
 //! [`functions`] describes every function that stands in FROM, with its arguments and columns,
 //! [`value_functions`] those that stand in expressions.
 
@@ -38,7 +39,7 @@ mod sql;
 pub use columns::fit_value::FIT_LAYOUT;
 pub use columns::result::{ColumnKind, ColumnScope, ColumnSpec, Scale, Unit};
 pub use sql::{
-    ARGUMENTS, Argument, ColumnDoc, Function, FunctionDoc, Progress, StructuralExtensionPlanner,
+    ARGUMENTS, Argument, ColumnDoc, Function, FunctionDoc, InPlace, Progress, StructuralExtensionPlanner,
     StructuralQueryPlanner, StructuralRelationPlanner, Takes, TroubledSeries, ValueFunctionDoc,
     ValueFunctionKind, arguments_of, extend, functions, register, register_relations, statuses,
     value_functions,

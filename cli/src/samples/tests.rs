@@ -137,6 +137,38 @@ fn the_committed_demo_is_what_the_generator_writes() {
 }
 
 #[test]
+fn the_order_that_the_files_of_sales_speak_of_is_kept() {
+    let warehouse = SampleOptions { series: Some(41), weeks: 60, ..SampleOptions::default() };
+    for options in [SampleOptions::default(), warehouse] {
+        let (place, _) = written(&options);
+        for region in &REGIONS {
+            let path = place.path().join(format!("sales/region={}/part-0.parquet", region.name));
+            let file = File::open(&path).expect("a file");
+            let reader = ParquetRecordBatchReaderBuilder::try_new(file).expect("Parquet");
+            let metadata = reader.metadata();
+            let names = metadata.row_groups().iter().map(|group| {
+                let order = group.sorting_columns().expect("an order");
+                assert!(order.iter().all(|column| !column.descending));
+                order
+                    .iter()
+                    .map(|column| group.column(column.column_idx as usize).column_path().string())
+                    .collect()
+            });
+            assert!(names.into_iter().all(|names: Vec<_>| names == ["product", "week"]));
+            let mut keys = Vec::new();
+            for batch in batches(&path) {
+                let product = batch.column_by_name("product").expect("products").as_string::<i32>().clone();
+                let week = batch.column_by_name("week").expect("weeks").as_primitive::<Date32Type>().clone();
+                keys.extend(
+                    (0..batch.num_rows()).map(|row| (product.value(row).to_owned(), week.value(row))),
+                );
+            }
+            assert!(keys.is_sorted() && !keys.is_empty());
+        }
+    }
+}
+
+#[test]
 fn same_options_give_the_same_bytes_and_another_seed_other_ones() {
     let options = SampleOptions { weeks: 60, ..SampleOptions::default() };
     let data = |place: &TempDir| {

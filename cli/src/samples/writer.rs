@@ -14,6 +14,7 @@ use arrow::error::ArrowError;
 use parquet::arrow::ArrowWriter;
 use parquet::basic::{Compression, Encoding, ZstdLevel};
 use parquet::errors::ParquetError;
+use parquet::file::metadata::SortingColumn;
 use parquet::file::properties::WriterProperties;
 use parquet::schema::types::ColumnPath;
 
@@ -38,6 +39,9 @@ pub(super) struct Layout {
     nullable: &'static [&'static str],
     /// Whether numbers are mostly different from row to row, so that a dictionary would not pay.
     continuous: bool,
+    /// Whether the rows are written in the order of the texts and of `week`. The file then says so, and a job need not
+    /// sort them again.
+    sorted: bool,
 }
 
 /// The warehouse itself. The region is in the folder's name, not in the file.
@@ -47,6 +51,7 @@ pub(super) const SALES: Layout = Layout {
     numbers: &["units", "price", "promo", "holiday"],
     nullable: &["units"],
     continuous: false,
+    sorted: true,
 };
 
 /// The true states, week by week.
@@ -67,6 +72,7 @@ pub(super) const STATES: Layout = Layout {
     ],
     nullable: &[],
     continuous: true,
+    sorted: false,
 };
 
 /// The true parameters, one row a series.
@@ -85,6 +91,7 @@ pub(super) const PARAMETERS: Layout = Layout {
     ],
     nullable: &[],
     continuous: true,
+    sorted: false,
 };
 
 impl Layout {
@@ -102,6 +109,12 @@ impl Layout {
         let mut properties = WriterProperties::builder()
             .set_compression(Compression::ZSTD(ZstdLevel::default()))
             .set_max_row_group_row_count(Some(GROUP_ROWS));
+        if self.sorted {
+            let columns = 0..self.texts.len() + usize::from(self.weekly);
+            let ascending =
+                |column| SortingColumn { column_idx: column as i32, descending: false, nulls_first: false };
+            properties = properties.set_sorting_columns(Some(columns.map(ascending).collect()));
+        }
         if self.continuous {
             for name in self.numbers {
                 let path = ColumnPath::from(*name);

@@ -1,9 +1,11 @@
 //! From sorted record batches to groups of rows, one group per series.
 //!
 //! The rows arrive sorted by key and time, cut into batches at arbitrary places. [`Groups`] finds the
-//! boundaries, across batches too, and collects the rows of each series as plain vectors. Keys are compared
-//! in arrow's row format, which knows every type that can be sorted (dictionaries, string views, nested
-//! types) and in which NULL equals NULL: a NULL key is a key like any other.
+//! boundaries, across batches too, and collects the rows of each series as plain vectors. Within a batch
+//! neighbouring rows are compared column by column, by kernels that take the whole column at once; only the
+//! first row of each run is then put into arrow's row format and compared with the run before it. Both ways know
+//! every type that can be sorted (dictionaries, string views, nested types), and to both NULL equals NULL: a
+//! NULL key is a key like any other.
 //!
 //! The keys themselves are not copied. A [`Key`] points into the batch in which its series began, and
 //! [`repeat_keys`] gathers the key columns of a result from there, so that names and types stay as they were.
@@ -12,8 +14,8 @@ use std::cmp::Ordering;
 use std::collections::VecDeque;
 use std::sync::Arc;
 
-use arrow::array::{Array, ArrayRef};
-use arrow::compute::{SortOptions, interleave};
+use arrow::array::{Array, ArrayRef, UInt64Array};
+use arrow::compute::{SortOptions, interleave, partition, take_arrays};
 use arrow::datatypes::DataType;
 use arrow::error::ArrowError;
 use arrow::row::{OwnedRow, RowConverter, SortField};
@@ -148,15 +150,18 @@ impl Groups {
             let end = rows.times.len();
             return Ok(if end > 0 { vec![Run { start: 0, end, goes_on: true }] } else { Vec::new() });
         };
-        let keys = converter.convert_columns(&rows.keys)?;
-        let mut runs: Vec<Run> = Vec::new();
+        let spans = partition(&rows.keys)?.ranges();
+        let starts: UInt64Array = spans.iter().map(|span| span.start as u64).collect();
+        let keys = converter.convert_columns(&take_arrays(&rows.keys, &starts, None)?)?;
+        let mut runs: Vec<Run> = Vec::with_capacity(spans.len());
         let mut before = self.open_key.as_ref().map(OwnedRow::row);
-        for (at, key) in keys.iter().enumerate() {
+        for (key, span) in keys.iter().zip(spans) {
             match (before.map(|before| key.cmp(&before)), runs.last_mut()) {
                 (Some(Ordering::Less), _) if self.ordered => return Err(unsorted("keys")),
-                (Some(Ordering::Equal), Some(run)) => run.end = at + 1,
+                (Some(Ordering::Equal), Some(run)) => run.end = span.end,
                 (order, _) => {
-                    runs.push(Run { start: at, end: at + 1, goes_on: order == Some(Ordering::Equal) });
+                    let goes_on = order == Some(Ordering::Equal);
+                    runs.push(Run { start: span.start, end: span.end, goes_on });
                 }
             }
             before = Some(key);
@@ -194,7 +199,10 @@ fn times_ascend(times: &[Option<i64>]) -> bool {
 
 fn unsorted(what: &str) -> ArrowError {
     ArrowError::ComputeError(format!(
-        "the rows did not arrive sorted by key and time ({what} go back); this is a fault of the plan, not of the data"
+        "the rows did not arrive sorted by key and time ({what} go back). A table that is declared WITH ORDER, or Parquet \
+         whose metadata names sorting columns, must keep that order; to have the rows sorted all the same, drop the \
+         declaration, or SET datafusion.execution.collect_statistics = false before the table is made. If nothing declares \
+         an order, please report this"
     ))
 }
 

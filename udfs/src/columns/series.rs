@@ -95,40 +95,101 @@ pub(crate) fn place(
     every: Option<Step>,
     constant: usize,
 ) -> Result<Placed, Unplaced> {
-    let times = group.times.iter().copied().flatten().collect::<Vec<_>>();
-    if times.len() < group.len() {
-        return Err(Trouble::MissingTime { rows: group.len() - times.len() }.into());
+    Placer::new(time, every, constant).place(group)
+}
+
+/// Puts series on their grids, one after the other.
+///
+/// Most series of a warehouse have the very times of the one before; its grid and its points are then taken over
+/// instead of being found again. They depend on the times alone, so that nothing changes by it.
+#[derive(Debug)]
+pub(crate) struct Placer<'a> {
+    time: &'a TimeKind,
+    every: Option<Step>,
+    constant: usize,
+    last: Option<Laid>,
+}
+
+/// Times on their grid.
+#[derive(Debug)]
+struct Laid {
+    times: Vec<Option<i64>>,
+    grid: TimeGrid,
+    points: Vec<usize>,
+    /// Each point follows the one before.
+    unbroken: bool,
+}
+
+impl Laid {
+    fn try_new(times: &[Option<i64>], kind: &TimeKind, every: Option<Step>) -> Result<Self, Trouble> {
+        let known = times.iter().copied().flatten().collect::<Vec<_>>();
+        if known.len() < times.len() {
+            return Err(Trouble::MissingTime { rows: times.len() - known.len() });
+        }
+        let grid = kind.grid(&known, every)?;
+        let mut points = Vec::with_capacity(known.len());
+        for &time in &known {
+            let off = || Trouble::OffGrid { at: grid.format(time), grid: grid.grid().describe() };
+            points.push(grid.index_of(time).ok_or_else(off)?);
+        }
+        let unbroken = points.windows(2).all(|pair| pair[1] == pair[0] + 1);
+        Ok(Self { times: times.to_vec(), grid, points, unbroken })
     }
-    let grid = time.grid(&times, every)?;
-    let mut points = Vec::with_capacity(times.len());
-    for &time in &times {
-        let off = || Trouble::OffGrid { at: grid.format(time), grid: grid.grid().describe() };
-        points.push(grid.index_of(time).ok_or_else(off)?);
-    }
-    let ends = (points.first(), points.last(), observed_ends(&group.observed));
-    let (Some(_), Some(&final_point), Some((first_row, last_row))) = ends else {
-        let grid = points.last().map(|&last| Box::new((grid, last.saturating_add(1))));
-        return Err(Unplaced { trouble: Trouble::AllMissing, grid });
-    };
-    let (first, last) = (points[first_row], points[last_row]);
-    let spread = |values: &[f64], end: usize| {
-        let mut spread = vec![f64::NAN; end - first + 1];
-        for (&point, &value) in points.iter().zip(values) {
+
+    /// The values on the grid points from that of row `first_row` up to `end`, NaN where there is no row.
+    fn spread(&self, values: &[f64], first_row: usize, end: usize) -> Vec<f64> {
+        let first = self.points[first_row];
+        let count = end - first + 1;
+        if self.unbroken {
+            return values.iter().skip(first_row).take(count).copied().collect();
+        }
+        let mut spread = vec![f64::NAN; count];
+        for (&point, &value) in self.points.iter().zip(values) {
             // Rows before the first observation, and plan rows where only the history is wanted, fall out.
             if let Some(place) = point.checked_sub(first).and_then(|at| spread.get_mut(at)) {
                 *place = value;
             }
         }
         spread
-    };
-    let mut drivers = group.drivers.iter().map(|values| spread(values, final_point)).collect::<Vec<_>>();
-    let drifting_drivers = drivers.split_off(constant.min(drivers.len()));
-    Ok(Placed {
-        series: Series { observed: spread(&group.observed, last), drivers, drifting_drivers },
-        grid,
-        first,
-        tail: final_point - last,
-    })
+    }
+}
+
+impl<'a> Placer<'a> {
+    /// See [`place`] for the arguments.
+    pub(crate) fn new(time: &'a TimeKind, every: Option<Step>, constant: usize) -> Self {
+        Self { time, every, constant, last: None }
+    }
+
+    /// See [`place`].
+    ///
+    /// # Errors
+    /// See [`place`].
+    pub(crate) fn place(&mut self, group: &Group) -> Result<Placed, Unplaced> {
+        let laid = match self.last.take().filter(|last| last.times == group.times) {
+            Some(last) => last,
+            None => Laid::try_new(&group.times, self.time, self.every)?,
+        };
+        let laid = self.last.insert(laid);
+        let ends = (laid.points.last(), observed_ends(&group.observed));
+        let (Some(&final_point), Some((first_row, last_row))) = ends else {
+            let grid = laid.points.last().map(|&last| Box::new((laid.grid.clone(), last.saturating_add(1))));
+            return Err(Unplaced { trouble: Trouble::AllMissing, grid });
+        };
+        let (first, last) = (laid.points[first_row], laid.points[last_row]);
+        let spread = |values: &Vec<f64>| laid.spread(values, first_row, final_point);
+        let mut drivers = group.drivers.iter().map(spread).collect::<Vec<_>>();
+        let drifting_drivers = drivers.split_off(self.constant.min(drivers.len()));
+        Ok(Placed {
+            series: Series {
+                observed: laid.spread(&group.observed, first_row, last),
+                drivers,
+                drifting_drivers,
+            },
+            grid: laid.grid.clone(),
+            first,
+            tail: final_point - last,
+        })
+    }
 }
 
 /// Rows of the first and the last observation.

@@ -20,6 +20,8 @@ mod error;
 mod fits;
 mod fitting;
 mod function;
+mod in_order;
+mod in_place;
 mod metrics;
 mod node;
 mod operator;
@@ -40,6 +42,7 @@ pub use docs::{
     ColumnDoc, FunctionDoc, ValueFunctionDoc, ValueFunctionKind, functions, statuses, value_functions,
 };
 pub use function::Function;
+pub use in_place::InPlace;
 pub use planner::{StructuralExtensionPlanner, StructuralQueryPlanner};
 pub use progress::{Progress, TroubledSeries};
 pub use relation::StructuralRelationPlanner;

@@ -1,7 +1,7 @@
 //! The operator of the physical plan.
 //!
 //! It asks for its input partitioned by key and sorted by key and time; the optimizer then adds the hash
-//! repartition and a sort that can spill. It declares what it keeps: the partitioning, the order and
+//! repartition and a sort that can spill, unless the files lie in that order (see [`in_order`]). It declares what it keeps: the partitioning, the order and
 //! whatever else is known about the key columns (`WHERE region = 'North'` makes that key a constant, and a
 //! sort above that counts on it must find it).
 
@@ -27,10 +27,12 @@ use datafusion::physical_plan::{
 };
 
 use super::function::Function;
+use super::in_order;
+use super::in_place::InPlace;
 use super::metrics::StructuralMetrics;
 use super::progress::Progress;
 use super::stream::{Positions, Setup, run};
-use super::work::{Announcement, Job, Workshop};
+use super::work::{Announcement, Job, Room, Workshop};
 use crate::columns::groups::{Groups, ORDER};
 
 /// Fits every series of its input and returns what the function asks for.
@@ -45,6 +47,8 @@ pub(crate) struct StructuralExec {
     keys: Vec<Arc<dyn PhysicalExpr>>,
     /// Time column of the input.
     at: Arc<dyn PhysicalExpr>,
+    /// The input lies in one stream in the order of the series and is to stay so.
+    in_order: bool,
     properties: Arc<PlanProperties>,
     metrics: ExecutionPlanMetricsSet,
     /// One of the partitions has told the host how many rows there are.
@@ -61,6 +65,20 @@ impl StructuralExec {
         positions: Positions,
         description: String,
         input: Arc<dyn ExecutionPlan>,
+    ) -> Result<Self> {
+        let plain = Self::over(job, positions, description, input, false)?;
+        match plain.order().and_then(|order| in_order::arranged(&plain.input, &order)) {
+            Some(input) => Self::over(plain.job, plain.positions, plain.description, input, true),
+            None => Ok(plain),
+        }
+    }
+
+    fn over(
+        job: Arc<Job>,
+        positions: Positions,
+        description: String,
+        input: Arc<dyn ExecutionPlan>,
+        in_order: bool,
     ) -> Result<Self> {
         let schema = input.schema();
         let beyond =
@@ -83,10 +101,19 @@ impl StructuralExec {
             input,
             keys,
             at,
+            in_order,
             properties,
             metrics: ExecutionPlanMetricsSet::new(),
             announced: Arc::default(),
         })
+    }
+
+    /// The order in which the rows must arrive.
+    fn order(&self) -> Option<LexRequirement> {
+        let columns = self.keys.iter().chain([&self.at]);
+        LexRequirement::new(
+            columns.map(|column| PhysicalSortRequirement::new(Arc::clone(column), Some(ORDER))),
+        )
     }
 }
 
@@ -136,17 +163,14 @@ impl ExecutionPlan for StructuralExec {
     }
 
     fn input_distribution_requirements(&self) -> InputDistributionRequirements {
-        InputDistributionRequirements::new(vec![match self.keys.is_empty() {
+        InputDistributionRequirements::new(vec![match self.keys.is_empty() || self.in_order {
             true => Distribution::SinglePartition,
             false => Distribution::KeyPartitioned(self.keys.clone()),
         }])
     }
 
     fn required_input_ordering(&self) -> Vec<Option<OrderingRequirements>> {
-        let columns = self.keys.iter().chain([&self.at]);
-        let requirements =
-            columns.map(|column| PhysicalSortRequirement::new(Arc::clone(column), Some(ORDER)));
-        vec![LexRequirement::new(requirements).map(OrderingRequirements::new)]
+        vec![self.order().map(OrderingRequirements::new)]
     }
 
     fn apply_expressions(
@@ -169,11 +193,12 @@ impl ExecutionPlan for StructuralExec {
                 let metrics = ExecutionPlanMetricsSet::new();
                 Ok(Arc::new(Self { input, metrics, announced: Arc::default(), ..Self::clone(&self) }))
             }
-            ChildrenPropertiesMode::Recompute => Ok(Arc::new(Self::try_new(
+            ChildrenPropertiesMode::Recompute => Ok(Arc::new(Self::over(
                 Arc::clone(&self.job),
                 self.positions.clone(),
                 self.description.clone(),
                 input,
+                self.in_order,
             )?)),
         }
     }
@@ -198,6 +223,7 @@ impl ExecutionPlan for StructuralExec {
             progress: config.get_extension::<Progress>(),
             cancelled: Arc::default(),
             announcement: Announcement { input: Arc::clone(&self.input), done: Arc::clone(&self.announced) },
+            room: Room::of(context.memory_pool().as_ref(), config.target_partitions().max(partitions)),
             spare: Mutex::new(Vec::new()),
         });
         let memory =
@@ -209,6 +235,7 @@ impl ExecutionPlan for StructuralExec {
             memory,
             workers: (config.target_partitions() / partitions.max(1)).max(1),
             batch_size: config.batch_size(),
+            in_place: config.get_extension::<InPlace>().is_some(),
         };
         Ok(run(self.input.execute(partition, context)?, setup))
     }

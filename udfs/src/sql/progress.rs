@@ -66,8 +66,9 @@ impl Progress {
         }
     }
 
-    /// Input rows there will be, as far as operators know: an operator knows when its sorted rows begin to
-    /// arrive, and not at all when its input needs no sort. 0 = not known; never to be relied on but for a bar.
+    /// Input rows there will be, as far as operators know: an operator knows when its rows begin to arrive, from the
+    /// sort that has read them all or from the statistics of files that need none. 0 = not known; never to be relied
+    /// on but for a bar.
     pub fn expected_rows(&self) -> u64 {
         self.expected_rows.load(Ordering::Relaxed)
     }

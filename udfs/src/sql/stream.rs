@@ -2,6 +2,7 @@
 //!
 //! The optimizer does not repartition small inputs, so one partition must be able to use all cores: up to
 //! `workers` chunks are in work at once. Dropping the stream stops the work after the series in hand.
+//! A host can have a lone worker work in place instead of on a blocking thread ([`InPlace`](super::in_place::InPlace)).
 
 use std::collections::VecDeque;
 use std::mem;
@@ -17,7 +18,9 @@ use datafusion::execution::memory_pool::MemoryReservation;
 use datafusion::physical_plan::SendableRecordBatchStream;
 use datafusion::physical_plan::metrics::RecordOutput;
 use datafusion::physical_plan::stream::RecordBatchStreamAdapter;
+use futures::future::{Either, ready};
 use futures::stream::{BoxStream, StreamExt, TryStreamExt, try_unfold};
+use tokio::sync::Semaphore;
 
 use super::error::bad_argument;
 use super::function::Function;
@@ -25,10 +28,12 @@ use super::work::{Job, Workshop};
 use crate::columns::groups::{Group, Groups, Rows};
 use crate::columns::numbers::to_f64;
 
-/// A chunk is handed on when it has this many series…
-const CHUNK_SERIES: usize = 16;
-/// …or this many rows. Small enough to keep all cores busy, large enough that handing over costs nothing.
-const CHUNK_ROWS: usize = 4_096;
+/// A chunk has at most this many series…
+const CHUNK_SERIES: usize = 128;
+/// …or this many rows, unless one series has more: enough that the core can advance several in lock step all the time.
+const CHUNK_ROWS: usize = 32_768;
+/// At the end of the input the rest is shared out among the workers, in chunks of at least so many series.
+const LEAST_SERIES: usize = 8;
 
 /// Positions of the columns in the input.
 #[derive(Debug, Clone)]
@@ -71,6 +76,12 @@ struct Chunk {
     memory: MemoryReservation,
 }
 
+impl Chunk {
+    fn answer(self, workshop: &Workshop) -> Result<RecordBatch> {
+        workshop.answer(&self.groups, &self.memory)
+    }
+}
+
 /// Reads series from the input.
 struct Reader {
     input: SendableRecordBatchStream,
@@ -80,6 +91,8 @@ struct Reader {
     ready: VecDeque<Group>,
     /// Memory of the rows that are read and not yet handed on.
     memory: MemoryReservation,
+    /// Chunks in work at once.
+    workers: usize,
     finished: bool,
 }
 
@@ -104,14 +117,35 @@ impl Reader {
         self.cut()
     }
 
+    /// True when there is a full chunk for every worker, so that the last chunks can be shared out evenly.
     fn full(&self) -> bool {
-        self.ready.len() >= CHUNK_SERIES || self.ready.iter().map(Group::len).sum::<usize>() >= CHUNK_ROWS
+        let rows = self.ready.iter().map(Group::len).sum::<usize>();
+        self.ready.len() >= CHUNK_SERIES * self.workers
+            || rows >= CHUNK_ROWS * self.workers
+            || self.bytes(self.ready.len(), rows) >= self.workshop.room.rows * self.workers
+    }
+
+    /// Bytes of so many series with their result.
+    fn bytes(&self, series: usize, rows: usize) -> usize {
+        rows * self.positions.row_bytes() + self.result_bytes(series, rows)
+    }
+
+    /// Series of the next chunk, at most.
+    fn chunk_series(&self) -> usize {
+        match self.finished {
+            true => self.ready.len().div_ceil(self.workers).clamp(LEAST_SERIES, CHUNK_SERIES),
+            false => CHUNK_SERIES,
+        }
     }
 
     /// Cuts a chunk off the front of the series that are ready.
     fn cut(&mut self) -> Result<Option<Chunk>> {
+        let most = self.chunk_series();
         let (mut groups, mut rows) = (Vec::new(), 0);
-        while groups.len() < CHUNK_SERIES && rows < CHUNK_ROWS {
+        while groups.len() < most
+            && rows < CHUNK_ROWS
+            && self.bytes(groups.len(), rows) < self.workshop.room.rows
+        {
             let Some(group) = self.ready.pop_front() else { break };
             rows += group.len();
             groups.push(group);
@@ -160,11 +194,14 @@ pub(crate) struct Setup {
     pub(crate) workers: usize,
     /// Rows of an output batch, at least 1.
     pub(crate) batch_size: usize,
+    /// A worker that is alone works on the thread that asks for the rows.
+    pub(crate) in_place: bool,
 }
 
 /// The results of one partition.
 pub(crate) fn run(input: SendableRecordBatchStream, setup: Setup) -> SendableRecordBatchStream {
-    let Setup { positions, groups, workshop, memory, workers, batch_size } = setup;
+    let Setup { positions, groups, workshop, memory, workers, batch_size, in_place } = setup;
+    let workers = workers.max(1);
     let schema = Arc::clone(workshop.job.result.schema());
     let cancel = CancelOnDrop(Arc::clone(&workshop.cancelled));
     let baseline = workshop.metrics.baseline.clone();
@@ -175,13 +212,21 @@ pub(crate) fn run(input: SendableRecordBatchStream, setup: Setup) -> SendableRec
         groups,
         ready: VecDeque::new(),
         memory,
+        workers,
         finished: false,
     };
     let chunks = try_unfold(reader, |mut reader| async move {
         Ok(reader.next_chunk().await?.map(|chunk| (chunk, reader)))
     });
-    let results =
-        chunks.map_ok(move |chunk| hand_over(Arc::clone(&workshop), chunk)).try_buffered(workers.max(1));
+    // With several workers one chunk waits in line, so that none of them stands idle while rows are read.
+    let in_line = if workers > 1 { workers + 1 } else { 1 };
+    let places = Arc::new(Semaphore::new(workers));
+    let results = chunks
+        .map_ok(move |chunk| match in_place && workers == 1 {
+            true => Either::Left(ready(chunk.answer(&workshop))),
+            false => Either::Right(hand_over(Arc::clone(&workshop), chunk, Arc::clone(&places))),
+        })
+        .try_buffered(in_line);
     let batches = coalesce(results.boxed(), &schema, batch_size).map_ok(move |batch| {
         // Owned by the closure, hence dropped with the stream.
         let _: &CancelOnDrop = &cancel;
@@ -190,13 +235,24 @@ pub(crate) fn run(input: SendableRecordBatchStream, setup: Setup) -> SendableRec
     Box::pin(RecordBatchStreamAdapter::new(schema, batches))
 }
 
-/// Starts the work on a chunk; the future waits for its result.
-fn hand_over(workshop: Arc<Workshop>, chunk: Chunk) -> impl Future<Output = Result<RecordBatch>> {
-    let task = SpawnedTask::spawn_blocking(move || {
-        let Chunk { groups, memory } = chunk;
-        workshop.answer(&groups, &memory)
+/// Starts the work on a chunk as soon as one of the `places` is free; the future waits for its result.
+fn hand_over(
+    workshop: Arc<Workshop>,
+    chunk: Chunk,
+    places: Arc<Semaphore>,
+) -> impl Future<Output = Result<RecordBatch>> {
+    let joined = |error| DataFusionError::ExecutionJoin(Box::new(error));
+    let task = SpawnedTask::spawn(async move {
+        // It is never closed.
+        let place = places.acquire_owned().await;
+        let work = SpawnedTask::spawn_blocking(move || {
+            let result = chunk.answer(&workshop);
+            drop(place);
+            result
+        });
+        work.join().await.map_err(joined)?
     });
-    async move { task.join().await.map_err(|error| DataFusionError::ExecutionJoin(Box::new(error)))? }
+    async move { task.join().await.map_err(joined)? }
 }
 
 /// Joins small batches to batches of about `batch_size` rows.

@@ -1,35 +1,72 @@
-//! The work on one chunk of series: put each on its grid, fit it, write its rows.
+//! The work on one chunk of series: put each on its grid, fit them, write their rows.
 //!
-//! Runs on a blocking thread. A series in trouble becomes rows that say so; a panic inside a fit is such a
+//! Runs on a blocking thread. The core gets as many series at once as memory allows, because it is quickest when it
+//! can advance several in lock step. A series in trouble becomes rows that say so; a panic inside a fit is such a
 //! trouble too, of that series alone. Nothing here depends on which series share a chunk or a thread.
 
+use std::collections::VecDeque;
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, Mutex, PoisonError};
 
 use datafusion::arrow::array::RecordBatch;
+use datafusion::common::stats::Precision;
 use datafusion::error::{DataFusionError, Result};
-use datafusion::execution::memory_pool::MemoryReservation;
+use datafusion::execution::memory_pool::{MemoryLimit, MemoryPool, MemoryReservation};
 use datafusion::physical_plan::ExecutionPlan;
 use datafusion::physical_plan::sorts::sort::SortExec;
+use datafusion::physical_plan::statistics::{StatisticsArgs, StatisticsContext};
 use stillwell_statespace::{
     Components, Diagnostics, Fit, Forecast, GeneralFit, GeneralForm, Trouble, Workspace,
 };
 
 use super::arguments::settings::Settings;
 use super::error::failed_series;
-use super::fitting::{fitted, guarded, message};
+use super::fitting::{fitted, fitted_together, guarded, message};
 use super::function::Function;
 use super::metrics::StructuralMetrics;
 use super::progress::{Progress, TroubledSeries};
 use crate::columns::groups::Group;
 use crate::columns::result::{ResultRows, ResultSchema};
-use crate::columns::series::{Placed, Unplaced, place};
+use crate::columns::series::{Placed, Placer, Unplaced};
 use crate::columns::time::TimeKind;
 use crate::columns::{components_rows, diagnostics_rows, forecast_rows, state_space_rows};
 
-/// Bytes that a fit takes per grid point while it lasts, roughly: a packed covariance, gains and smoothed
-/// states of a structure with some ten states.
-const FIT_BYTES: usize = 1_024;
+/// Series that are fitted at once, at most: enough that the lanes of the core seldom run dry.
+const TOGETHER: usize = 64;
+/// Bytes that they may take together where memory has no limit, unless one takes more alone.
+const TOGETHER_BYTES: usize = 32 << 20;
+
+/// Bytes that one worker may take.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Room {
+    /// For the rows of a chunk and their result.
+    pub(crate) rows: usize,
+    /// For fits.
+    pub(crate) fits: usize,
+}
+
+impl Room {
+    /// The room of one of so many workers. Of a limited memory most is left to what sorts and writes meanwhile.
+    pub(crate) fn of(pool: &dyn MemoryPool, workers: usize) -> Self {
+        let share = |one_in: usize| match pool.memory_limit() {
+            MemoryLimit::Finite(limit) => TOGETHER_BYTES.min(limit / one_in / workers.max(1)),
+            _ => TOGETHER_BYTES,
+        };
+        Self { rows: share(32), fits: share(16) }
+    }
+}
+
+/// Bytes that a fit of this many states takes per grid point while it lasts, roughly: covariances, columns of the
+/// diffuse states, gains, smoothed states. Measured: 3 kB with 8 states.
+fn fit_bytes(states: usize) -> usize {
+    size_of::<f64>() * (3 * states * states + 16 * states + 32)
+}
+
+/// What the rows of a series have become.
+type PlacedGroup = Result<Placed, Unplaced>;
+
+/// What the functions answer about a series.
+type Solved = Result<Answer, Trouble>;
 
 /// What is to be done with every series. Plain data.
 #[derive(Debug, Clone)]
@@ -51,6 +88,8 @@ pub(crate) struct Workshop {
     pub(crate) cancelled: Arc<AtomicBool>,
     /// Tells the host how many rows will come, once for all partitions.
     pub(crate) announcement: Announcement,
+    /// What one worker may take.
+    pub(crate) room: Room,
     /// Buffers between two chunks, one per thread that has worked here.
     pub(crate) spare: Mutex<Vec<Workspace>>,
 }
@@ -72,9 +111,17 @@ pub(crate) struct Announcement {
 }
 
 impl Announcement {
-    /// Once rows arrive from a sort, everything has been read: the rows that went into it are all there are.
+    /// Once rows arrive from a sort, everything has been read: the rows that went into it are all there are. Without a
+    /// sort it is the statistics of the files that may know.
     fn rows(&self) -> Option<usize> {
-        let mut plan = self.input.downcast_ref::<SortExec>()?.input();
+        let Some(sort) = self.input.downcast_ref::<SortExec>() else {
+            let known = StatisticsContext::new().compute(self.input.as_ref(), &StatisticsArgs::new());
+            return match known.ok()?.num_rows {
+                Precision::Exact(rows) => Some(rows),
+                _ => None,
+            };
+        };
+        let mut plan = sort.input();
         loop {
             match plan.metrics().and_then(|metrics| metrics.output_rows()) {
                 Some(rows) => return Some(rows),
@@ -101,13 +148,36 @@ impl Workshop {
     /// A series in trouble under `on_trouble => 'fail'`; cancellation; a series too long for the memory pool,
     /// of which `memory` is a part; result columns that cannot be built.
     pub(crate) fn answer(&self, groups: &[Group], memory: &MemoryReservation) -> Result<RecordBatch> {
+        let settings = &self.job.settings;
         let mut workspace = self.take_workspace();
         let mut rows = ResultRows::new(Arc::clone(&self.job.result), self.job.time.clone());
-        for group in groups {
+        let mut placer = Placer::new(&self.job.time, settings.every, settings.request.drivers.len());
+        let mut left = groups.iter().map(|group| (group, placer.place(group))).peekable();
+        while left.peek().is_some() {
             if self.cancelled.load(Ordering::Relaxed) {
                 return Err(DataFusionError::Execution("the query was cancelled".to_string()));
             }
-            self.one(group, &mut workspace, &mut rows, memory)?;
+            let mut held = Held { memory, fits: 0 };
+            let mut batch: Vec<(&Group, PlacedGroup)> = Vec::new();
+            while let Some(next) =
+                left.next_if(|(group, placed)| self.takes(group, placed, batch.len(), &mut held))
+            {
+                batch.push(next);
+            }
+            if batch.is_empty()
+                && let Some((group, placed)) = left.next()
+            {
+                // One that has no room beside others must have it alone.
+                held.grow(self.bytes(group, &placed))?;
+                batch.push((group, placed));
+            }
+            let solved = {
+                let _time = self.metrics.time_in_fits.timer();
+                self.solve_batch(&batch, &mut workspace)
+            };
+            for ((group, placed), solved) in batch.iter().zip(solved) {
+                self.finish(group, placed, &solved, &mut rows)?;
+            }
         }
         self.spare.lock().unwrap_or_else(PoisonError::into_inner).push(workspace);
         Ok(rows.finish()?)
@@ -118,46 +188,81 @@ impl Workshop {
         spare.unwrap_or_default()
     }
 
-    /// One series, from its rows to the rows of the result.
-    fn one(
-        &self,
-        group: &Group,
-        workspace: &mut Workspace,
-        rows: &mut ResultRows,
-        memory: &MemoryReservation,
-    ) -> Result<()> {
+    /// Bytes of the fit of a series and, where its grid is far longer than the rows on it, of its result.
+    fn bytes(&self, group: &Group, placed: &PlacedGroup) -> Bytes {
+        let Ok(placed) = placed else { return Bytes::default() };
+        let more_rows = placed.len().saturating_sub(group.len());
+        Bytes {
+            fit: placed.len() * fit_bytes(self.job.settings.usual_states()),
+            rows: more_rows * self.job.result.schema().fields().len() * size_of::<f64>(),
+        }
+    }
+
+    /// Takes the next series into a batch of `count` that holds memory already, if it has room.
+    fn takes(&self, group: &Group, placed: &PlacedGroup, count: usize, held: &mut Held<'_>) -> bool {
+        let most = if self.job.settings.fits_together() { TOGETHER } else { 1 };
+        let bytes = self.bytes(group, placed);
+        count < most && (count == 0 || held.fits + bytes.fit <= self.room.fits) && held.grow(bytes).is_ok()
+    }
+
+    /// Fits the series of a batch and asks the fits.
+    fn solve_batch(&self, batch: &[(&Group, PlacedGroup)], workspace: &mut Workspace) -> Vec<Solved> {
         let settings = &self.job.settings;
-        let request = &settings.request;
-        let placed = place(group, &self.job.time, settings.every, request.drivers.len());
-        let solved = match &placed {
-            Ok(placed) => {
-                // A grid can be far longer than the rows on it.
-                let for_rows =
-                    placed.len().saturating_sub(group.len()) * self.job.result.schema().fields().len();
-                let for_fit = placed.len() * FIT_BYTES;
-                memory.try_grow(for_fit + for_rows * size_of::<f64>())?;
-                let _held = Held { memory, bytes: for_fit };
-                let _time = self.metrics.time_in_fits.timer();
-                match &settings.form {
-                    Some(form) => guarded(workspace, |workspace| self.solve_general(form, placed, workspace)),
-                    None => fitted(placed, settings, workspace, |fit| self.solve(fit)),
-                }
-            }
+        let placed = batch.iter().filter_map(|(_, placed)| placed.as_ref().ok()).collect::<Vec<_>>();
+        let mut solved: VecDeque<Solved> = if let Some(form) = &settings.form {
+            let solve = |placed| guarded(workspace, |workspace| self.solve_general(form, placed, workspace));
+            placed.into_iter().map(solve).collect()
+        } else if settings.fits_together() {
+            let fits = fitted_together(&placed, settings, self.smooths(), workspace);
+            fits.into_iter().map(|fit| guarded(workspace, |_| self.solve(fit?))).collect()
+        } else {
+            let solve = |placed| fitted(placed, settings, workspace, |fit| self.solve(fit));
+            placed.into_iter().map(solve).collect()
+        };
+        let answer = |(_, placed): &(&Group, PlacedGroup)| match placed {
+            Ok(_) => solved.pop_front().unwrap_or(Err(Trouble::Numerical {
+                what: "the fit was not handed back; please report the series",
+            })),
             Err(unplaced) => Err(unplaced.trouble.clone()),
         };
-        match (&solved, &placed) {
+        batch.iter().map(answer).collect()
+    }
+
+    /// Whether [`Self::solve`] looks at smoothed states.
+    fn smooths(&self) -> bool {
+        match self.job.function {
+            Function::Components | Function::StateSpace => true,
+            Function::Forecast => false,
+            Function::Diagnostics => self.has_drivers(),
+        }
+    }
+
+    fn has_drivers(&self) -> bool {
+        let request = &self.job.settings.request;
+        !request.drivers.is_empty() || !request.drifting_drivers.is_empty()
+    }
+
+    /// Counts a series and writes its rows.
+    fn finish(
+        &self,
+        group: &Group,
+        placed: &PlacedGroup,
+        solved: &Solved,
+        rows: &mut ResultRows,
+    ) -> Result<()> {
+        match (solved, placed) {
             (Ok(answer), Ok(placed)) => {
                 self.record(group, None);
                 self.write(group, placed, answer, rows);
             }
             (Err(trouble), _) | (_, Err(Unplaced { trouble, .. })) => {
                 let message = message(trouble, placed.as_ref().ok());
-                if settings.fail {
+                if self.job.settings.fail {
                     let key = group.key.describe(&self.job.key_names);
                     return Err(failed_series(self.job.function, &key, trouble, &message));
                 }
                 self.record(group, Some((trouble, &message)));
-                self.write_trouble(group, &placed, (trouble, &message), rows);
+                self.write_trouble(group, placed, (trouble, &message), rows);
             }
         }
         Ok(())
@@ -172,9 +277,8 @@ impl Workshop {
             Function::Forecast => fit.forecast(settings.horizon, settings.coverage).map(Answer::Forecast),
             Function::Diagnostics => {
                 let diagnostics = fit.diagnostics();
-                let has_drivers =
-                    !settings.request.drivers.is_empty() || !settings.request.drifting_drivers.is_empty();
-                let components = if has_drivers { Some(fit.components(settings.coverage)?) } else { None };
+                let components =
+                    if self.has_drivers() { Some(fit.components(settings.coverage)?) } else { None };
                 Ok(Answer::Diagnostics { fit: Box::new(fit), diagnostics, components })
             }
             Function::StateSpace => Err(Trouble::Numerical {
@@ -244,7 +348,7 @@ impl Workshop {
     fn write_trouble(
         &self,
         group: &Group,
-        placed: &Result<Placed, Unplaced>,
+        placed: &PlacedGroup,
         (trouble, message): (&Trouble, &str),
         rows: &mut ResultRows,
     ) {
@@ -268,15 +372,30 @@ impl Workshop {
     }
 }
 
-/// Memory that is given back when the fit is over.
+/// What one series takes.
+#[derive(Debug, Clone, Copy, Default)]
+struct Bytes {
+    fit: usize,
+    rows: usize,
+}
+
+/// Memory of fits, given back when they are over. That of rows stays taken until the chunk is through.
 struct Held<'a> {
     memory: &'a MemoryReservation,
-    bytes: usize,
+    fits: usize,
+}
+
+impl Held<'_> {
+    fn grow(&mut self, bytes: Bytes) -> Result<()> {
+        self.memory.try_grow(bytes.fit + bytes.rows)?;
+        self.fits += bytes.fit;
+        Ok(())
+    }
 }
 
 impl Drop for Held<'_> {
     fn drop(&mut self) {
-        self.memory.shrink(self.bytes);
+        self.memory.shrink(self.fits);
     }
 }
 

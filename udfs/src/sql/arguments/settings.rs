@@ -16,6 +16,9 @@ use crate::sql::function::Function;
 /// Longest horizon of a forecast.
 const MAX_HORIZON: usize = stillwell_statespace::LONGEST_HORIZON;
 
+/// States of the longest season that has the dummy form by default, and about those of a longer one.
+const USUAL_SEASON: f64 = 13.0;
+
 /// What one call asks for. Plain data, so that it can travel.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Settings {
@@ -40,6 +43,33 @@ pub(crate) struct Settings {
 }
 
 impl Settings {
+    /// True if [`Self::request_for`] is the same for all series.
+    pub(crate) fn one_request(&self) -> bool {
+        !self.seasons_from_grid && !self.cycle_from_series
+    }
+
+    /// True if many series can be fitted at once: not with matrices, nor where a power is estimated too.
+    pub(crate) fn fits_together(&self) -> bool {
+        self.form.is_none() && self.request.transform != TransformRequest::BoxCox(None)
+    }
+
+    /// States of the model, roughly: what is settled series by series is put at what is usual.
+    pub(crate) fn usual_states(&self) -> usize {
+        let request = &self.request;
+        let (SeasonRequest::Auto(periods) | SeasonRequest::Given(periods)) = &request.season;
+        let periods = if self.seasons_from_grid { &[USUAL_SEASON] } else { periods.as_slice() };
+        let season = |(at, period): (usize, &f64)| match &request.harmonics {
+            Some(counts) => 2 * counts.get(at).or_else(|| counts.first()).copied().unwrap_or(1),
+            None => period.min(USUAL_SEASON) as usize,
+        };
+        let seasons: usize = periods.iter().enumerate().map(season).sum();
+        2 + seasons
+            + 2 * usize::from(request.cycle.is_some())
+            + request.autoregression
+            + request.drivers.len()
+            + request.drifting_drivers.len()
+    }
+
     /// The request for one series: what the call left to its grid and to its number of points, filled in.
     pub(crate) fn request_for(&self, grid: &Grid, points: usize) -> Request {
         let mut request = self.request.clone();
