@@ -56,10 +56,16 @@ impl Room {
     }
 }
 
-/// Bytes that a fit of this many states takes per grid point while it lasts, roughly: covariances, columns of the
-/// diffuse states, gains, smoothed states. Measured: 3 kB with 8 states.
-fn fit_bytes(states: usize) -> usize {
-    size_of::<f64>() * (3 * states * states + 16 * states + 32)
+/// Series that are in the kernel at once; each has a share in its buffers.
+const IN_KERNEL: usize = 8;
+
+/// Bytes that a fit keeps per grid point: the series on two scales, its one-step errors, its smoothed components.
+const KEPT_BYTES: usize = 16 * size_of::<f64>();
+
+/// Bytes that the kernel takes per grid point of a series with this many states: packed covariances, columns of the diffuse states up to their
+/// collapse, gains, cumulants.
+fn kernel_bytes(states: usize) -> usize {
+    size_of::<f64>() * (states * states + 8 * states + 32)
 }
 
 /// What the rows of a series have become.
@@ -168,7 +174,7 @@ impl Workshop {
                 && let Some((group, placed)) = left.next()
             {
                 // One that has no room beside others must have it alone.
-                held.grow(self.bytes(group, &placed))?;
+                held.grow(self.bytes(group, &placed, 0))?;
                 batch.push((group, placed));
             }
             let solved = {
@@ -188,12 +194,13 @@ impl Workshop {
         spare.unwrap_or_default()
     }
 
-    /// Bytes of the fit of a series and, where its grid is far longer than the rows on it, of its result.
-    fn bytes(&self, group: &Group, placed: &PlacedGroup) -> Bytes {
+    /// Bytes of the fit of the next series of a batch of `count` and, where its grid is far longer than the rows on it, of its result.
+    fn bytes(&self, group: &Group, placed: &PlacedGroup, count: usize) -> Bytes {
         let Ok(placed) = placed else { return Bytes::default() };
+        let in_kernel = if count < IN_KERNEL { kernel_bytes(self.job.settings.usual_states()) } else { 0 };
         let more_rows = placed.len().saturating_sub(group.len());
         Bytes {
-            fit: placed.len() * fit_bytes(self.job.settings.usual_states()),
+            fit: placed.len() * (KEPT_BYTES + in_kernel),
             rows: more_rows * self.job.result.schema().fields().len() * size_of::<f64>(),
         }
     }
@@ -201,7 +208,7 @@ impl Workshop {
     /// Takes the next series into a batch of `count` that holds memory already, if it has room.
     fn takes(&self, group: &Group, placed: &PlacedGroup, count: usize, held: &mut Held<'_>) -> bool {
         let most = if self.job.settings.fits_together() { TOGETHER } else { 1 };
-        let bytes = self.bytes(group, placed);
+        let bytes = self.bytes(group, placed, count);
         count < most && (count == 0 || held.fits + bytes.fit <= self.room.fits) && held.grow(bytes).is_ok()
     }
 

@@ -44,7 +44,10 @@ fn benches(c: &mut Criterion) {
             b.iter(|| {
                 for fit in fit_many(&side_by_side, &request, true, &mut workspace) {
                     let fit = fit.expect("a fit");
-                    black_box((fit.components(0.9), fit.forecast(12, 0.9)));
+                    black_box((
+                        fit.components(0.9).expect("components"),
+                        fit.forecast(12, 0.9).expect("a forecast"),
+                    ));
                 }
             });
         });

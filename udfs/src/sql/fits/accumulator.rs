@@ -10,7 +10,7 @@ use datafusion::arrow::datatypes::{DataType, Field, FieldRef, Float64Type, Int64
 use datafusion::common::ScalarValue;
 use datafusion::error::Result;
 use datafusion::logical_expr::{Accumulator, EmitTo, GroupsAccumulator};
-use stillwell_statespace::{Trouble, Workspace};
+use stillwell_statespace::{Standing, Trouble, Workspace};
 
 use super::structural_fit::NAME;
 use crate::columns::fit_value::{FitBuilder, FitValue, FittedValue};
@@ -18,9 +18,12 @@ use crate::columns::groups::Group;
 use crate::columns::series::{Placed, place};
 use crate::sql::arguments::settings::Settings;
 use crate::sql::error::{Caller, failed_series};
-use crate::sql::fitting::{fitted, message};
+use crate::sql::fitting::{fitted_together, guarded, message};
 use crate::sql::series_inputs::{SeriesInputs, SeriesRows};
 use crate::sql::watch::Watch;
+
+/// Groups that are fitted side by side.
+const TOGETHER: usize = 64;
 
 /// Columns of the state: times, observed values and each driver, as lists of equal lengths.
 pub(super) fn state_fields(name: &str, drivers: usize) -> Vec<FieldRef> {
@@ -70,37 +73,67 @@ impl FitGroups {
         }
     }
 
-    /// The fit of one group.
-    fn fit(&mut self, rows: &SeriesRows) -> Result<Option<FitValue>> {
-        let (Some(group), _) = rows.sorted(self.distinct)? else { return Ok(None) };
-        let settings = &self.settings;
-        let placed = place(&group, &self.inputs.time, settings.every, settings.request.drivers.len());
-        let solved = match &placed {
-            Ok(placed) => fitted(placed, settings, &mut self.workspace, |fit| Ok(fit.standing())),
-            Err(unplaced) => Err(unplaced.trouble.clone()),
-        };
-        match (placed, solved) {
-            (Ok(placed), Ok(standing)) => match ends(&placed) {
-                Some((first_at, last_at)) => {
-                    self.watch.record(NAME, group.len(), None, String::new);
-                    Ok(Some(FitValue {
-                        status: "ok".to_string(),
-                        refused: None,
-                        message: None,
-                        fitted: Some(FittedValue {
-                            standing,
-                            rule: placed.grid().rule(),
-                            every: placed.grid().grid().describe(),
-                            first_at,
-                            last_at,
-                        }),
-                    }))
-                }
-                None => self.trouble(&group, Some(&placed), &Trouble::AllMissing).map(Some),
-            },
-            (Err(unplaced), _) => self.trouble(&group, None, &unplaced.trouble).map(Some),
-            (Ok(placed), Err(trouble)) => self.trouble(&group, Some(&placed), &trouble).map(Some),
+    /// The fits of groups, in their order; `None` where a group has no rows.
+    fn fit(&mut self, groups: Vec<SeriesRows>) -> Result<Vec<Option<FitValue>>> {
+        let mut fits = Vec::with_capacity(groups.len());
+        let mut groups = groups.into_iter();
+        loop {
+            let together = groups.by_ref().take(TOGETHER).collect::<Vec<_>>();
+            if together.is_empty() {
+                return Ok(fits);
+            }
+            self.fit_together(&together, &mut fits)?;
         }
+    }
+
+    fn fit_together(&mut self, rows: &[SeriesRows], fits: &mut Vec<Option<FitValue>>) -> Result<()> {
+        let settings = self.settings.clone();
+        let mut groups = Vec::with_capacity(rows.len());
+        for rows in rows {
+            let (Some(group), _) = rows.sorted(self.distinct)? else {
+                groups.push(None);
+                continue;
+            };
+            let placed = place(&group, &self.inputs.time, settings.every, settings.request.drivers.len());
+            groups.push(Some((group, placed)));
+        }
+        let placed =
+            groups.iter().flatten().filter_map(|(_, placed)| placed.as_ref().ok()).collect::<Vec<_>>();
+        let mut solved = fitted_together(&placed, &settings, false, &mut self.workspace).into_iter();
+        for group in &groups {
+            fits.push(match group {
+                None => None,
+                Some((group, Err(unplaced))) => Some(self.trouble(group, None, &unplaced.trouble)?),
+                Some((group, Ok(placed))) => {
+                    let fit = solved.next().unwrap_or(Err(Trouble::AllMissing));
+                    let standing = guarded(&mut self.workspace, |_| Ok(fit?.standing()));
+                    Some(self.value(group, placed, standing)?)
+                }
+            });
+        }
+        Ok(())
+    }
+
+    /// The value of a group whose series has been fitted or not.
+    fn value(&self, group: &Group, placed: &Placed, standing: Result<Standing, Trouble>) -> Result<FitValue> {
+        let (standing, (first_at, last_at)) = match (standing, ends(placed)) {
+            (Err(trouble), _) => return self.trouble(group, Some(placed), &trouble),
+            (Ok(_), None) => return self.trouble(group, Some(placed), &Trouble::AllMissing),
+            (Ok(standing), Some(ends)) => (standing, ends),
+        };
+        self.watch.record(NAME, group.len(), None, String::new);
+        Ok(FitValue {
+            status: "ok".to_string(),
+            refused: None,
+            message: None,
+            fitted: Some(FittedValue {
+                standing,
+                rule: placed.grid().rule(),
+                every: placed.grid().grid().describe(),
+                first_at,
+                last_at,
+            }),
+        })
     }
 
     fn trouble(&self, group: &Group, placed: Option<&Placed>, trouble: &Trouble) -> Result<FitValue> {
@@ -153,8 +186,8 @@ impl GroupsAccumulator for FitGroups {
 
     fn evaluate(&mut self, emit: EmitTo) -> Result<ArrayRef> {
         let mut fits = FitBuilder::new(self.inputs.time.clone());
-        for rows in self.take(emit) {
-            let fit = self.fit(&rows)?;
+        let groups = self.take(emit);
+        for fit in self.fit(groups)? {
             fits.push(fit);
         }
         Ok(fits.finish()?)
@@ -255,8 +288,9 @@ impl Accumulator for FitAccumulator {
         // Asked again (by a window over a growing frame), the rows must still be there.
         let rows = self.groups.groups.first().cloned();
         let mut fits = FitBuilder::new(self.groups.inputs.time.clone());
-        let fit = self.groups.fit(&rows.unwrap_or_default())?;
-        fits.push(fit);
+        for fit in self.groups.fit(vec![rows.unwrap_or_default()])? {
+            fits.push(fit);
+        }
         ScalarValue::try_from_array(&fits.finish()?, 0)
     }
 

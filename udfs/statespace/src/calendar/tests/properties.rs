@@ -58,6 +58,9 @@ proptest! {
         prop_assume!(grid.time_at(200).is_some());
         let times = points(&grid, indices);
         let found = Grid::find(grid.axis(), &times).unwrap();
+        // Two days may be a whole number of months apart, and then nobody can tell which was meant.
+        let months = |grid: &Grid| matches!(grid.step(), Step::Months(_));
+        prop_assume!(times.len() > 2 || months(&found) == months(&grid));
         prop_assert_eq!(found.step(), grid.step());
         for &time in &times {
             prop_assert_eq!(found.index_of(time), grid.index_of(time));
