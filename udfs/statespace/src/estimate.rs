@@ -5,17 +5,23 @@
 //! ([`maximise`]), and another as many searches as it has lanes, each with its own pace.
 //!
 //! * `search`: the stages of a search, from the starts to the estimate.
+//! * `ordinates`, `spectrum`, `approach`: an approximate likelihood in the frequency domain, and where it says that the exact one is worth climbing.
 //! * `climb`: one climb from one start.
-//! * `scoring`: the step, and the linear algebra of few parameters without allocation.
+//! * `scoring`: the step; `point`: what is known at a point; `layout`: the parameters.
 //!
 //! No optimiser crate offers scoring with a caller's own curvature and bounds that are part of the answer, which is why this one
 //! is here.
 
+mod approach;
 mod climb;
 mod layout;
+mod ordinates;
+mod point;
 mod scoring;
 mod search;
+mod spectrum;
 
+pub(crate) use point::EXACT;
 pub(crate) use search::Search;
 
 use crate::evaluation::EvaluationError;

@@ -5,7 +5,7 @@
 //! whole ray. The best points become starts: one where all parameters are variances, more where a cycle or an
 //! autoregression makes several optima likely.
 
-use crate::estimate::{Answer, Question};
+use crate::estimate::{Answer, EXACT, Question};
 use crate::evaluation::EvaluationError;
 use crate::objective::{Objective, Workspace};
 use crate::request::Series;
@@ -20,9 +20,6 @@ const RATIOS: [[f64; 5]; 6] = [
     [1.0, 1e-3, 0.01, 1e-3, 1e-3],
     [0.1, 0.3, 1e-4, 0.3, 1e-3],
 ];
-
-/// One-step errors below the square root of this share of the series' own movement are rounding.
-pub(crate) const EXACT: f64 = 1e-22;
 
 /// One point of the grid.
 #[derive(Debug, Clone)]
@@ -42,6 +39,8 @@ pub(crate) struct Starts {
     at: usize,
     /// The open variances, to be brought to their best scale; empty where known ones fix the scale.
     scaled: Vec<usize>,
+    /// Mean square of the series' first differences.
+    pub(crate) scale: f64,
     /// How many starts are worth a climb.
     most: usize,
     several_shapes: bool,
@@ -72,11 +71,22 @@ impl Starts {
         Self {
             points,
             at: 0,
+            scale,
             scaled: if rescale { (0..known.len()).filter(open).collect() } else { Vec::new() },
             most: if several { 4 } else { 1 },
             several_shapes: shapes.len() > 1,
             trouble: EvaluationError::NotPositive,
         }
+    }
+
+    /// The points of the grid.
+    pub(crate) fn grid(&self) -> impl Iterator<Item = &[f64]> {
+        self.points.iter().map(|point| point.values.as_slice())
+    }
+
+    /// True when no point has been evaluated.
+    pub(crate) fn untouched(&self) -> bool {
+        self.at == 0
     }
 
     /// The next point to be evaluated.

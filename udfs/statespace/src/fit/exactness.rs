@@ -1,7 +1,7 @@
 //! Whether a series can lie on a line with a fixed seasonal pattern, before a filter is asked.
 
+use crate::estimate::EXACT;
 use crate::request::Series;
-use crate::starts::EXACT;
 use crate::structure::Structure;
 
 /// False when a line and fixed patterns cannot reproduce the series to rounding, told by its differences: a pattern of a whole period `s` and a

@@ -3,8 +3,8 @@
 use rand::{Rng, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use rand_distr::{Distribution, Poisson, StandardNormal};
-use stillwell_statespace::structure::{Season, Structure, Trend};
-use stillwell_statespace::{Fit, Request, SeasonRequest, Series, TransformRequest, Workspace, fit};
+use stillwell_statespace::structure::{Link, Season, Structure, Trend};
+use stillwell_statespace::{Likelihood, Request, SeasonRequest, Series, TransformRequest, Workspace, fit};
 
 /// Series of one kind.
 pub(crate) struct Group {
@@ -111,21 +111,55 @@ pub(crate) fn mixed(outside: &[Vec<f64>], size: usize) -> Vec<Group> {
     groups
 }
 
-/// Fits and returns the fit with the values of its parameters; where one means nothing, any will do.
-pub(crate) fn fitted(
+/// What came of one fit.
+pub(crate) struct Judged {
+    /// How far its likelihood lies below the best one.
+    pub(crate) below: f64,
+    pub(crate) converged: bool,
+    pub(crate) evaluations: usize,
+    /// Estimates, on the scale of the series brought to unit size.
+    pub(crate) values: Vec<f64>,
+}
+
+/// Fits one series and compares the likelihood at the estimates with the `best` one; `None` where there is no fit.
+pub(crate) fn judge(
     structure: &Structure,
-    series: &Series,
+    observed: &[f64],
     workspace: &mut Workspace,
-) -> Option<(Fit, Vec<f64>)> {
-    let season = structure.seasons.first();
+    best: &mut dyn FnMut(&Series) -> f64,
+) -> Option<Judged> {
     let request = Request {
         trend: Some(structure.trend),
         season: SeasonRequest::Given(structure.seasons.iter().map(|s| s.period).collect()),
-        harmonics: season.and_then(|s| s.harmonics).map(|h| vec![h]),
+        harmonics: structure.seasons.first().and_then(|s| s.harmonics).map(|h| vec![h]),
         transform: TransformRequest::None,
         ..Request::default()
     };
-    let fit = fit(series, &request, workspace).ok()?;
-    let values = fit.parameters().iter().map(|p| if p.value.is_nan() { 0.5 } else { p.value }).collect();
-    Some((fit, values))
+    let fit = fit(&Series { observed: observed.to_vec(), ..Series::default() }, &request, workspace).ok()?;
+    // Brought to unit size: the slow search knows nothing of scales.
+    let seen = || observed.iter().filter(|v| !v.is_nan());
+    let count = seen().count() as f64;
+    let mean = seen().sum::<f64>() / count;
+    let size = (seen().map(|v| (v - mean).powi(2)).sum::<f64>() / count).sqrt();
+    let scaled =
+        Series { observed: observed.iter().map(|v| (v - mean) / size).collect(), ..Series::default() };
+    let model = structure.model();
+    let values: Vec<f64> = model
+        .parameters()
+        .iter()
+        .zip(fit.parameters())
+        .map(|(spec, found)| match spec.link {
+            Link::Variance => found.value / (size * size),
+            // A damping of nothing means nothing: any will do.
+            _ if found.value.is_nan() => 0.5,
+            _ => found.value,
+        })
+        .collect();
+    let ours = Likelihood::new(model, scaled.clone()).at(&values).expect("a likelihood");
+    Some(Judged {
+        below: best(&scaled) - ours,
+        converged: fit.converged(),
+        evaluations: fit.evaluations(),
+        values,
+    })
 }
