@@ -6,6 +6,7 @@
 
 mod block;
 mod packed;
+mod pair;
 mod season;
 
 pub(crate) use packed::{add_column, packed_at, packed_len, times_vector};

@@ -71,7 +71,7 @@ pub(crate) fn maximise(
     known: &[Option<f64>],
     observed: &[f64],
 ) -> Result<Estimate, EvaluationError> {
-    let mut search = Search::new(&objective.model, known, observed);
+    let mut search = Search::new(&objective.model, known, observed, objective.instructions());
     while let Some(question) = search.ask() {
         let answer = objective.answer(question);
         search.tell(answer);

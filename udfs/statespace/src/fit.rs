@@ -65,21 +65,22 @@ pub(crate) fn fit_as(
     choice: &Choice,
     workspace: &mut Workspace,
 ) -> Result<Fit, Trouble> {
-    fit_prepared(prepare(series, request, choice, workspace)?, request, workspace)
+    let model = choice.structure.model();
+    fit_prepared(prepare(series, request, choice, &model, workspace)?, &model, request, workspace)
 }
 
-/// Fits a prepared series.
+/// Fits a prepared series. `model`: that of its structure.
 ///
 /// # Errors
 /// As [`fit`].
 pub(crate) fn fit_prepared(
     prepared: Prepared,
+    model: &Model,
     request: &Request,
     workspace: &mut Workspace,
 ) -> Result<Fit, Trouble> {
-    let model = prepared.structure.model();
     let mut objective = Objective::new(model.clone(), &prepared.working, workspace);
-    let trouble = |error| trouble_of(error, &model, request);
+    let trouble = |error| trouble_of(error, model, request);
     let estimate =
         estimate::maximise(&mut objective, &prepared.known, &prepared.working.observed).map_err(trouble)?;
     drop(objective);
@@ -107,7 +108,7 @@ pub(crate) struct Prepared {
     rounding: f64,
 }
 
-/// Transforms, checks and scales one series for the structure of `choice`.
+/// Transforms, checks and scales one series for the structure of `choice`, whose model is `model`.
 ///
 /// # Errors
 /// As [`fit`].
@@ -115,6 +116,7 @@ pub(crate) fn prepare(
     series: &Series,
     request: &Request,
     choice: &Choice,
+    model: &Model,
     workspace: &mut Workspace,
 ) -> Result<Prepared, Trouble> {
     let Choice { structure, transform, .. } = choice.clone();
@@ -124,8 +126,7 @@ pub(crate) fn prepare(
     if let Some(season) = structure.seasons.iter().find(|s| (points as f64) < s.period) {
         return Err(Trouble::ShorterThanSeason { period: season.period, points });
     }
-    let model = structure.model();
-    let known = known_values(&model, request);
+    let known = known_values(model, request);
     let seen = modelled.iter().filter(|v| !v.is_nan()).count();
     let open = known.iter().filter(|k| k.is_none()).count();
     let needed = model.diffuse_elements() + open.max(1) + 1;
@@ -134,7 +135,7 @@ pub(crate) fn prepare(
     }
     let scaling = Scaling::of(&filled, structure.trend.has_level());
     let working = scaling.apply(&filled);
-    let factors = scaling.factors(&model);
+    let factors = scaling.factors(model);
     let known: Vec<Option<f64>> = known.iter().zip(&factors).map(|(k, f)| k.map(|v| v / f)).collect();
     let rounding = ROUNDING * modelled.iter().filter(|v| !v.is_nan()).fold(0.0_f64, |a, v| a.max(v.abs()));
     if structure.trend == Trend::Damped

@@ -19,7 +19,7 @@ use crate::kernel::Kernel;
 use crate::lanes::{Lanes, MOST_LANES};
 use crate::objective::Workspace;
 use crate::request::{Request, Series};
-use crate::structure::Structure;
+use crate::structure::{Model, Structure};
 use crate::transform::Transform;
 
 /// Fits many series of one request; the results stand in the order of the series. `smoothed`: the fits will be asked for their
@@ -34,8 +34,9 @@ pub fn fit_many(
 ) -> Vec<Result<Fit, Trouble>> {
     let mut results: Vec<Option<Result<Fit, Trouble>>> = Vec::with_capacity(series.len());
     let mut waiting: Vec<Waiting> = Vec::with_capacity(series.len());
+    let mut models = Models::default();
     for (index, series) in series.iter().enumerate() {
-        results.push(match ready(series, request, workspace) {
+        results.push(match ready(series, request, &mut models, workspace) {
             Ok((prepared, power_estimated)) => {
                 waiting.push(Waiting { index, prepared, power_estimated });
                 None
@@ -51,14 +52,15 @@ pub fn fit_many(
         if batch.len() == 1 {
             // Alone there is nothing to be side by side with.
             for Waiting { index, prepared, power_estimated } in batch {
-                let fit = fit::fit_prepared(prepared, request, workspace);
+                let model = models.of(&structure);
+                let fit = fit::fit_prepared(prepared, model, request, workspace);
                 results[index] = Some(fit.map(|fit| fit.with_power(power_estimated)));
             }
             continue;
         }
         // Series of like length share the kernel's steps.
         batch.sort_by_key(|w| std::cmp::Reverse(w.prepared.working.observed.len()));
-        for (index, result) in fit_batch(&structure, batch, request, smoothed, workspace) {
+        for (index, result) in fit_batch(models.of(&structure).clone(), batch, request, smoothed, workspace) {
             results[index] = Some(result);
         }
     }
@@ -75,8 +77,27 @@ struct Waiting {
     power_estimated: bool,
 }
 
+/// The models of the structures that have come up: series of one request seldom have more than one.
+#[derive(Debug, Default)]
+struct Models(Vec<(Structure, Model)>);
+
+impl Models {
+    fn of(&mut self, structure: &Structure) -> &Model {
+        let at = self.0.iter().position(|(known, _)| known == structure).unwrap_or_else(|| {
+            self.0.push((structure.clone(), structure.model()));
+            self.0.len() - 1
+        });
+        &self.0[at].1
+    }
+}
+
 /// Examines and prepares one series. True beside it: the power of its transform was estimated.
-fn ready(series: &Series, request: &Request, workspace: &mut Workspace) -> Result<(Prepared, bool), Trouble> {
+fn ready(
+    series: &Series,
+    request: &Request,
+    models: &mut Models,
+    workspace: &mut Workspace,
+) -> Result<(Prepared, bool), Trouble> {
     fit::examine(&series.observed)?;
     let mut choice = choose::choose(request, &series.observed)?;
     let power_estimated = choice.power_open;
@@ -84,18 +105,18 @@ fn ready(series: &Series, request: &Request, workspace: &mut Workspace) -> Resul
         let power = box_cox::power(series, request, &choice, workspace)?;
         choice = Choice { transform: Transform::BoxCox(power), ..choice };
     }
-    Ok((fit::prepare(series, request, &choice, workspace)?, power_estimated))
+    let model = models.of(&choice.structure);
+    Ok((fit::prepare(series, request, &choice, model, workspace)?, power_estimated))
 }
 
-/// Fits series of one structure, and tells with each result whose it is.
+/// Fits series of one structure, that of `model`, and tells with each result whose it is.
 fn fit_batch(
-    structure: &Structure,
+    mut model: Model,
     batch: Vec<Waiting>,
     request: &Request,
     smoothed: bool,
     workspace: &mut Workspace,
 ) -> Vec<(usize, Result<Fit, Trouble>)> {
-    let mut model = structure.model();
     let system = model.system();
     let instructions = workspace.instructions;
     let buffers = std::mem::take(&mut workspace.lanes);

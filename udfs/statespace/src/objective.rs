@@ -54,6 +54,11 @@ impl<'a> Objective<'a> {
         Self { model, system, kernel, workspace }
     }
 
+    /// The vector instructions to work with.
+    pub(crate) fn instructions(&self) -> Instructions {
+        self.workspace.instructions
+    }
+
     /// The likelihood at the point in question, with score and information where they are asked for.
     pub(crate) fn answer(&mut self, question: Question<'_>) -> Result<Answer<'_>, EvaluationError> {
         self.model.fill(question.values, &mut self.system).map_err(|_| EvaluationError::NotStationary)?;

@@ -6,6 +6,7 @@
 use std::ops::Range;
 
 use super::packed::packed_at;
+use super::pair::{Damped, DampedBack, Line, LineBack, OnPair, Turn, TurnBack};
 use super::season;
 use crate::lanes::Real;
 use crate::system::Op;
@@ -99,15 +100,9 @@ impl<V: Real> Block<V> {
         match self {
             Self::Keep => {}
             Self::Negate => x[columns].iter_mut().for_each(|x| *x = -*x),
-            Self::Line => pairs(x, width, columns, |a, b| (a + b, b)),
-            Self::Damped(damping) => {
-                let damping = *damping;
-                pairs(x, width, columns, |a, b| (a + b, b * damping));
-            }
-            Self::Rotate(cos, sin) => {
-                let (cos, sin) = (*cos, *sin);
-                pairs(x, width, columns, |a, b| (cos * a + sin * b, cos * b - sin * a));
-            }
+            Self::Line => pairs(x, width, columns, Line),
+            Self::Damped(damping) => pairs(x, width, columns, Damped(*damping)),
+            Self::Rotate(cos, sin) => pairs(x, width, columns, Turn(*cos, *sin)),
             Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
                 if self.shifts() {
                     x.rotate_right(width);
@@ -125,15 +120,9 @@ impl<V: Real> Block<V> {
         match self {
             Self::Keep => {}
             Self::Negate => x.iter_mut().for_each(|x| *x = -*x),
-            Self::Line => pairs(x, width, 0..width, |a, b| (a, a + b)),
-            Self::Damped(damping) => {
-                let damping = *damping;
-                pairs(x, width, 0..width, |a, b| (a, a + damping * b));
-            }
-            Self::Rotate(cos, sin) => {
-                let (cos, sin) = (*cos, *sin);
-                pairs(x, width, 0..width, |a, b| (cos * a - sin * b, cos * b + sin * a));
-            }
+            Self::Line => pairs(x, width, 0..width, LineBack),
+            Self::Damped(damping) => pairs(x, width, 0..width, DampedBack(*damping)),
+            Self::Rotate(cos, sin) => pairs(x, width, 0..width, TurnBack(*cos, *sin)),
             Self::Season(_) | Self::Autoregression(_) | Self::Matrix(..) => {
                 if self.shifts() {
                     x.rotate_left(width);
@@ -158,24 +147,12 @@ impl<V: Real> Block<V> {
                     p[at] = -p[at];
                 }
             }
-            (Self::Line, true) => pair_congruence(p, first, m, |a, b| (a + b, b)),
-            (Self::Line, false) => pair_congruence(p, first, m, |a, b| (a, a + b)),
-            (Self::Damped(damping), true) => {
-                let damping = *damping;
-                pair_congruence(p, first, m, |a, b| (a + b, b * damping));
-            }
-            (Self::Damped(damping), false) => {
-                let damping = *damping;
-                pair_congruence(p, first, m, |a, b| (a, a + damping * b));
-            }
-            (Self::Rotate(cos, sin), true) => {
-                let (cos, sin) = (*cos, *sin);
-                pair_congruence(p, first, m, |a, b| (cos * a + sin * b, cos * b - sin * a));
-            }
-            (Self::Rotate(cos, sin), false) => {
-                let (cos, sin) = (*cos, *sin);
-                pair_congruence(p, first, m, |a, b| (cos * a - sin * b, cos * b + sin * a));
-            }
+            (Self::Line, true) => pair_congruence(p, first, m, Line),
+            (Self::Line, false) => pair_congruence(p, first, m, LineBack),
+            (Self::Damped(damping), true) => pair_congruence(p, first, m, Damped(*damping)),
+            (Self::Damped(damping), false) => pair_congruence(p, first, m, DampedBack(*damping)),
+            (Self::Rotate(cos, sin), true) => pair_congruence(p, first, m, Turn(*cos, *sin)),
+            (Self::Rotate(cos, sin), false) => pair_congruence(p, first, m, TurnBack(*cos, *sin)),
             (Self::Season(len), _) => season::congruence(p, first, *len, m, spare, forward),
             (Self::Autoregression(_) | Self::Matrix(..), _) => {
                 self.long_congruence(p, first, m, spare, forward);
@@ -273,30 +250,30 @@ impl<V: Real> Block<V> {
 
 /// The same operation on each pair of two rows.
 #[inline(always)]
-fn pairs<V: Real>(x: &mut [V], width: usize, columns: Range<usize>, f: impl Fn(V, V) -> (V, V)) {
+fn pairs<V: Real>(x: &mut [V], width: usize, columns: Range<usize>, of: impl OnPair<V>) {
     let (first, second) = x.split_at_mut(width);
     for (a, b) in first[columns.clone()].iter_mut().zip(&mut second[columns]) {
-        (*a, *b) = f(*a, *b);
+        (*a, *b) = of.apply(*a, *b);
     }
 }
 
 /// [`Block::congruence`] of a block of two states: on its two rows, on the pairs in the rows below, on its own three numbers.
 #[inline(always)]
-fn pair_congruence<V: Real>(p: &mut [V], first: usize, m: usize, f: impl Fn(V, V) -> (V, V)) {
+fn pair_congruence<V: Real>(p: &mut [V], first: usize, m: usize, of: impl OnPair<V>) {
     let start = packed_at(first, 0);
     let (above, below) = p[start..].split_at_mut(2 * first + 3);
     let (upper, lower) = above.split_at_mut(first + 1);
     for (a, b) in upper[..first].iter_mut().zip(&mut lower[..first]) {
-        (*a, *b) = f(*a, *b);
+        (*a, *b) = of.apply(*a, *b);
     }
     let (x, y, z) = (upper[first], lower[first], lower[first + 1]);
-    let ((a0, a1), (b0, b1)) = (f(x, y), f(y, z));
-    upper[first] = f(a0, b0).0;
-    (lower[first], lower[first + 1]) = f(a1, b1);
+    let ((a0, a1), (b0, b1)) = (of.apply(x, y), of.apply(y, z));
+    upper[first] = of.apply(a0, b0).0;
+    (lower[first], lower[first + 1]) = of.apply(a1, b1);
     let mut rest = below;
     for other in first + 2..m {
         let (row, next) = rest.split_at_mut(other + 1);
-        (row[first], row[first + 1]) = f(row[first], row[first + 1]);
+        (row[first], row[first + 1]) = of.apply(row[first], row[first + 1]);
         rest = next;
     }
 }

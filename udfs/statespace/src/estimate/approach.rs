@@ -21,6 +21,9 @@ const RIVAL: f64 = 2.5;
 /// The same where the approximate likelihood is exact.
 const RIVAL_WHERE_EXACT: f64 = 1e-3;
 
+/// A climb that has come so near to an optimum, in likelihood, and is like it, ends there.
+const AT_AN_OPTIMUM: f64 = 0.1;
+
 /// A likelihood and where it is reached.
 pub(super) type Optimum = (f64, Vec<f64>);
 
@@ -62,6 +65,7 @@ pub(super) fn optima<'a>(
     let shape = |values: &[f64]| damping.map_or(0.0, |i| values[i]);
     let mut taken: Vec<f64> = Vec::new();
     let mut found: Vec<Optimum> = Vec::new();
+    let mut scratch = Climb::new(Vec::new(), None, ROUGH);
     for (_, values) in ranked {
         let own = shape(&values);
         if taken.iter().filter(|other| **other == own).count()
@@ -70,7 +74,16 @@ pub(super) fn optima<'a>(
             continue;
         }
         taken.push(own);
-        let Some(new) = climb(spectrum, layout, values, None) else { continue };
+        // A damping makes ridges, along which a climb that looks lost or like another may still come out elsewhere.
+        let given_up = if damping.is_none() {
+            let best = found.iter().fold(f64::NEG_INFINITY, |a, other| a.max(other.0));
+            (best - rival(spectrum), found.as_slice())
+        } else {
+            (f64::NEG_INFINITY, &[] as &[Optimum])
+        };
+        let Some(new) = climb(spectrum, layout, (&values, None), given_up, &mut scratch) else {
+            continue;
+        };
         let largest =
             (0..new.1.len()).filter(|&i| layout.is_variance(i)).fold(0.0_f64, |a, i| a.max(new.1[i]));
         // A series that is fitted exactly is for the exact likelihood to judge.
@@ -82,6 +95,11 @@ pub(super) fn optima<'a>(
     // Equal likelihoods are one optimum, reached along different ways.
     found.dedup_by(|worse, better| better.0 - worse.0 < SAME);
     found
+}
+
+/// How far below the best an optimum may lie and still be looked at with the exact likelihood.
+fn rival(spectrum: &Spectrum) -> f64 {
+    if spectrum.exact { RIVAL_WHERE_EXACT } else { RIVAL * spectrum.thinned }
 }
 
 /// Sets a damping and leaves the spread of its component as it is.
@@ -139,11 +157,15 @@ pub(super) fn rivals(
             }
         }
     }
-    let rival = if spectrum.exact { RIVAL_WHERE_EXACT } else { RIVAL * spectrum.thinned };
+    let rival = rival(spectrum);
+    let ridges = (0..values.len()).any(|i| layout.free[i] && layout.spread_of[i].is_some());
+    let floor = if ridges { f64::NEG_INFINITY } else { best - rival };
+    let mut scratch = Climb::new(Vec::new(), None, ROUGH);
     let mut ranked: Vec<(f64, Place)> = places
         .into_iter()
         .filter_map(|place| {
-            let (reached, found) = climb(spectrum, layout, place.values, place.held)?;
+            let above = (floor, &[] as &[Optimum]);
+            let (reached, found) = climb(spectrum, layout, (&place.values, place.held), above, &mut scratch)?;
             let held = place.held;
             (reached > best - rival && !alike(layout, &found, values))
                 .then_some((reached, Place { values: found, held }))
@@ -183,13 +205,29 @@ fn alike(layout: &Layout, a: &[f64], b: &[f64]) -> bool {
     })
 }
 
-fn climb(spectrum: &mut Spectrum, layout: &Layout, values: Vec<f64>, held: Option<usize>) -> Option<Optimum> {
-    let mut climb = Climb::new(values, held, ROUGH);
-    while let Some(question) = climb.ask() {
+/// Climbs the approximate likelihood; `scratch` is a climb whose buffers are free. `None` where it does not come above `floor` or
+/// comes to one of the optima that are known.
+fn climb(
+    spectrum: &mut Spectrum,
+    layout: &Layout,
+    (values, held): (&[f64], Option<usize>),
+    (floor, known): (f64, &[Optimum]),
+    scratch: &mut Climb,
+) -> Option<Optimum> {
+    scratch.begin_again(values, held, ROUGH, floor);
+    while let Some(question) = scratch.ask() {
         let answer = spectrum.answer(question);
         let sound = answer.log_likelihood.is_finite();
-        climb.tell(layout, if sound { Ok(answer) } else { Err(EvaluationError::NotPositive) });
+        scratch.tell(layout, if sound { Ok(answer) } else { Err(EvaluationError::NotPositive) });
+        let point = &scratch.point;
+        let again = |other: &Optimum| {
+            point.log_likelihood > other.0 - AT_AN_OPTIMUM && alike(layout, &point.values, &other.1)
+        };
+        if known.iter().any(again) {
+            return None;
+        }
     }
-    let point = climb.point;
-    point.log_likelihood.is_finite().then_some((point.log_likelihood, point.values))
+    let point = &scratch.point;
+    (point.log_likelihood.is_finite() && point.log_likelihood >= floor)
+        .then(|| (point.log_likelihood, point.values.clone()))
 }

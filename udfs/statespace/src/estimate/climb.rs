@@ -83,6 +83,21 @@ impl Climb {
         }
     }
 
+    /// Starts over from another start, in the same buffers; given up when it does not promise to come above `floor`.
+    pub(super) fn begin_again(&mut self, start: &[f64], held: Option<usize>, last_gain: f64, floor: f64) {
+        let p = start.len();
+        self.held.clear();
+        self.held.extend((0..p).map(|i| held == Some(i)));
+        self.try_below.clear();
+        self.try_below.resize(p, f64::INFINITY);
+        self.candidate.clear();
+        self.candidate.extend_from_slice(start);
+        self.point.begin_again(start);
+        self.scoring.forget();
+        (self.converged, self.asked, self.lambda, self.spent) = (false, Asked::Start, 1e-3, 0);
+        (self.last_gain, self.floor) = (last_gain, floor);
+    }
+
     /// The same, given up when it does not promise to come above `floor`.
     pub(super) fn above(self, floor: f64) -> Self {
         Self { floor, ..self }

@@ -2,6 +2,7 @@
 
 use std::f64::consts::{PI, TAU};
 
+use crate::instructions::Task;
 use crate::structure::{Model, Role};
 use crate::system::Op;
 
@@ -180,21 +181,31 @@ pub(super) fn ordinates(n: usize, with_mean: bool, seasons: &[(Option<usize>, Po
     out
 }
 
-/// Coefficients of the cosine transform.
-pub(super) fn transformed(x: &[f64], frequency: &[f64]) -> Vec<f64> {
-    let k = frequency.len();
-    // cos(w (t + 1/2)) by the recurrence of Chebyshev, all frequencies side by side.
-    let twice: Vec<f64> = frequency.iter().map(|w| 2.0 * w.cos()).collect();
-    let mut now: Vec<f64> = frequency.iter().map(|w| (0.5 * w).cos()).collect();
-    let mut before = now.clone();
-    let mut sum = vec![0.0; k];
-    for &x in x {
-        for i in 0..k {
-            sum[i] += x * now[i];
-            let next = twice[i] * now[i] - before[i];
-            before[i] = now[i];
-            now[i] = next;
+/// The cosine transform at frequencies whose halves have these cosines.
+pub(super) struct Transform<'a> {
+    pub(super) x: &'a [f64],
+    pub(super) half: &'a [f64],
+}
+
+impl Task for Transform<'_> {
+    type Output = Vec<f64>;
+
+    /// Coefficients: cos(w (t + 1/2)) by the recurrence of Chebyshev, all frequencies side by side.
+    #[inline(always)]
+    fn run(self) -> Vec<f64> {
+        let Self { x, half } = self;
+        let k = half.len();
+        let twice: Vec<f64> = half.iter().map(|h| 4.0 * h * h - 2.0).collect();
+        let (mut now, mut before) = (half.to_vec(), half.to_vec());
+        let mut sum = vec![0.0; k];
+        for &x in x {
+            for (((sum, now), before), twice) in sum.iter_mut().zip(&mut now).zip(&mut before).zip(&twice) {
+                *sum += x * *now;
+                let next = twice * *now - *before;
+                *before = *now;
+                *now = next;
+            }
         }
+        sum
     }
-    sum
 }

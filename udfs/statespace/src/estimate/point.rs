@@ -7,6 +7,7 @@
 
 use super::Answer;
 use super::layout::Layout;
+use crate::buffer::refill;
 
 /// One-step errors below the square root of this share of the series' own movement are rounding.
 pub(crate) const EXACT: f64 = 1e-22;
@@ -33,6 +34,18 @@ impl Point {
             gradient: vec![0.0; p],
             information: vec![0.0; p * p],
             squares: vec![0.0; p],
+        }
+    }
+
+    /// Forgets what was known and stands at other values.
+    pub(super) fn begin_again(&mut self, values: &[f64]) {
+        let p = values.len();
+        self.values.clear();
+        self.values.extend_from_slice(values);
+        self.log_likelihood = f64::NEG_INFINITY;
+        for (buffer, len) in [(&mut self.gradient, p), (&mut self.information, p * p), (&mut self.squares, p)]
+        {
+            refill(buffer, len);
         }
     }
 

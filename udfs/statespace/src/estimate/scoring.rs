@@ -126,6 +126,13 @@ impl Secant {
 }
 
 impl Scoring {
+    /// Forgets the last step.
+    pub(super) fn forget(&mut self) {
+        self.secant.position.clear();
+        self.secant.step.clear();
+        self.secant.change.clear();
+    }
+
     /// Writes the point that the step leads to into `candidate` and returns the gain it promises; raises `lambda` until the step is not too
     /// long. `None`: nothing moves, or no step can be had. `held`: parameters that stay at an end; `may_fall`: variances that may be put to zero;
     /// `least`: gain that a variance must promise to leave zero.

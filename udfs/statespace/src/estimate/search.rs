@@ -7,6 +7,7 @@ use super::layout::Layout;
 use super::spectrum::Spectrum;
 use super::{Answer, Estimate, Question};
 use crate::evaluation::EvaluationError;
+use crate::instructions::Instructions;
 use crate::starts::Starts;
 use crate::structure::Model;
 
@@ -47,13 +48,19 @@ pub(crate) struct Search {
 }
 
 impl Search {
-    /// A search for the parameters of `model` that `known` leaves open (`None`). `observed`: the series, for the size of the starts.
-    pub(crate) fn new(model: &Model, known: &[Option<f64>], observed: &[f64]) -> Self {
+    /// A search for the parameters of `model` that `known` leaves open (`None`). `observed`: the series, for the starts; `instructions`
+    /// to find them with, which change nothing but the time.
+    pub(crate) fn new(
+        model: &Model,
+        known: &[Option<f64>],
+        observed: &[f64],
+        instructions: Instructions,
+    ) -> Self {
         let (layout, starts) = (Layout::new(model, known), Starts::new(model, known, observed));
         let (mut stage, mut spectrum) = (Stage::Starts, None);
         if known.iter().all(Option::is_some) {
             stage = Stage::Known(known.iter().map(|k| k.unwrap_or(0.0)).collect());
-        } else if let Some(mut approximate) = Spectrum::new(model, observed) {
+        } else if let Some(mut approximate) = Spectrum::new(model, observed, instructions) {
             let optima = approach::optima(&mut approximate, &layout, starts.grid(), starts.scale);
             if let Some((_, start)) = optima.first() {
                 stage = Stage::Climb(Climb::new(start.clone(), None, LAST_GAIN));

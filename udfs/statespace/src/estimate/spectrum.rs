@@ -10,8 +10,9 @@
 
 use std::f64::consts::PI;
 
-use super::ordinates::{filled_differences, ordinates, period, seasonal, seasons, take_off, transformed};
+use super::ordinates::{Transform, filled_differences, ordinates, period, seasonal, seasons, take_off};
 use super::{Answer, Question};
+use crate::instructions::{Instructions, Task};
 use crate::structure::assembly::Shape;
 use crate::structure::{Link, Model, Role};
 
@@ -60,11 +61,12 @@ pub(super) struct Spectrum {
     responses: Vec<f64>,
     /// The diagonal of `V^-1`.
     own: Vec<f64>,
+    instructions: Instructions,
 }
 
 impl Spectrum {
     /// `None` where the model has parts, or the series too few points, for this way.
-    pub(super) fn new(model: &Model, observed: &[f64]) -> Option<Self> {
+    pub(super) fn new(model: &Model, observed: &[f64], instructions: Instructions) -> Option<Self> {
         let assembly = &model.assembly;
         let plain = |role: &Role| matches!(role, Role::Irregular | Role::Level | Role::Slope | Role::Season);
         let has_level = assembly.states.first().is_some_and(|s| s.role == Role::Level);
@@ -86,6 +88,8 @@ impl Spectrum {
         let even = ordinates.iter().filter(|(k, _)| k % 2 == 0).count();
         let weight: Vec<f64> = ordinates.iter().map(|o| o.1).collect();
         let frequency: Vec<f64> = ordinates.iter().map(|o| o.0 as f64 * PI / n as f64).collect();
+        // Half the frequency: cos w = 2 cos^2 (w/2) - 1, and a difference has the spectrum 2 - 2 cos w.
+        let half: Vec<f64> = frequency.iter().map(|w| (0.5 * w).cos()).collect();
         let (p, k) = (assembly.parameters.len(), frequency.len());
         if k < 4 {
             return None;
@@ -101,8 +105,8 @@ impl Spectrum {
         let mut this = Self {
             thinned: weight.iter().fold(1.0, |a, w| w.max(a)),
             exact: seasons.is_empty() && k + 1 >= n && !observed.iter().any(|v| v.is_nan()),
-            coefficient: with_weight(transformed(&differences, &frequency)),
-            end: with_weight(frequency.iter().map(|w| (0.5 * w).cos()).collect()),
+            coefficient: with_weight(instructions.perform(Transform { x: &differences, half: &half })),
+            end: with_weight(half.clone()),
             even,
             parameters: p,
             slopes: vec![0.0; p * k],
@@ -117,12 +121,13 @@ impl Spectrum {
             solved: vec![0.0; k],
             responses: vec![0.0; p * k],
             own: vec![0.0; k],
+            instructions,
             frequency,
             weight,
         };
         for (i, spec) in assembly.parameters.iter().enumerate() {
             for (at, &w) in this.frequency.iter().enumerate() {
-                let difference = 2.0 - 2.0 * w.cos();
+                let difference = 4.0 * (1.0 - half[at]) * (1.0 + half[at]);
                 this.slopes[i * k + at] = match spec.role {
                     Role::Irregular => difference,
                     Role::Level => 1.0,
@@ -140,7 +145,20 @@ impl Spectrum {
 
     /// The approximate likelihood with its score and average information. Parameter 0 is the irregular.
     pub(super) fn answer(&mut self, question: Question<'_>) -> Answer<'_> {
-        let (k, p) = (self.frequency.len(), self.parameters);
+        let [log_likelihood, rss, degrees] = self.instructions.perform(Evaluate { spectrum: self, question });
+        Answer {
+            log_likelihood,
+            rss,
+            degrees,
+            gradient: &self.gradient[..self.parameters],
+            information: &self.information,
+        }
+    }
+
+    /// Log-likelihood, residual sum of squares and degrees of freedom; score and information into their buffers.
+    #[inline(always)]
+    fn evaluate(&mut self, question: Question<'_>) -> [f64; 3] {
+        let k = self.frequency.len();
         let values = question.values;
         if let Some((variance, damping)) = self.damped {
             self.damp(values[variance], values[damping], variance, damping);
@@ -158,11 +176,15 @@ impl Spectrum {
         let slope_variance = self.damped.map_or(0.0, |(variance, _)| values[variance]);
         let (mut logs, mut degrees) = (LogSum::default(), 0.0);
         let (mut loads, mut inner) = ([[0.0; 3]; 2], [[0.0; 3]; 2]);
-        for (v, weight) in self.inverse.iter_mut().zip(&self.weight) {
-            let diagonal = v.max(floor);
-            logs.add(diagonal, *weight);
+        for v in &mut self.inverse {
+            *v = if *v > floor { *v } else { floor };
+        }
+        for (v, weight) in self.inverse.iter().zip(&self.weight) {
+            logs.add(*v, *weight);
             degrees += weight;
-            *v = 1.0 / diagonal;
+        }
+        for v in &mut self.inverse {
+            *v = 1.0 / *v;
         }
         let mut log_determinant = logs.total();
         for parity in 0..2 {
@@ -185,20 +207,16 @@ impl Spectrum {
         if question.derivatives {
             self.differentiate(&loads, &inner, slope_variance);
         }
-        Answer {
-            log_likelihood: -0.5 * (log_determinant + rss),
-            rss,
-            degrees,
-            gradient: &self.gradient[..p],
-            information: &self.information,
-        }
+        [-0.5 * (log_determinant + rss), rss, degrees]
     }
 
+    #[inline(always)]
     fn range(&self, parity: usize) -> std::ops::Range<usize> {
         if parity == 0 { 0..self.even } else { self.even..self.frequency.len() }
     }
 
     /// `solved <- V^-1 solved`.
+    #[inline(always)]
     fn solve(&mut self, inner: &[Pair; 2]) {
         for (u, inverse) in self.solved.iter_mut().zip(&self.inverse) {
             *u *= inverse;
@@ -219,6 +237,7 @@ impl Spectrum {
 
     /// Score and average information: `V_i` is a diagonal, for the irregular that of the ends besides, for a damped slope and its damping
     /// that of the start.
+    #[inline(always)]
     fn differentiate(&mut self, loads: &[Pair; 2], inner: &[Pair; 2], slope_variance: f64) {
         let (k, p) = (self.frequency.len(), self.parameters);
         self.gradient.fill(0.0);
@@ -280,6 +299,7 @@ impl Spectrum {
 
     /// The covariance of a damped slope with a stationary start: its inverse is `g = 1 + d^2 - 2 d cos w` on the diagonal and `d (1 - d)` at both
     /// ends besides, so that it is `1 / g` less a matrix of rank one for each parity.
+    #[inline(always)]
     fn damp(&mut self, value: f64, d: f64, variance: usize, damping: usize) {
         let k = self.frequency.len();
         for at in 0..k {
@@ -307,6 +327,20 @@ impl Spectrum {
     }
 }
 
+/// One evaluation, compiled for the vector instructions.
+struct Evaluate<'a, 'q> {
+    spectrum: &'a mut Spectrum,
+    question: Question<'q>,
+}
+
+impl Task for Evaluate<'_, '_> {
+    type Output = [f64; 3];
+    #[inline(always)]
+    fn run(self) -> [f64; 3] {
+        self.spectrum.evaluate(self.question)
+    }
+}
+
 /// A sum of weighted logarithms that takes few of them: products first.
 #[derive(Debug, Default)]
 struct LogSum {
@@ -315,6 +349,7 @@ struct LogSum {
 }
 
 impl LogSum {
+    #[inline(always)]
     fn add(&mut self, value: f64, weight: f64) {
         if weight != 1.0 {
             self.total += weight * value.ln();
@@ -329,40 +364,51 @@ impl LogSum {
         }
     }
 
+    #[inline(always)]
     fn total(&self) -> f64 {
         self.total + self.product.unwrap_or(1.0).ln()
     }
 }
 
-/// Four sums side by side, so that the processor need not wait for each addition.
+/// The sum of eight.
+#[inline(always)]
+fn folded(sum: [f64; 8]) -> f64 {
+    let [a, b, c, d, e, f, g, h] = sum;
+    ((a + e) + (b + f)) + ((c + g) + (d + h))
+}
+
+/// Eight sums side by side: a vector register, and no waiting for each addition.
+#[inline(always)]
 fn dot(a: &[f64], b: &[f64]) -> f64 {
-    let (fours, rest) = a.as_chunks::<4>();
-    let (others, other_rest) = b.as_chunks::<4>();
-    let mut sum = [0.0; 4];
+    let (fours, rest) = a.as_chunks::<8>();
+    let (others, other_rest) = b.as_chunks::<8>();
+    let mut sum = [0.0; 8];
     for (a, b) in fours.iter().zip(others) {
-        for lane in 0..4 {
+        for lane in 0..8 {
             sum[lane] += a[lane] * b[lane];
         }
     }
     let rest: f64 = rest.iter().zip(other_rest).map(|(a, b)| a * b).sum();
-    (sum[0] + sum[2]) + (sum[1] + sum[3]) + rest
+    folded(sum) + rest
 }
 
+#[inline(always)]
 fn dot3(a: &[f64], b: &[f64], c: &[f64]) -> f64 {
-    let (a, a_rest) = a.as_chunks::<4>();
-    let (b, b_rest) = b.as_chunks::<4>();
-    let (c, c_rest) = c.as_chunks::<4>();
-    let mut sum = [0.0; 4];
+    let (a, a_rest) = a.as_chunks::<8>();
+    let (b, b_rest) = b.as_chunks::<8>();
+    let (c, c_rest) = c.as_chunks::<8>();
+    let mut sum = [0.0; 8];
     for ((a, b), c) in a.iter().zip(b).zip(c) {
-        for lane in 0..4 {
+        for lane in 0..8 {
             sum[lane] += a[lane] * b[lane] * c[lane];
         }
     }
     let rest: f64 = a_rest.iter().zip(b_rest).zip(c_rest).map(|((a, b), c)| a * b * c).sum();
-    (sum[0] + sum[2]) + (sum[1] + sum[3]) + rest
+    folded(sum) + rest
 }
 
 /// `(C^-1 + E)^-1` for a diagonal `C`, and the determinant of `I + C E` (Woodbury's formula).
+#[inline(always)]
 fn woodbury(centre: [f64; 2], [xx, xy, yy]: Pair) -> (Pair, f64) {
     let [a, b] = centre;
     let determinant = (1.0 + a * xx) * (1.0 + b * yy) - a * b * xy * xy;

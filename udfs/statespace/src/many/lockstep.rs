@@ -42,7 +42,8 @@ pub(super) fn maximise(
                     }
                     let prepared = &batch[next].prepared;
                     kernel.data.load(lane, &prepared.working);
-                    let search = Search::new(model, &prepared.known, &prepared.working.observed);
+                    let search =
+                        Search::new(model, &prepared.known, &prepared.working.observed, instructions);
                     seats[lane] = Some(Seat { series: next, search });
                     next += 1;
                     continue;
