@@ -29,9 +29,9 @@ use crate::columns::groups::{Group, Groups, Rows};
 use crate::columns::numbers::to_f64;
 
 /// A chunk has at most this many series…
-const CHUNK_SERIES: usize = 128;
+const CHUNK_SERIES: usize = 256;
 /// …or this many rows, unless one series has more: enough that the core can advance several in lock step all the time.
-const CHUNK_ROWS: usize = 32_768;
+const CHUNK_ROWS: usize = 65_536;
 /// At the end of the input the rest is shared out among the workers, in chunks of at least so many series.
 const LEAST_SERIES: usize = 8;
 

@@ -32,7 +32,7 @@ use crate::columns::time::TimeKind;
 use crate::columns::{components_rows, diagnostics_rows, forecast_rows, state_space_rows};
 
 /// Series that are fitted at once, at most: enough that the lanes of the core seldom run dry.
-const TOGETHER: usize = 64;
+const TOGETHER: usize = 256;
 /// Bytes that they may take together where memory has no limit, unless one takes more alone.
 const TOGETHER_BYTES: usize = 32 << 20;
 

@@ -119,16 +119,8 @@ impl<V: Real> Dynamics<V> {
 
     /// State and load of each non-zero element of `Z_t`.
     #[inline(always)]
-    pub(crate) fn loads(&self, drifting: &[Vec<V>], t: usize) -> impl Iterator<Item = (usize, V)> {
-        let fixed = self.fixed_loads.len();
-        (0..fixed + self.driver_loads.len()).map(move |i| {
-            if i < fixed {
-                self.fixed_loads[i]
-            } else {
-                let (state, driver) = self.driver_loads[i - fixed];
-                (state, drifting[driver][t])
-            }
-        })
+    pub(crate) fn loads<'a>(&'a self, drifting: &'a [Vec<V>], t: usize) -> Loads<'a, V> {
+        Loads { fixed: self.fixed_loads.iter(), of_drivers: self.driver_loads.iter(), drifting, t }
     }
 
     /// `x <- T x` for an `m x width` row-major matrix.
@@ -250,6 +242,28 @@ impl<V: Real> Dynamics<V> {
     pub(crate) fn spare_len(&self) -> usize {
         let largest = self.blocks.iter().map(|(_, block)| block.len()).max().unwrap_or(0);
         largest * (largest + 1)
+    }
+}
+
+/// What [`Dynamics::loads`] walks over: those that never change, then those of drivers.
+#[derive(Debug)]
+pub(crate) struct Loads<'a, V> {
+    fixed: std::slice::Iter<'a, (usize, V)>,
+    of_drivers: std::slice::Iter<'a, (usize, usize)>,
+    drifting: &'a [Vec<V>],
+    t: usize,
+}
+
+impl<V: Real> Iterator for Loads<'_, V> {
+    type Item = (usize, V);
+
+    #[inline(always)]
+    fn next(&mut self) -> Option<(usize, V)> {
+        if let Some(&load) = self.fixed.next() {
+            return Some(load);
+        }
+        let &(state, driver) = self.of_drivers.next()?;
+        Some((state, self.drifting[driver][self.t]))
     }
 }
 
