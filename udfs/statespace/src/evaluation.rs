@@ -5,7 +5,6 @@ use std::sync::Arc;
 
 use crate::filter::{End, FilterError, Keep, Pass};
 use crate::forecast::{self, Step};
-use crate::instructions::Instructions;
 use crate::kernel::{Buffers, Kernel};
 use crate::lanes::Real;
 use crate::one_step::{self, OneStep};
@@ -83,7 +82,7 @@ impl Evaluation {
     /// As [`Self::new`].
     pub fn with_system(model: Model, system: System, series: Series) -> Result<Self, EvaluationError> {
         let mut kernel = kernel_of(&model, &system, &series);
-        kernel.filter(Keep::Ends, Instructions::Baseline);
+        kernel.filter(Keep::Ends);
         Self::of_lane(&kernel.buffers.pass, 0, Arc::new(model), system, series)
     }
 
@@ -132,7 +131,7 @@ impl Evaluation {
     /// Score and average information at these values, natural units: gradient (p) and matrix (p x p row-major).
     pub fn score_and_information(&self) -> (Vec<f64>, Vec<f64>) {
         let mut kernel = kernel_of(&self.model, &self.system, &self.series);
-        kernel.score(Instructions::Baseline);
+        kernel.score();
         (kernel.buffers.score.gradient.clone(), kernel.buffers.information.matrix.clone())
     }
 
@@ -176,7 +175,7 @@ impl Evaluation {
             return smoothing.clone();
         }
         let mut kernel = kernel_of(&self.model, &self.system, &self.series);
-        kernel.smooth(functionals, self.model.level(), Instructions::Baseline, |_| {});
+        kernel.smooth(functionals, self.model.level(), |_| {});
         kernel.buffers.smoother.lane(0, self.series.observed.len())
     }
 

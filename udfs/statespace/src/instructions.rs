@@ -1,7 +1,7 @@
 //! Which vector instructions of the processor the kernel uses, found when the program runs.
 //!
-//! The kernel is plain Rust that the compiler turns into vector instructions. It is compiled once for what every processor of
-//! the architecture has (SSE2 on x86-64, NEON on aarch64) and on x86-64 twice more, for AVX2 and for AVX-512. All give the
+//! The kernel is compiled once for what every processor of
+//! the architecture has (SSE2 on x86-64, NEON on aarch64) and on x86-64 twice more, for AVX2 and for AVX-512 ([`crate::lanes`]). All give the
 //! same bits: fused multiply-add, the one instruction that would change a rounding, is not enabled.
 
 /// A set of vector instructions.
@@ -48,6 +48,11 @@ impl Instructions {
             #[cfg(not(target_arch = "x86_64"))]
             Self::Avx2 | Self::Avx512 => false,
         }
+    }
+
+    /// These, or the widest that the processor has where it lacks them.
+    pub(crate) fn or_widest(self) -> Self {
+        if self.is_available() { self } else { Self::widest() }
     }
 
     /// Does the work compiled for these instructions, or for the baseline where the processor lacks them.

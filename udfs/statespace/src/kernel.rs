@@ -10,7 +10,9 @@ use crate::dynamics::Dynamics;
 use crate::filter::{self, Keep, Pass};
 use crate::information::Information;
 use crate::instructions::{Instructions, Task};
-use crate::lanes::{Lanes, Mask, Real};
+#[cfg(target_arch = "x86_64")]
+use crate::lanes::{Avx2, Avx512};
+use crate::lanes::{Lanes, Mask, Portable, Real};
 use crate::score::Score;
 use crate::smoother::{Functional, Smoother};
 use crate::structure::Model;
@@ -49,21 +51,21 @@ impl<V: Width> Kernel<V> {
     }
 
     /// Runs the filter.
-    pub(crate) fn filter(&mut self, keep: Keep, instructions: Instructions) {
+    pub(crate) fn filter(&mut self, keep: Keep) {
         self.buffers.pass.keep_open = Mask::NONE;
         let Self { dynamics, data, buffers, .. } = self;
-        V::perform(instructions, Filter { dynamics, data, keep, pass: &mut buffers.pass });
+        V::perform(Filter { dynamics, data, keep, pass: &mut buffers.pass });
     }
 
     /// Runs filter, score and information.
-    pub(crate) fn score(&mut self, instructions: Instructions) {
+    pub(crate) fn score(&mut self) {
         let Self { dynamics, derivatives, data, buffers } = self;
         buffers.pass.keep_open = Mask::NONE;
-        let failed = V::perform(instructions, ScorePass { dynamics, derivatives, data, buffers });
+        let failed = V::perform(ScorePass { dynamics, derivatives, data, buffers });
         if !failed.is_none() {
             // The other lanes come out as they did: to the last bit.
             buffers.pass.keep_open = failed;
-            V::perform(instructions, ScorePass { dynamics, derivatives, data, buffers });
+            V::perform(ScorePass { dynamics, derivatives, data, buffers });
         }
     }
 
@@ -79,17 +81,15 @@ impl<V: Width> Kernel<V> {
         &mut self,
         functionals: &[Functional],
         level: Option<usize>,
-        instructions: Instructions,
         mut filtered: impl FnMut(&Pass<V>),
     ) {
         let Self { dynamics, data, buffers, .. } = self;
         let Buffers { pass, smoother, .. } = buffers;
         pass.keep_open = Mask::NONE;
         loop {
-            V::perform(instructions, Filter { dynamics, data, keep: Keep::Everything, pass });
+            V::perform(Filter { dynamics, data, keep: Keep::Everything, pass });
             filtered(pass);
-            let failed =
-                V::perform(instructions, Smooth { dynamics, data, functionals, level, pass, smoother });
+            let failed = V::perform(Smooth { dynamics, data, functionals, level, pass, smoother });
             if failed.is_none() || pass.keep_open == failed {
                 return;
             }
@@ -100,18 +100,32 @@ impl<V: Width> Kernel<V> {
 
 /// A [`Real`] that knows how its work is compiled.
 pub(crate) trait Width: Real {
-    fn perform<T: Task>(instructions: Instructions, task: T) -> T::Output;
+    fn perform<T: Task>(task: T) -> T::Output;
 }
 
 impl Width for f64 {
-    fn perform<T: Task>(_instructions: Instructions, task: T) -> T::Output {
-        task.run()
+    fn perform<T: Task>(task: T) -> T::Output {
+        Instructions::Baseline.perform(task)
     }
 }
 
-impl Width for Lanes {
-    fn perform<T: Task>(instructions: Instructions, task: T) -> T::Output {
-        instructions.perform(task)
+impl Width for Lanes<Portable> {
+    fn perform<T: Task>(task: T) -> T::Output {
+        Instructions::Baseline.perform(task)
+    }
+}
+
+#[cfg(target_arch = "x86_64")]
+impl Width for Lanes<Avx2> {
+    fn perform<T: Task>(task: T) -> T::Output {
+        Instructions::Avx2.perform(task)
+    }
+}
+
+#[cfg(target_arch = "x86_64")]
+impl Width for Lanes<Avx512> {
+    fn perform<T: Task>(task: T) -> T::Output {
+        Instructions::Avx512.perform(task)
     }
 }
 

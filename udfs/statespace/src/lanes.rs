@@ -9,84 +9,75 @@
 
 mod mask;
 mod real;
+mod registers;
 
 pub(crate) use mask::Mask;
 pub(crate) use real::Real;
+pub(crate) use registers::Portable;
+#[cfg(target_arch = "x86_64")]
+pub(crate) use registers::{Avx2, Avx512};
+
+use registers::Registers;
+use std::marker::PhantomData;
 
 use std::ops::{Add, AddAssign, Div, Mul, MulAssign, Neg, Sub, SubAssign};
 
 /// Most lanes of any [`Real`].
 pub(crate) const MOST_LANES: usize = 8;
 
-/// Eight numbers, one a lane: a register of AVX-512, two of AVX2, four of SSE2 or NEON.
+/// Eight numbers, one a lane. `I` are the registers they are worked on in: a register of AVX-512, two of AVX2, or what the compiler makes
+/// of a loop over eight. All give the same bits.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 #[repr(C, align(64))]
-pub(crate) struct Lanes([f64; MOST_LANES]);
+pub(crate) struct Lanes<I>([f64; MOST_LANES], PhantomData<I>);
 
-impl Lanes {
+impl<I> Lanes<I> {
     #[inline(always)]
-    fn each(self, f: impl Fn(f64) -> f64) -> Self {
-        let mut out = self.0;
-        for x in &mut out {
-            *x = f(*x);
-        }
-        Self(out)
-    }
-
-    #[inline(always)]
-    fn both(self, other: Self, f: impl Fn(f64, f64) -> f64) -> Self {
-        let mut out = self.0;
-        for i in 0..MOST_LANES {
-            out[i] = f(out[i], other.0[i]);
-        }
-        Self(out)
+    fn of(numbers: [f64; MOST_LANES]) -> Self {
+        Self(numbers, PhantomData)
     }
 }
 
 macro_rules! operator {
-    ($operation:ident, $function:ident, $assign:ident, $assigned:ident, $symbol:tt) => {
-        impl $operation for Lanes {
+    ($operation:ident, $function:ident) => {
+        impl<I: Registers> $operation for Lanes<I> {
             type Output = Self;
             #[inline(always)]
             fn $function(self, other: Self) -> Self {
-                self.both(other, |a, b| a $symbol b)
+                Self::of(I::$function(self.0, other.0))
             }
         }
-        impl $assign for Lanes {
+    };
+    ($operation:ident, $function:ident, $assign:ident, $assigned:ident) => {
+        operator!($operation, $function);
+        impl<I: Registers> $assign for Lanes<I> {
             #[inline(always)]
             fn $assigned(&mut self, other: Self) {
-                *self = *self $symbol other;
+                self.0 = I::$function(self.0, other.0);
             }
         }
     };
 }
 
-operator!(Add, add, AddAssign, add_assign, +);
-operator!(Sub, sub, SubAssign, sub_assign, -);
-operator!(Mul, mul, MulAssign, mul_assign, *);
+operator!(Add, add, AddAssign, add_assign);
+operator!(Sub, sub, SubAssign, sub_assign);
+operator!(Mul, mul, MulAssign, mul_assign);
+operator!(Div, div);
 
-impl Div for Lanes {
-    type Output = Self;
-    #[inline(always)]
-    fn div(self, other: Self) -> Self {
-        self.both(other, |a, b| a / b)
-    }
-}
-
-impl Neg for Lanes {
+impl<I: Registers> Neg for Lanes<I> {
     type Output = Self;
     #[inline(always)]
     fn neg(self) -> Self {
-        self.each(|a| -a)
+        Self::of(I::neg(self.0))
     }
 }
 
-impl Real for Lanes {
+impl<I: Registers> Real for Lanes<I> {
     const LANES: usize = MOST_LANES;
 
     #[inline(always)]
     fn splat(x: f64) -> Self {
-        Self([x; MOST_LANES])
+        Self::of([x; MOST_LANES])
     }
 
     #[inline(always)]
@@ -101,31 +92,21 @@ impl Real for Lanes {
 
     #[inline(always)]
     fn sqrt(self) -> Self {
-        self.each(f64::sqrt)
+        Self::of(I::sqrt(self.0))
     }
 
     #[inline(always)]
     fn abs(self) -> Self {
-        self.each(f64::abs)
+        Self::of(I::abs(self.0))
     }
 
     #[inline(always)]
     fn above(self, other: Self) -> Mask {
-        let mut bits = 0;
-        for i in 0..MOST_LANES {
-            bits |= u8::from(self.0[i] > other.0[i]) << i;
-        }
-        Mask(bits)
+        Mask(I::above(self.0, other.0))
     }
 
     #[inline(always)]
     fn select(mask: Mask, yes: Self, no: Self) -> Self {
-        let mut out = no.0;
-        for i in 0..MOST_LANES {
-            if mask.0 >> i & 1 == 1 {
-                out[i] = yes.0[i];
-            }
-        }
-        Self(out)
+        Self::of(I::select(mask.0, yes.0, no.0))
     }
 }

@@ -3,8 +3,10 @@
 use crate::evaluation::EvaluationError;
 use crate::filter::Keep;
 use crate::instructions::Instructions;
-use crate::kernel::{Buffers, Kernel};
-use crate::lanes::{Lanes, MOST_LANES};
+use crate::kernel::{Buffers, Kernel, Width};
+#[cfg(target_arch = "x86_64")]
+use crate::lanes::{Avx2, Avx512};
+use crate::lanes::{Lanes, MOST_LANES, Portable};
 use crate::request::Series;
 use crate::structure::Model;
 use crate::system::System;
@@ -36,7 +38,7 @@ impl Likelihood {
     /// As [`crate::Evaluation::new`].
     pub fn at(&mut self, values: &[f64]) -> Result<f64, EvaluationError> {
         self.fill(values)?;
-        self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
+        self.kernel.filter(Keep::Likelihood);
         Ok(self.kernel.buffers.pass.reached(0)?)
     }
 
@@ -46,7 +48,7 @@ impl Likelihood {
     /// As [`crate::Evaluation::new`].
     pub fn with_score(&mut self, values: &[f64]) -> Result<(f64, &[f64], &[f64]), EvaluationError> {
         self.fill(values)?;
-        self.kernel.score(Instructions::Baseline);
+        self.kernel.score();
         let Buffers { pass, score, information, .. } = &self.kernel.buffers;
         Ok((pass.reached(0)?, &score.gradient, &information.matrix))
     }
@@ -64,10 +66,22 @@ impl Likelihood {
 pub struct Likelihoods {
     model: Model,
     system: System,
-    kernel: Kernel<Lanes>,
-    instructions: Instructions,
+    kernel: LaneKernel,
     count: usize,
 }
+
+/// A kernel in certain registers.
+#[derive(Debug)]
+enum LaneKernel {
+    Baseline(Box<Kernel<Lanes<Portable>>>),
+    #[cfg(target_arch = "x86_64")]
+    Avx2(Box<Kernel<Lanes<Avx2>>>),
+    #[cfg(target_arch = "x86_64")]
+    Avx512(Box<Kernel<Lanes<Avx512>>>),
+}
+
+/// Score and information beside a likelihood.
+type WithScore = (f64, Vec<f64>, Vec<f64>);
 
 impl Likelihoods {
     /// Most series.
@@ -76,60 +90,93 @@ impl Likelihoods {
     /// A model and series with their drivers; those beyond [`Self::MOST`] are left out.
     pub fn new(model: Model, series: &[Series], instructions: Instructions) -> Self {
         let system = model.system();
-        let count = series.len().min(Self::MOST);
-        let drifting = series.first().map_or(0, |s| s.drifting_drivers.len());
-        let mut kernel = Kernel::new(&model, &system, drifting, Buffers::default());
-        for (lane, series) in series[..count].iter().enumerate() {
-            kernel.data.load(lane, series);
-        }
-        Self { model, system, kernel, instructions, count }
+        let series = &series[..series.len().min(Self::MOST)];
+        let kernel = match instructions.or_widest() {
+            #[cfg(target_arch = "x86_64")]
+            Instructions::Avx512 => LaneKernel::Avx512(Box::new(loaded(&model, &system, series))),
+            #[cfg(target_arch = "x86_64")]
+            Instructions::Avx2 => LaneKernel::Avx2(Box::new(loaded(&model, &system, series))),
+            _ => LaneKernel::Baseline(Box::new(loaded(&model, &system, series))),
+        };
+        Self { model, system, kernel, count: series.len() }
     }
 
     /// Diffuse log-likelihood of each series at its parameter values (natural units, order of [`Model::parameters`]).
     pub fn at(&mut self, values: &[&[f64]]) -> Vec<Result<f64, EvaluationError>> {
-        let stationary = self.fill(values);
-        self.kernel.filter(Keep::Likelihood, self.instructions);
-        self.answers(&stationary, |kernel, lane| Ok(kernel.buffers.pass.reached(lane)?))
+        let Self { model, system, kernel, count } = self;
+        let values = &values[..*count];
+        match kernel {
+            LaneKernel::Baseline(kernel) => at(kernel, model, system, values),
+            #[cfg(target_arch = "x86_64")]
+            LaneKernel::Avx2(kernel) => at(kernel, model, system, values),
+            #[cfg(target_arch = "x86_64")]
+            LaneKernel::Avx512(kernel) => at(kernel, model, system, values),
+        }
     }
 
     /// Diffuse log-likelihood, score (length p) and average information (p x p, row-major) of each series, natural units.
-    pub fn with_score(
-        &mut self,
-        values: &[&[f64]],
-    ) -> Vec<Result<(f64, Vec<f64>, Vec<f64>), EvaluationError>> {
-        let stationary = self.fill(values);
-        self.kernel.score(self.instructions);
-        self.answers(&stationary, |kernel, lane| {
-            let reached = kernel.buffers.pass.reached(lane)?;
-            let (gradient, information) = kernel.derivatives_of(lane);
-            Ok((reached, gradient, information))
-        })
+    pub fn with_score(&mut self, values: &[&[f64]]) -> Vec<Result<WithScore, EvaluationError>> {
+        let Self { model, system, kernel, count } = self;
+        let values = &values[..*count];
+        match kernel {
+            LaneKernel::Baseline(kernel) => with_score(kernel, model, system, values),
+            #[cfg(target_arch = "x86_64")]
+            LaneKernel::Avx2(kernel) => with_score(kernel, model, system, values),
+            #[cfg(target_arch = "x86_64")]
+            LaneKernel::Avx512(kernel) => with_score(kernel, model, system, values),
+        }
     }
+}
 
-    /// Which of the series have values in the stationary region; the others keep the values that they had.
-    fn fill(&mut self, values: &[&[f64]]) -> Vec<bool> {
-        let filled = values[..self.count].iter().enumerate().map(|(lane, values)| {
-            let stationary = self.model.fill(values, &mut self.system).is_ok();
-            if stationary {
-                self.kernel.set_lane(lane, &self.model, &self.system);
-            }
-            stationary
-        });
-        filled.collect()
+/// A kernel with a series in each of its first lanes.
+fn loaded<V: Width>(model: &Model, system: &System, series: &[Series]) -> Kernel<V> {
+    let drifting = series.first().map_or(0, |s| s.drifting_drivers.len());
+    let mut kernel = Kernel::new(model, system, drifting, Buffers::default());
+    for (lane, series) in series.iter().enumerate() {
+        kernel.data.load(lane, series);
     }
+    kernel
+}
 
-    fn answers<T>(
-        &self,
-        stationary: &[bool],
-        answer: impl Fn(&Kernel<Lanes>, usize) -> Result<T, EvaluationError>,
-    ) -> Vec<Result<T, EvaluationError>> {
-        let lanes = stationary.iter().enumerate();
-        lanes
-            .map(
-                |(lane, &fine)| {
-                    if fine { answer(&self.kernel, lane) } else { Err(EvaluationError::NotStationary) }
-                },
-            )
-            .collect()
-    }
+fn at<V: Width>(
+    kernel: &mut Kernel<V>,
+    model: &mut Model,
+    system: &mut System,
+    values: &[&[f64]],
+) -> Vec<Result<f64, EvaluationError>> {
+    let stationary = fill(kernel, model, system, values);
+    kernel.filter(Keep::Likelihood);
+    let answer = |lane: usize| Ok(kernel.buffers.pass.reached(lane)?);
+    stationary.into_iter().enumerate().map(|(lane, fine)| fine.and_then(|()| answer(lane))).collect()
+}
+
+fn with_score<V: Width>(
+    kernel: &mut Kernel<V>,
+    model: &mut Model,
+    system: &mut System,
+    values: &[&[f64]],
+) -> Vec<Result<WithScore, EvaluationError>> {
+    let stationary = fill(kernel, model, system, values);
+    kernel.score();
+    let answer = |lane: usize| {
+        let reached = kernel.buffers.pass.reached(lane)?;
+        let (gradient, information) = kernel.derivatives_of(lane);
+        Ok((reached, gradient, information))
+    };
+    stationary.into_iter().enumerate().map(|(lane, fine)| fine.and_then(|()| answer(lane))).collect()
+}
+
+/// Puts values into the lanes; an error where they leave the stationary region: such a lane keeps the values that it had.
+fn fill<V: Width>(
+    kernel: &mut Kernel<V>,
+    model: &mut Model,
+    system: &mut System,
+    values: &[&[f64]],
+) -> Vec<Result<(), EvaluationError>> {
+    let filled = values.iter().enumerate().map(|(lane, values)| {
+        model.fill(values, system).map_err(|_| EvaluationError::NotStationary)?;
+        kernel.set_lane(lane, model, system);
+        Ok(())
+    });
+    filled.collect()
 }

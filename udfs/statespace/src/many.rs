@@ -15,9 +15,10 @@ use crate::error::Trouble;
 use crate::evaluation::{Evaluation, EvaluationError};
 use crate::filter::{Keep, Pass};
 use crate::fit::{self, Fit, Prepared};
-use crate::kernel::Kernel;
-use crate::lanes::{Lanes, MOST_LANES};
-use crate::objective::Workspace;
+use crate::instructions::Instructions;
+use crate::kernel::{Buffers, Kernel, Width};
+use crate::lanes::MOST_LANES;
+use crate::objective::{LaneBuffers, Workspace};
 use crate::request::{Request, Series};
 use crate::structure::{Model, Structure};
 use crate::transform::Transform;
@@ -60,7 +61,7 @@ pub fn fit_many(
         }
         // Series of like length share the kernel's steps.
         batch.sort_by_key(|w| std::cmp::Reverse(w.prepared.working.observed.len()));
-        for (index, result) in fit_batch(models.of(&structure).clone(), batch, request, smoothed, workspace) {
+        for (index, result) in fit_batch(models.of(&structure), batch, request, smoothed, workspace) {
             results[index] = Some(result);
         }
     }
@@ -111,16 +112,34 @@ fn ready(
 
 /// Fits series of one structure, that of `model`, and tells with each result whose it is.
 fn fit_batch(
-    mut model: Model,
+    model: &Model,
     batch: Vec<Waiting>,
     request: &Request,
     smoothed: bool,
     workspace: &mut Workspace,
 ) -> Vec<(usize, Result<Fit, Trouble>)> {
-    let system = model.system();
     let instructions = workspace.instructions;
-    let buffers = std::mem::take(&mut workspace.lanes);
-    let mut kernel: Kernel<Lanes> = Kernel::new(&model, &system, request.drifting_drivers.len(), buffers);
+    let asked = (request, smoothed, instructions);
+    match &mut workspace.lanes {
+        LaneBuffers::Baseline(buffers) => fit_in_lanes(model, batch, asked, buffers),
+        #[cfg(target_arch = "x86_64")]
+        LaneBuffers::Avx2(buffers) => fit_in_lanes(model, batch, asked, buffers),
+        #[cfg(target_arch = "x86_64")]
+        LaneBuffers::Avx512(buffers) => fit_in_lanes(model, batch, asked, buffers),
+    }
+}
+
+/// [`fit_batch`] in certain registers.
+fn fit_in_lanes<V: Width>(
+    model: &Model,
+    batch: Vec<Waiting>,
+    (request, smoothed, instructions): (&Request, bool, Instructions),
+    buffers: &mut Buffers<V>,
+) -> Vec<(usize, Result<Fit, Trouble>)> {
+    let mut model = model.clone();
+    let system = model.system();
+    let taken = std::mem::take(buffers);
+    let mut kernel: Kernel<V> = Kernel::new(&model, &system, request.drifting_drivers.len(), taken);
     let estimates = lockstep::maximise(&mut kernel, &mut model, &batch, instructions);
     let mut out = Vec::with_capacity(batch.len());
     let mut estimated = Vec::with_capacity(batch.len());
@@ -151,7 +170,7 @@ fn fit_batch(
             })
             .collect();
         let mut evaluations = Vec::with_capacity(together.len());
-        let mut evaluate = |pass: &Pass<Lanes>| {
+        let mut evaluate = |pass: &Pass<V>| {
             evaluations.clear();
             for (lane, (waiting, _)) in together.iter().enumerate() {
                 let system = systems[lane].clone().ok_or(EvaluationError::NotStationary);
@@ -162,7 +181,7 @@ fn fit_batch(
             }
         };
         if smoothed {
-            kernel.smooth(&functionals, shared.level(), instructions, evaluate);
+            kernel.smooth(&functionals, shared.level(), evaluate);
             for (lane, evaluation) in evaluations.iter_mut().enumerate() {
                 if let Ok(evaluation) = evaluation {
                     let len = kernel.data.lengths[lane];
@@ -170,7 +189,7 @@ fn fit_batch(
                 }
             }
         } else {
-            kernel.filter(Keep::Ends, instructions);
+            kernel.filter(Keep::Ends);
             evaluate(&kernel.buffers.pass);
         }
         for ((waiting, estimate), evaluation) in together.into_iter().zip(evaluations) {
@@ -182,6 +201,6 @@ fn fit_batch(
             out.push((index, result));
         }
     }
-    workspace.lanes = kernel.buffers;
+    *buffers = kernel.buffers;
     out
 }

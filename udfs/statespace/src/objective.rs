@@ -6,7 +6,9 @@ use crate::evaluation::EvaluationError;
 use crate::filter::Keep;
 use crate::instructions::Instructions;
 use crate::kernel::{Buffers, Kernel};
-use crate::lanes::Lanes;
+#[cfg(target_arch = "x86_64")]
+use crate::lanes::{Avx2, Avx512};
+use crate::lanes::{Lanes, Portable};
 use crate::request::Series;
 use crate::structure::Model;
 use crate::system::System;
@@ -15,8 +17,30 @@ use crate::system::System;
 #[derive(Debug, Clone)]
 pub struct Workspace {
     pub(crate) single: Buffers<f64>,
-    pub(crate) lanes: Buffers<Lanes>,
+    pub(crate) lanes: LaneBuffers,
     pub(crate) instructions: Instructions,
+}
+
+/// Buffers of eight lanes in the registers of the workspace's instructions.
+#[derive(Debug, Clone)]
+pub(crate) enum LaneBuffers {
+    Baseline(Box<Buffers<Lanes<Portable>>>),
+    #[cfg(target_arch = "x86_64")]
+    Avx2(Box<Buffers<Lanes<Avx2>>>),
+    #[cfg(target_arch = "x86_64")]
+    Avx512(Box<Buffers<Lanes<Avx512>>>),
+}
+
+impl LaneBuffers {
+    fn for_these(instructions: Instructions) -> Self {
+        match instructions {
+            #[cfg(target_arch = "x86_64")]
+            Instructions::Avx512 => Self::Avx512(Box::default()),
+            #[cfg(target_arch = "x86_64")]
+            Instructions::Avx2 => Self::Avx2(Box::default()),
+            _ => Self::Baseline(Box::default()),
+        }
+    }
 }
 
 impl Default for Workspace {
@@ -33,7 +57,8 @@ impl Workspace {
 
     /// The same with these instructions. They change the time that things take and nothing else.
     pub fn with_instructions(instructions: Instructions) -> Self {
-        Self { single: Buffers::default(), lanes: Buffers::default(), instructions }
+        let instructions = instructions.or_widest();
+        Self { single: Buffers::default(), lanes: LaneBuffers::for_these(instructions), instructions }
     }
 }
 
@@ -65,9 +90,9 @@ impl<'a> Objective<'a> {
         self.kernel.set_lane(0, &self.model, &self.system);
         let with = question.derivatives;
         if with {
-            self.kernel.score(Instructions::Baseline);
+            self.kernel.score();
         } else {
-            self.kernel.filter(Keep::Likelihood, Instructions::Baseline);
+            self.kernel.filter(Keep::Likelihood);
         }
         let Buffers { pass, score, information, .. } = &self.kernel.buffers;
         Ok(Answer {

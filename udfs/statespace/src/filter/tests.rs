@@ -1,7 +1,6 @@
 //! What holds at every point of a pass, whatever the data: covariances are covariances, and the start scale cancels.
 
 use super::*;
-use crate::instructions::Instructions;
 use crate::kernel::{Buffers, Kernel};
 use crate::request::Series;
 use crate::structure::Model;
@@ -48,7 +47,7 @@ proptest! {
         let price: Vec<f64> = (0..60).map(|t| (f64::from(t) * 0.7).sin()).collect();
         let series = Series { observed, drivers: Vec::new(), drifting_drivers: vec![price] };
         let mut kernel = kernel(&model, &system, &series);
-        kernel.filter(Keep::Everything, Instructions::Baseline);
+        kernel.filter(Keep::Everything);
         if kernel.buffers.pass.reached(0).is_ok() {
             assert_covariances(&kernel.buffers.pass)?;
         }
@@ -76,7 +75,7 @@ proptest! {
         let smoothed = [1.0, factor].map(|factor| {
             let mut kernel = kernel(&model, &system, &series);
             kernel.dynamics.start_scale *= factor;
-            kernel.smooth(std::slice::from_ref(&level), None, Instructions::Baseline, |_| {});
+            kernel.smooth(std::slice::from_ref(&level), None, |_| {});
             (kernel.buffers.pass.reached(0).unwrap(), kernel.buffers.smoother.lane(0, 40).functionals)
         });
         let [(a, x), (b, y)] = &smoothed;

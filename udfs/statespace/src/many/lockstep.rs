@@ -5,8 +5,8 @@ use crate::estimate::{Answer, Estimate, Search};
 use crate::evaluation::EvaluationError;
 use crate::filter::Keep;
 use crate::instructions::Instructions;
-use crate::kernel::{Buffers, Kernel};
-use crate::lanes::{Lanes, MOST_LANES, Mask, Real};
+use crate::kernel::{Buffers, Kernel, Width};
+use crate::lanes::{MOST_LANES, Mask};
 use crate::structure::Model;
 use crate::system::System;
 
@@ -18,8 +18,8 @@ struct Seat {
 }
 
 /// Estimates every series; the results stand in their order. `model` is scratch for parameter values.
-pub(super) fn maximise(
-    kernel: &mut Kernel<Lanes>,
+pub(super) fn maximise<V: Width>(
+    kernel: &mut Kernel<V>,
     model: &mut Model,
     batch: &[Waiting],
     instructions: Instructions,
@@ -68,9 +68,9 @@ pub(super) fn maximise(
             break;
         }
         if derivatives.is_none() {
-            kernel.filter(Keep::Likelihood, instructions);
+            kernel.filter(Keep::Likelihood);
         } else {
-            kernel.score(instructions);
+            kernel.score();
         }
         let Buffers { pass, score, information: found, .. } = &kernel.buffers;
         for lane in asked.lanes() {
@@ -105,10 +105,10 @@ enum Put {
 }
 
 /// Puts the next question of a search that can be evaluated into its lane.
-fn put(
+fn put<V: Width>(
     seat: &mut Seat,
     lane: usize,
-    kernel: &mut Kernel<Lanes>,
+    kernel: &mut Kernel<V>,
     (model, system): (&mut Model, &mut System),
 ) -> Put {
     loop {
