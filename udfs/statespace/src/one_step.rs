@@ -67,7 +67,8 @@ pub(crate) fn errors<V: Real>(pass: &Pass<V>, lane: usize) -> OneStep {
                 opened = true;
                 break;
             }
-            let norm = pivot.hypot(row[j]);
+            // Both are in standard deviations: their squares are in range.
+            let norm = (pivot * pivot + row[j] * row[j]).sqrt();
             let (c, s) = (pivot / norm, row[j] / norm);
             for k in j..width {
                 let (r, x) = (triangle[j * width + k], row[k]);

@@ -21,6 +21,8 @@ const RIVAL: f64 = 2.5;
 /// The same where the approximate likelihood is exact.
 const RIVAL_WHERE_EXACT: f64 = 1e-3;
 
+/// Gain that ends a climb on a likelihood that is approximate itself.
+const ROUGHER: f64 = 1e-3;
 /// A climb that has come so near to an optimum, in likelihood, and is like it, ends there.
 const AT_AN_OPTIMUM: f64 = 0.1;
 
@@ -214,7 +216,7 @@ fn climb(
     (floor, known): (f64, &[Optimum]),
     scratch: &mut Climb,
 ) -> Option<Optimum> {
-    scratch.begin_again(values, held, ROUGH, floor);
+    scratch.begin_again(values, held, if spectrum.exact { ROUGH } else { ROUGHER }, floor);
     while let Some(question) = scratch.ask() {
         let answer = spectrum.answer(question);
         let sound = answer.log_likelihood.is_finite();
