@@ -1,7 +1,7 @@
 //! The stream of one partition: rows in, chunks of series to blocking threads, results out in order.
 //!
 //! The optimizer does not repartition small inputs, so one partition must be able to use all cores: up to
-//! `workers` chunks are in work at once. Dropping the stream stops the work after the series in hand.
+//! `workers` chunks are in work at once. Dropping the stream stops the work after the batch in hand.
 //! A host can have a lone worker work in place instead of on a blocking thread ([`InPlace`](super::in_place::InPlace)).
 
 use std::collections::VecDeque;

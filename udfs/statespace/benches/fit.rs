@@ -27,8 +27,8 @@ fn benches(c: &mut Criterion) {
             many.iter().map(|s| fit(s, &request, &mut workspace).expect("a fit").evaluations()).collect();
         evaluations.sort_unstable();
         println!(
-            "{}: likelihood evaluations per fit, median {}, most {}",
-            setting.name, evaluations[20], evaluations[39]
+            "{} ({}): likelihood evaluations per fit, median {}, most {}",
+            setting.name, setting.short, evaluations[20], evaluations[39]
         );
         let mut next = many.iter().cycle();
         c.bench_function(&format!("fit, {}", setting.name), |b| {

@@ -55,28 +55,32 @@ impl Instructions {
         if self.is_available() { self } else { Self::widest() }
     }
 
-    /// Does the work compiled for these instructions, or for the baseline where the processor lacks them.
+    /// Does the work compiled for these instructions, which the processor must have: see [`Self::or_widest`].
     #[inline]
     pub(crate) fn perform<T: Task>(self, task: T) -> T::Output {
         #[cfg(target_arch = "x86_64")]
-        match self {
-            Self::Avx512 if self.is_available() => {
-                #[expect(
-                    unsafe_code,
-                    reason = "a function with target features is called from one without"
-                )]
-                // SAFETY: the processor has just been found to have the features that `avx512` enables.
-                return unsafe { avx512(task) };
+        {
+            // Work on registers that the processor lacks must not go on in any way.
+            assert!(self.is_available(), "the processor has no {self:?}");
+            match self {
+                Self::Avx512 => {
+                    #[expect(
+                        unsafe_code,
+                        reason = "a function with target features is called from one without"
+                    )]
+                    // SAFETY: the processor has just been found to have the features that `avx512` enables.
+                    return unsafe { avx512(task) };
+                }
+                Self::Avx2 => {
+                    #[expect(
+                        unsafe_code,
+                        reason = "a function with target features is called from one without"
+                    )]
+                    // SAFETY: the processor has just been found to have the feature that `avx2` enables.
+                    return unsafe { avx2(task) };
+                }
+                Self::Baseline => {}
             }
-            Self::Avx2 if self.is_available() => {
-                #[expect(
-                    unsafe_code,
-                    reason = "a function with target features is called from one without"
-                )]
-                // SAFETY: the processor has just been found to have the feature that `avx2` enables.
-                return unsafe { avx2(task) };
-            }
-            _ => {}
         }
         task.run()
     }

@@ -57,15 +57,18 @@ impl<V: Width> Kernel<V> {
         V::perform(Filter { dynamics, data, keep, pass: &mut buffers.pass });
     }
 
-    /// Runs filter, score and information.
+    /// Runs filter, score and information. What each lane reached is that of the first pass, as [`Self::filter`] finds it, also where score
+    /// and information need a second one with its columns open: what is reported must not depend on what else was asked.
     pub(crate) fn score(&mut self) {
         let Self { dynamics, derivatives, data, buffers } = self;
         buffers.pass.keep_open = Mask::NONE;
         let failed = V::perform(ScorePass { dynamics, derivatives, data, buffers });
         if !failed.is_none() {
             // The other lanes come out as they did: to the last bit.
+            let reached = buffers.pass.outcome;
             buffers.pass.keep_open = failed;
             V::perform(ScorePass { dynamics, derivatives, data, buffers });
+            buffers.pass.outcome = reached;
         }
     }
 
@@ -75,25 +78,24 @@ impl<V: Width> Kernel<V> {
         (of(&self.buffers.score.gradient), of(&self.buffers.information.matrix))
     }
 
-    /// Runs the filter, keeping everything, and smooths; `filtered` sees the pass before its rows are whitened (again, where the way back
-    /// needed a second pass).
+    /// Runs the filter, keeping everything, and smooths; `filtered` sees the pass before its rows are whitened. Where the way back needs a second
+    /// pass with columns open, the smoothing alone is that one's.
     pub(crate) fn smooth(
         &mut self,
         functionals: &[Functional],
         level: Option<usize>,
-        mut filtered: impl FnMut(&Pass<V>),
+        filtered: impl FnOnce(&Pass<V>),
     ) {
         let Self { dynamics, data, buffers, .. } = self;
         let Buffers { pass, smoother, .. } = buffers;
         pass.keep_open = Mask::NONE;
-        loop {
-            V::perform(Filter { dynamics, data, keep: Keep::Everything, pass });
-            filtered(pass);
-            let failed = V::perform(Smooth { dynamics, data, functionals, level, pass, smoother });
-            if failed.is_none() || pass.keep_open == failed {
-                return;
-            }
+        V::perform(Filter { dynamics, data, keep: Keep::Everything, pass });
+        filtered(pass);
+        let failed = V::perform(Smooth { dynamics, data, functionals, level, pass, smoother });
+        if !failed.is_none() {
             pass.keep_open = failed;
+            V::perform(Filter { dynamics, data, keep: Keep::Everything, pass });
+            V::perform(Smooth { dynamics, data, functionals, level, pass, smoother });
         }
     }
 }
@@ -160,7 +162,7 @@ impl<V: Real> Task for ScorePass<'_, V> {
         let shapes = derivatives.iter().any(|d| !d.transition.is_empty());
         filter::run(dynamics, data, if shapes { Keep::Everything } else { Keep::Gains }, pass);
         pass.whiten_rows();
-        let failed = score.compute(derivatives, dynamics, data, pass) & pass.live;
+        let failed = score.compute(derivatives, dynamics, data, pass) & pass.sound();
         if failed.is_none() {
             information.compute(derivatives, dynamics, data, pass, &score.paths);
         }
@@ -182,6 +184,7 @@ impl<V: Real> Task for Smooth<'_, V> {
     #[inline(always)]
     fn run(self) -> Mask {
         self.pass.whiten_rows();
-        self.smoother.run(self.dynamics, self.data, self.pass, self.functionals, self.level) & self.pass.live
+        self.smoother.run(self.dynamics, self.data, self.pass, self.functionals, self.level)
+            & self.pass.sound()
     }
 }

@@ -171,7 +171,6 @@ fn fit_in_lanes<V: Width>(
             .collect();
         let mut evaluations = Vec::with_capacity(together.len());
         let mut evaluate = |pass: &Pass<V>| {
-            evaluations.clear();
             for (lane, (waiting, _)) in together.iter().enumerate() {
                 let system = systems[lane].clone().ok_or(EvaluationError::NotStationary);
                 let series = waiting.prepared.working.clone();

@@ -97,7 +97,7 @@ impl<'a> Objective<'a> {
         let Buffers { pass, score, information, .. } = &self.kernel.buffers;
         Ok(Answer {
             log_likelihood: pass.reached(0)?,
-            rss: pass.reduction.rss(),
+            rss: pass.rss(0),
             degrees: pass.observed[0] as f64 - pass.elements as f64,
             gradient: if with { &score.gradient } else { &[] },
             information: if with { &information.matrix } else { &[] },

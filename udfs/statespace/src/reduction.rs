@@ -183,6 +183,7 @@ impl<V: Real> Reduction<V> {
 
     /// Reduces what is left; returns for each live lane the first element that its data do not determine, if any (counted
     /// with the eliminated).
+    #[inline(always)]
     pub(crate) fn finish(&mut self) -> [Option<usize>; MOST_LANES] {
         if self.used > 0 {
             self.reduce();
@@ -219,11 +220,13 @@ impl<V: Real> Reduction<V> {
         undetermined
     }
 
+    #[inline(always)]
     pub(crate) fn rss(&self) -> V {
         self.rss
     }
 
     /// Sum of log R_ii, eliminated elements included.
+    #[inline(always)]
     pub(crate) fn log_diagonal(&self) -> V {
         let gone = &self.eliminated;
         let mut sum = self.log_diagonal;

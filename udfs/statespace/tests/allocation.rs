@@ -4,7 +4,7 @@ use std::alloc::{GlobalAlloc, Layout, System};
 use std::cell::Cell;
 
 use stillwell_statespace::structure::{Cycle, Season, Structure, Trend};
-use stillwell_statespace::{Likelihood, Series};
+use stillwell_statespace::{Instructions, Likelihood, Likelihoods, Series};
 
 struct Counting;
 
@@ -64,5 +64,33 @@ fn a_likelihood_evaluation_allocates_nothing() {
         let alone = likelihood.at(&values).expect("a likelihood");
         assert_eq!(ALLOCATIONS.with(Cell::get) - before, 0, "{structure:?}");
         assert_eq!((first, first), (again, alone));
+    }
+}
+
+#[test]
+fn side_by_side_only_the_answers_are_allocated() {
+    let structure = Structure {
+        trend: Trend::Damped,
+        seasons: vec![Season { period: 12.0, harmonics: None, fixed: false }],
+        ..Structure::default()
+    };
+    let observed =
+        |k: i32| (0..150).map(|t| f64::from((t + k) % 12) + f64::from((t * t) % 17) * 0.1).collect();
+    let series: Vec<Series> = (0..8).map(|k| Series { observed: observed(k), ..Series::default() }).collect();
+    let model = structure.model();
+    let values = vec![0.3; model.parameters().len()];
+    let at: Vec<&[f64]> = vec![&values; series.len()];
+    for instructions in Instructions::available() {
+        let mut likelihoods = Likelihoods::new(model.clone(), &series, instructions);
+        likelihoods.with_score(&at);
+        let before = ALLOCATIONS.with(Cell::get);
+        let alone = likelihoods.at(&at).len();
+        let in_between = ALLOCATIONS.with(Cell::get);
+        let with_score = likelihoods.with_score(&at).len();
+        let after = ALLOCATIONS.with(Cell::get);
+        // Two vectors an answer: what went well, what was found; beside a score each lane has its gradient and its matrix.
+        assert!(in_between - before <= 2, "{instructions:?}: {}", in_between - before);
+        assert!(after - in_between <= 2 + 2 * series.len(), "{instructions:?}: {}", after - in_between);
+        assert_eq!((alone, with_score), (8, 8));
     }
 }

@@ -7,7 +7,6 @@ use stillwell_statespace::{Request, SeasonRequest, TransformRequest};
 pub(crate) struct Setting {
     pub(crate) name: &'static str,
     /// For files.
-    #[allow(dead_code, reason = "one of the benches writes files")]
     pub(crate) short: &'static str,
     pub(crate) n: usize,
     pub(crate) structure: Structure,

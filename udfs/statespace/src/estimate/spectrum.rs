@@ -380,10 +380,10 @@ fn folded(sum: [f64; 8]) -> f64 {
 /// Eight sums side by side: a vector register, and no waiting for each addition.
 #[inline(always)]
 fn dot(a: &[f64], b: &[f64]) -> f64 {
-    let (fours, rest) = a.as_chunks::<8>();
+    let (eights, rest) = a.as_chunks::<8>();
     let (others, other_rest) = b.as_chunks::<8>();
     let mut sum = [0.0; 8];
-    for (a, b) in fours.iter().zip(others) {
+    for (a, b) in eights.iter().zip(others) {
         for lane in 0..8 {
             sum[lane] += a[lane] * b[lane];
         }
@@ -421,3 +421,6 @@ fn woodbury(centre: [f64; 2], [xx, xy, yy]: Pair) -> (Pair, f64) {
 fn has_slope(model: &Model) -> bool {
     model.assembly.states.iter().any(|s| s.role == Role::Slope)
 }
+
+#[cfg(test)]
+mod tests;

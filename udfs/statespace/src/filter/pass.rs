@@ -20,6 +20,16 @@ pub(crate) enum Keep {
     Everything,
 }
 
+/// What the lanes of a pass reached.
+#[derive(Debug, Clone, Copy, Default)]
+pub(crate) struct Outcome<V> {
+    log_likelihood: V,
+    /// Residual sum of squares of the reduced rows.
+    rss: V,
+    /// Why a lane has no likelihood.
+    failure: [Option<FilterError>; MOST_LANES],
+}
+
 /// Buffers and results of one pass; reused from pass to pass without allocation.
 #[derive(Debug, Clone, Default)]
 pub(crate) struct Pass<V> {
@@ -45,9 +55,8 @@ pub(crate) struct Pass<V> {
     pub(crate) keep_open: Mask,
     /// Observed points of each lane.
     pub(crate) observed: [usize; MOST_LANES],
-    pub(crate) log_likelihood: V,
-    /// Why a lane has no likelihood.
-    pub(crate) failure: [Option<FilterError>; MOST_LANES],
+    /// What each lane reached.
+    pub(crate) outcome: Outcome<V>,
     /// Innovation variance per point; means nothing where missing.
     pub(crate) f: Vec<V>,
     /// Its inverse; zero where missing.
@@ -89,7 +98,7 @@ impl<V: Real> Pass<V> {
         self.collapsed_at = [n + 1; MOST_LANES];
         self.narrow_from = n + 1;
         refill(&mut self.collapses, n + 1);
-        self.failure = [None; MOST_LANES];
+        self.outcome = Outcome::default();
         let seen = &data.seen[..n];
         for lane in 0..V::LANES {
             self.observed[lane] = seen.iter().filter(|mask| mask.holds(lane)).count();
@@ -103,12 +112,15 @@ impl<V: Real> Pass<V> {
         refill(&mut self.spare, dynamics.spare_len());
         refill(&mut self.bridge, m * self.states);
         self.reduction.reset(d, self.states, self.live);
-        // The kept steps are overwritten by the pass: only what is there before matters.
+        // What is kept of each point is written anew by the pass.
         self.gains.clear();
         self.covariances.clear();
         self.rows.clear();
         self.columns.clear();
         if keep >= Keep::Gains {
+            // As if nothing settled or collapsed: no other values of the parameters make them grow.
+            self.gains.reserve(n * m);
+            self.rows.reserve(n * (d + 1));
             self.f.resize(n, V::zero());
             self.inverse.resize(n, V::zero());
             self.steady.resize(n, Mask::NONE);
@@ -120,7 +132,7 @@ impl<V: Real> Pass<V> {
     #[inline(always)]
     pub(super) fn fail(&mut self, lanes: Mask, why: FilterError) {
         for lane in (lanes & self.live).lanes() {
-            self.failure[lane].get_or_insert(why);
+            self.outcome.failure[lane].get_or_insert(why);
         }
     }
 
@@ -175,6 +187,7 @@ impl<V: Real> Pass<V> {
     pub(super) fn finish(&mut self, log_f: V) {
         let undetermined = self.reduction.finish();
         let (log_diagonal, rss) = (self.reduction.log_diagonal(), self.reduction.rss());
+        self.outcome.rss = rss;
         for lane in self.live.lanes() {
             if let Some(element) = undetermined[lane] {
                 self.fail(Mask::only(lane), FilterError::Undetermined(element));
@@ -184,7 +197,7 @@ impl<V: Real> Pass<V> {
                 + log_f.lane(lane)
                 + 2.0 * log_diagonal.lane(lane)
                 + rss.lane(lane);
-            self.log_likelihood.set_lane(lane, -0.5 * sum);
+            self.outcome.log_likelihood.set_lane(lane, -0.5 * sum);
             if !sum.is_finite() {
                 self.fail(Mask::only(lane), FilterError::NotPositive(self.lengths[lane]));
             }
@@ -193,10 +206,21 @@ impl<V: Real> Pass<V> {
 
     /// What a lane reached.
     pub(crate) fn reached(&self, lane: usize) -> Result<f64, FilterError> {
-        match self.failure[lane] {
+        match self.outcome.failure[lane] {
             Some(failure) => Err(failure),
-            None => Ok(self.log_likelihood.lane(lane)),
+            None => Ok(self.outcome.log_likelihood.lane(lane)),
         }
+    }
+
+    /// Residual sum of squares of a lane: `n - d` at the best common scale of all variances.
+    pub(crate) fn rss(&self, lane: usize) -> f64 {
+        self.outcome.rss.lane(lane)
+    }
+
+    /// Live lanes that have a likelihood.
+    pub(crate) fn sound(&self) -> Mask {
+        let failed = (0..V::LANES).filter(|&lane| self.outcome.failure[lane].is_some());
+        failed.fold(self.live, |sound, lane| sound & !Mask::only(lane))
     }
 
     /// Lanes whose columns at `t` hold the diffuse states but will not for ever.

@@ -9,7 +9,8 @@ use super::MOST_LANES;
 type Eight = [f64; MOST_LANES];
 
 /// An instruction set that works on eight doubles. Every operation is IEEE 754's, lane by lane. All but [`Portable`] must be used
-/// on processors that have the instructions alone: [`crate::instructions`] sees to that.
+/// on processors that have the instructions alone: `Workspace` and `Likelihoods` make lanes in no others
+/// ([`crate::instructions::Instructions::or_widest`]), and [`crate::instructions::Instructions::perform`] refuses.
 pub(crate) trait Registers: Copy + Debug + Default + PartialEq + Send + Sync + 'static {
     fn add(a: Eight, b: Eight) -> Eight;
     fn sub(a: Eight, b: Eight) -> Eight;

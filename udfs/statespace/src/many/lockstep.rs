@@ -84,7 +84,7 @@ pub(super) fn maximise<V: Width>(
             seat.search.tell(pass.reached(lane).map_err(EvaluationError::from).map(|log_likelihood| {
                 Answer {
                     log_likelihood,
-                    rss: pass.reduction.rss().lane(lane),
+                    rss: pass.rss(lane),
                     degrees: pass.observed[lane] as f64 - pass.elements as f64,
                     gradient: &gradient,
                     information: &information,
