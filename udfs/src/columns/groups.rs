@@ -200,9 +200,9 @@ fn times_ascend(times: &[Option<i64>]) -> bool {
 fn unsorted(what: &str) -> ArrowError {
     ArrowError::ComputeError(format!(
         "the rows did not arrive sorted by key and time ({what} go back). A table that is declared WITH ORDER, or Parquet \
-         whose metadata names sorting columns, must keep that order; to have the rows sorted all the same, drop the \
-         declaration, or SET datafusion.execution.collect_statistics = false before the table is made. If nothing declares \
-         an order, please report this"
+         whose metadata names sorting columns, must keep that order; to have the rows sorted all the same, leave WITH ORDER out; \
+         against sorting columns, SET datafusion.execution.collect_statistics = false before the table is made. If nothing \
+         declares an order, please report this"
     ))
 }
 
