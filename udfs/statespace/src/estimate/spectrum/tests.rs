@@ -8,7 +8,7 @@ use crate::structure::{Structure, Trend};
 /// A wandering series without a generator: sums of incommensurable waves.
 fn series(n: u32) -> Vec<f64> {
     (0..n)
-        .map(|t| f64::from(t))
+        .map(f64::from)
         .map(|t| 0.05 * t + (0.37 * t).sin() + 0.7 * (1.93 * t).cos() + (0.011 * t * t).sin())
         .collect()
 }
